@@ -62,14 +62,13 @@ def write_hdf5(
     path = Path(path)
     if not path.parent.is_dir():
         raise FileNotFoundError(f"{path}: the folder {path.parent} does not exist; create it first")
+    image = _image(datasets, attributes)
     handle, temporary = tempfile.mkstemp(prefix=f".{path.stem}-", suffix=".tmp", dir=path.parent)
-    os.close(handle)
     try:
-        _write(temporary, datasets, attributes)
+        with os.fdopen(handle, "wb") as file:
+            file.write(image)
         os.chmod(temporary, 0o666 & ~_umask())
         os.replace(temporary, path)
-    except RuntimeError as fault:  # what h5py makes of a disk that fills up while the file is closed
-        raise OSError(f"{path}: cannot be written ({str(fault).splitlines()[0]}); is the disk full?") from fault
     finally:
         Path(temporary).unlink(missing_ok=True)
 
@@ -106,14 +105,13 @@ def file_sha256(path: Path) -> str:
     return digest.hexdigest()
 
 
-def _write(
-    temporary: str,
-    datasets: Mapping[str, tuple[NDArray[Any], str]],
-    attributes: Mapping[str, str | int | float | bool],
-) -> None:
+def _image(
+    datasets: Mapping[str, tuple[NDArray[Any], str]], attributes: Mapping[str, str | int | float | bool]
+) -> bytes:
+    """The bytes of the file, made in memory: the HDF5 library may crash on a disk that fills up, plain writing does not."""
     import h5py
 
-    with h5py.File(temporary, "w") as file:
+    with h5py.File("image", "w", driver="core", backing_store=False) as file:
         for name, value in attributes.items():
             file.attrs[name] = value
         for name, (array, unit) in datasets.items():
@@ -121,6 +119,8 @@ def _write(
             if values.dtype.kind == "U":
                 values = values.astype(h5py.string_dtype("utf-8"))
             file.create_dataset(name, data=values).attrs["unit"] = unit
+        file.flush()
+        return bytes(file.id.get_file_image())
 
 
 def _read(file: Any) -> Hdf5Content:
