@@ -1,0 +1,40 @@
+"""freqid: does the frequency-domain test of an electromechanical rig agree with its step test?
+
+Importing the package is cheap: each public name is fetched from its module when it is first asked for.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import Any
+
+__version__ = "0.1.0"
+
+_WHERE = {
+    "AngleStream": "freqid.records",
+    "Caveat": "freqid.quantity",
+    "FreqidError": "freqid.errors",
+    "InputStream": "freqid.records",
+    "Origin": "freqid.records",
+    "Periodicity": "freqid.records",
+    "Quantity": "freqid.quantity",
+    "Rig": "freqid.rig",
+    "Run": "freqid.records",
+    "SecondOrder": "freqid.second_order",
+    "TestFolder": "freqid.test_folder",
+    "read_rig": "freqid.rig",
+    "read_run": "freqid.run_file",
+    "write_run": "freqid.run_file",
+}
+
+__all__ = ["__version__", *_WHERE]
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _WHERE:
+        raise AttributeError(f"module 'freqid' has no attribute {name!r}")
+    return getattr(import_module(_WHERE[name]), name)
+
+
+def __dir__() -> list[str]:
+    return sorted(__all__)
