@@ -104,9 +104,11 @@ def parse_rig(text: str, source: str = "rig.toml") -> Rig:
         sheet = tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:
         raise RigSheetError(f"{source}: not valid TOML: {error}; correct that line") from None
-    for name in sheet:
+    for name, values in sheet.items():
         if name not in TABLES:
             raise RigSheetError(f"{source}: unknown table [{name}]; {_nearest(name, list(TABLES))}")
+        if not isinstance(values, dict):
+            raise RigSheetError(f"{source}: {name} = {_shown(values)}: must be a table; write [{name}] on its own line")
     rig = Rig(
         rig=_table(Identity, sheet, "rig", source),
         limits=_table(Limits, sheet, "limits", source),
@@ -121,9 +123,7 @@ def parse_rig(text: str, source: str = "rig.toml") -> Rig:
 
 
 def _table(owner: type[Table], sheet: Mapping[str, Any], name: str, source: str) -> Table:
-    values = sheet.get(name, {})
-    if not isinstance(values, dict):
-        raise RigSheetError(f"{source}: {name} = {_shown(values)}: must be a table; write [{name}] on its own line")
+    values: dict[str, Any] = sheet.get(name, {})
     keys: dict[str, Field[Any]] = {key.name: key for key in fields(owner)}  # type: ignore[arg-type]
     for key in values:
         if key not in keys:
@@ -131,7 +131,7 @@ def _table(owner: type[Table], sheet: Mapping[str, Any], name: str, source: str)
     for key, declared in keys.items():
         if key not in values and declared.default is MISSING:
             rule: KeyRule = declared.metadata["rule"]
-            raise RigSheetError(f"{source}: [{name}] {key} is missing ({rule.explanation}); must be {_allowed(rule)}")
+            raise RigSheetError(f"{source}: [{name}] {key} is missing ({rule.explanation}); give {_allowed(rule)}")
     checked = {key: _value(value, keys[key].metadata["rule"], f"{source}: [{name}] {key}")
                for key, value in values.items()}  # fmt: skip
     return owner(**checked)
