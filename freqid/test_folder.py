@@ -21,7 +21,7 @@ from typing import Any, ClassVar, Literal, NoReturn
 import freqid
 from freqid.errors import TestFolderError
 
-__all__ = ["RunKind", "TestFolder", "check_format", "make_read_only", "replacing", "write_text"]
+__all__ = ["RunKind", "TestFolder", "check_format", "json_text", "make_read_only", "replacing", "write_text"]
 
 RunKind = Literal["response", "step"]  # as in freqid.records, which needs numpy
 
@@ -56,6 +56,11 @@ def write_text(path: Path, text: str) -> None:
     """Write `text` as UTF-8 with plain line feeds, whole or not at all."""
     with replacing(path) as temporary:
         temporary.write_text(text, encoding="utf-8", newline="\n")
+
+
+def json_text(content: Mapping[str, Any]) -> str:
+    """`content` as indented JSON with a final line feed; raises ValueError as `TestFolder.write_json` does."""
+    return json.dumps(_plain(content, ""), ensure_ascii=False, allow_nan=False, indent=2) + "\n"
 
 
 def make_read_only(path: Path) -> None:
@@ -215,8 +220,7 @@ class TestFolder:
         ValueError
             The content holds NaN or infinity; the message names the place.
         """
-        plain = _plain(content, "")
-        write_text(path, json.dumps(plain, ensure_ascii=False, allow_nan=False, indent=2) + "\n")
+        write_text(path, json_text(content))
 
     def read_json(self, path: Path, *, format: str | None = None, version: int = 1) -> dict[str, Any]:
         """Content of a JSON file.
