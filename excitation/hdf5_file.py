@@ -108,7 +108,7 @@ def file_sha256(path: Path) -> str:
 def _image(
     datasets: Mapping[str, tuple[NDArray[Any], str]], attributes: Mapping[str, str | int | float | bool]
 ) -> bytes:
-    """The bytes of the file, made in memory: the HDF5 library may crash on a disk that fills up, plain writing does not."""
+    """The bytes of the file, made in memory: unlike plain writing, the HDF5 library may crash on a full disk."""
     import h5py
 
     with h5py.File("image", "w", driver="core", backing_store=False) as file:

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import errno
 import hashlib
+import os
 from pathlib import Path
 
 import numpy as np
@@ -47,6 +49,18 @@ def test_failure_leaves_the_old_file_and_no_other(tmp_path: Path) -> None:
         write_hdf5(path, datasets={"x": (np.array([object()]), "V")}, attributes={})
     assert file_sha256(path) == before
     assert [entry.name for entry in tmp_path.iterdir()] == ["a.h5"]
+
+
+def test_full_disk_is_an_os_error_and_leaves_nothing(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """A disk that fills up while the file is renamed into place leaves an empty folder."""
+
+    def full(source: str, target: Path) -> None:
+        raise OSError(errno.ENOSPC, os.strerror(errno.ENOSPC), str(target))
+
+    monkeypatch.setattr(os, "replace", full)
+    with pytest.raises(OSError, match=r"a\.h5"):
+        write_hdf5(tmp_path / "a.h5", datasets={"x": (np.ones(2), "V")}, attributes={})
+    assert list(tmp_path.iterdir()) == []
 
 
 def test_missing_folder_is_an_os_error(tmp_path: Path) -> None:

@@ -1,0 +1,121 @@
+"""How large may an excitation be?
+
+As large as three limits allow: the voltage (with the bias counted on the side where it stands), the
+slew rate, and the swing of every rig that the true one may be, transients included. All three are
+proportional to the departure from the bias, so one scale answers.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, field, replace
+from typing import Literal
+
+import numpy as np
+
+from excitation.errors import ExcitationError, LimitExceeded
+from excitation.limits import Limits
+from excitation.profile import Profile
+from excitation.rig_model import RigModel
+from excitation.swing import check_margin, worst_swing
+
+__all__ = ["Allowance", "largest_allowance", "scaled_to_limits"]
+
+_ROUNDING = 1 - 1e-9  # keeps floating-point rounding of the scaled samples inside the limits
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Allowance:
+    """The largest scale of a profile's departure from the bias, and which limit sets it."""
+
+    scale: float = field(metadata={"unit": "1"})
+    limited_by: Literal["voltage", "slew rate", "swing"]
+
+
+def largest_allowance(
+    profile: Profile, limits: Limits, rigs: Sequence[RigModel] = (), *, margin: float = 0.9
+) -> Allowance:
+    """Largest factor by which the departure from the bias may be multiplied.
+
+    Parameters
+    ----------
+    rigs : sequence of RigModel
+        All that the true rig may be; without any, the swing is not limited.
+    margin : float
+        The part of the way to the stops that may be used, above 0 and at most 1.
+
+    Raises
+    ------
+    ExcitationError
+        The profile never leaves its bias, or stands on another bias than the limits.
+    """
+    check_margin(margin)
+    if profile.bias != limits.bias:
+        raise ExcitationError(
+            f"bias: the profile stands on {profile.bias:g} V, the limits on {limits.bias:g} V; give both the same"
+        )
+    if profile.peak_voltage == 0:
+        raise ExcitationError("voltage: the profile never leaves its bias; there is nothing to scale")
+    allowances = [
+        Allowance(scale=_voltage_scale(profile, limits), limited_by="voltage"),
+        Allowance(scale=limits.slew_rate / profile.max_slew_rate, limited_by="slew rate"),
+    ]
+    if rigs:
+        swing = worst_swing(profile, rigs)
+        scale = margin * limits.angle / swing if swing > 0 else np.inf
+        allowances.append(Allowance(scale=float(scale), limited_by="swing"))
+    return min(allowances, key=lambda allowance: allowance.scale)
+
+
+def scaled_to_limits(
+    profile: Profile,
+    limits: Limits,
+    rigs: Sequence[RigModel] = (),
+    *,
+    margin: float = 0.9,
+    amplitude: float | None = None,
+) -> Profile:
+    """The profile at the largest amplitude the limits allow, or at the one asked for.
+
+    Parameters
+    ----------
+    amplitude : float or None
+        Peak departure from the bias in V; None for the largest allowed.
+
+    Raises
+    ------
+    LimitExceeded
+        The amplitude asked for passes a limit; says which, and the largest amplitude that would not.
+    """
+    allowance = largest_allowance(profile, limits, rigs, margin=margin)
+    largest = allowance.scale * _ROUNDING * profile.peak_voltage
+    if amplitude is not None:
+        _check_amplitude(amplitude, largest, allowance)
+    chosen = largest if amplitude is None else amplitude
+    deviation = (profile.voltage - profile.bias) * (chosen / profile.peak_voltage)
+    limited_by = allowance.limited_by if amplitude is None else "amplitude asked for"
+    scaled = replace(
+        profile,
+        voltage=profile.bias + deviation,
+        settings={**profile.settings, "amplitude_V": chosen, "amplitude_limited_by": limited_by},
+    )
+    limits.check_profile(scaled)
+    return scaled
+
+
+def _check_amplitude(amplitude: float, largest: float, allowance: Allowance) -> None:
+    if not (np.isfinite(amplitude) and amplitude > 0):
+        raise ExcitationError(f"amplitude: {amplitude} V; it must be above 0")
+    if amplitude > largest:
+        raise LimitExceeded(
+            f"amplitude: {amplitude:.6g} V asked for, {largest:.6g} V is the most the limit on the "
+            f"{allowance.limited_by} allows; ask for less, or leave it to the design"
+        )
+
+
+def _voltage_scale(profile: Profile, limits: Limits) -> float:
+    deviation = profile.voltage - profile.bias
+    up, down = float(np.max(deviation)), float(-np.min(deviation))
+    scales = [(limits.voltage - limits.bias) / up] if up > 0 else []
+    scales += [(limits.voltage + limits.bias) / down] if down > 0 else []
+    return min(scales)

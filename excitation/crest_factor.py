@@ -1,0 +1,131 @@
+"""How are the phases of a multisine chosen so that its power fits under its peak?
+
+A multisine is sum_k a_k cos(2 pi n_k t / T + phi_k); its crest factor is its peak over its rms.
+Three choices: random phases, Schroeder's, and a descent on the L_p norm of the waveform with p
+raised step by step, which approaches the peak. The descent may weigh several signals that share
+the phases (the voltage, its slope, the angle it causes), each in units of its own limit: then it
+makes room where the limits are.
+
+Sources: M. R. Schroeder, IEEE Trans. Information Theory 16 (1970) 85-89, doi:10.1109/TIT.1970.1054411;
+P. Guillaume, J. Schoukens, R. Pintelon, I. Kollar, IEEE Trans. Instrumentation and Measurement 40
+(1991) 982-989, doi:10.1109/19.119778.
+"""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from excitation.errors import ExcitationError
+from excitation.profile import Floats
+from excitation.rig_model import Complexes
+
+__all__ = ["crest_factor_of", "lower_peak", "multisine_waveform", "random_phases", "schroeder_phases"]
+
+_POWERS = (4, 16, 64, 256)
+_OVERSAMPLING = 6  # points per period of the highest line while descending
+_WORK = 2e7  # points times iterations: about a second, however many lines
+
+
+def crest_factor_of(voltage: ArrayLike) -> float:
+    """Peak magnitude over rms of the samples (M,), without taking a mean off.
+
+    Raises
+    ------
+    ExcitationError
+        No samples, or all are zero.
+    """
+    samples = np.asarray(voltage, dtype=np.float64)
+    rms = math.sqrt(float(np.mean(samples**2))) if samples.size else 0.0
+    if rms == 0:
+        raise ExcitationError(f"crest factor: {samples.size} samples with an rms of 0 have none")
+    return float(np.max(np.abs(samples))) / rms
+
+
+def schroeder_phases(amplitudes: ArrayLike) -> Floats:
+    """Schroeder's phases for consecutive lines with the given amplitudes (F,), in rad.
+
+    phi_k = -2 pi sum_{l<k} (k - l) p_l, p the relative powers; -pi k (k - 1) / F where all are equal.
+    """
+    power = np.asarray(amplitudes, dtype=np.float64) ** 2
+    share = np.cumsum(power / power.sum())
+    return -2 * np.pi * np.concatenate([[0.0], np.cumsum(share)[:-1]])
+
+
+def random_phases(n_lines: int, *, rng: np.random.Generator) -> Floats:
+    """Independent phases, uniform from 0 to 2 pi, (F,) in rad."""
+    return rng.uniform(0.0, 2 * np.pi, n_lines)
+
+
+def multisine_waveform(lines: Complexes, *, harmonics: NDArray[np.int64], n_samples: int) -> Floats:
+    """One period, (N,): the sum of |c_k| cos(2 pi n_k i / N + arg c_k) for the complex amplitudes c (F,)."""
+    spectrum = np.zeros(n_samples // 2 + 1, dtype=np.complex128)
+    spectrum[harmonics] = lines * (n_samples / 2)
+    return np.asarray(np.fft.irfft(spectrum, n_samples))
+
+
+def lower_peak(phases: Floats, *, harmonics: NDArray[np.int64], signals: Complexes) -> Floats:
+    """Phases that lower the largest peak among the signals; never worse than those they start from.
+
+    Parameters
+    ----------
+    phases : (F,) array
+        Where to start, rad.
+    harmonics : (F,) array
+        The line numbers, above 0.
+    signals : (S, F) complex array
+        Amplitude of each line in each signal when its phase is 0, in units of that signal's limit.
+
+    Returns
+    -------
+    (F,) array
+        rad.
+    """
+    from scipy.optimize import minimize
+
+    n_samples = 1 << math.ceil(math.log2(_OVERSAMPLING * int(harmonics.max())))
+    iterations = int(np.clip(_WORK / (n_samples * len(signals) * len(_POWERS)), 3, 100))
+    best = np.asarray(phases, dtype=np.float64)
+    best_peak = _peak(best, harmonics, signals, n_samples)
+    current = best
+    for power in _POWERS:
+        result = minimize(
+            _log_norm,
+            current,
+            args=(power, harmonics, signals, n_samples),
+            jac=True,
+            method="L-BFGS-B",
+            options={"maxiter": iterations, "ftol": 1e-6},
+        )
+        current = np.asarray(result.x)
+        peak = _peak(current, harmonics, signals, n_samples)
+        if peak < best_peak:
+            best, best_peak = current, peak
+    return best
+
+
+def _waveforms(phases: Floats, harmonics: NDArray[np.int64], signals: Complexes, n_samples: int) -> Floats:
+    spectrum = np.zeros((len(signals), n_samples // 2 + 1), dtype=np.complex128)
+    spectrum[:, harmonics] = signals * np.exp(1j * phases) * (n_samples / 2)
+    return np.asarray(np.fft.irfft(spectrum, n_samples, axis=1))
+
+
+def _peak(phases: Floats, harmonics: NDArray[np.int64], signals: Complexes, n_samples: int) -> float:
+    return float(np.max(np.abs(_waveforms(phases, harmonics, signals, n_samples))))
+
+
+def _log_norm(
+    phases: Floats, power: int, harmonics: NDArray[np.int64], signals: Complexes, n_samples: int
+) -> tuple[float, Floats]:
+    """Logarithm of the L_p norm of all signals together, and its gradient in the phases."""
+    waveform = _waveforms(phases, harmonics, signals, n_samples)
+    peak = np.max(np.abs(waveform))
+    relative = waveform / peak
+    odd_power = relative ** (power - 1)  # p is even: the sign survives
+    total = float(np.sum(odd_power * relative))
+    # d x[i] / d phi_k = Re(j c_k exp(j(2 pi n_k i / N + phi_k))): one transform for all lines
+    transform = np.fft.rfft(odd_power, axis=1)[:, harmonics]
+    slope = np.sum(np.real(1j * signals * np.exp(1j * phases) * np.conj(transform)), axis=0)
+    return math.log(peak) + math.log(total) / power, slope / (peak * total)

@@ -1,0 +1,110 @@
+"""Which periodic voltage, holding a chosen set of frequencies, tells most within the limits of the rig?
+
+    rest | ramp-up | whole periods | ramp-down | rest
+
+The rest before makes the onset visible, the one after lets the ring-down die away. The ramps are the
+periodic signal itself, faded in and out, so the voltage leaves the bias and returns to it smoothly.
+The phases make room where the limits are: at the voltage, at its slope, or at the stops of the angle.
+
+Source: R. Pintelon, J. Schoukens, System Identification: A Frequency Domain Approach (2nd ed., 2012),
+chapters 2 and 5.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from excitation.amplitude import scaled_to_limits
+from excitation.crest_factor import lower_peak, multisine_waveform, random_phases, schroeder_phases
+from excitation.errors import ExcitationError
+from excitation.multisine_layout import MultisineLayout, MultisineSettings, lay_out_multisine
+from excitation.profile import Floats, Profile
+from excitation.rig_model import Complexes, response_of
+from excitation.swing import hold_response
+from excitation.timing import fade_in
+
+__all__ = ["design_multisine"]
+
+_RIGS_WEIGHED = 9  # whose angle the phases take into account
+
+
+def design_multisine(settings: MultisineSettings) -> Profile:
+    """Design the multisine: exactly periodic in its steady part, at the bias on both ends, within all limits.
+
+    Raises
+    ------
+    ExcitationError
+        The settings do not go together.
+    LimitExceeded
+        The amplitude asked for passes a limit.
+    """
+    layout = lay_out_multisine(settings)
+    amplitudes = _line_amplitudes(settings, layout)
+    phases = _choose_phases(settings, layout, amplitudes)
+    period = multisine_waveform(
+        amplitudes * np.exp(1j * phases), harmonics=layout.harmonics, n_samples=layout.period_samples
+    )
+    unscaled = Profile(
+        voltage=settings.limits.bias + _with_ramps(period, layout) / np.max(np.abs(period)),
+        sample_rate=settings.sample_rate,
+        hold=settings.hold,
+        bias=settings.limits.bias,
+        kind="multisine",
+        period_samples=layout.period_samples,
+        lines=layout.lines,
+        steady_start=layout.steady_start,
+        steady_stop=layout.steady_stop,
+        seed=settings.seed,
+        band=settings.band,
+        settings={"grid": settings.grid, "phases": settings.phases, "margin": settings.margin},
+    )
+    return scaled_to_limits(
+        unscaled, settings.limits, settings.rigs, margin=settings.margin, amplitude=settings.amplitude
+    )
+
+
+def _line_amplitudes(settings: MultisineSettings, layout: MultisineLayout) -> Floats:
+    n_lines = layout.lines.size
+    if settings.line_amplitudes is None:
+        return np.ones(n_lines)
+    amplitudes = np.asarray(settings.line_amplitudes, dtype=np.float64)
+    if amplitudes.shape != (n_lines,):
+        raise ExcitationError(
+            f"line_amplitudes: shape {amplitudes.shape}, but {n_lines} lines; ask lay_out_multisine for the lines first"
+        )
+    if not (np.isfinite(amplitudes).all() and (amplitudes >= 0).all() and amplitudes.any()):
+        raise ExcitationError("line_amplitudes: every one must be a number from 0 up, at least one above 0")
+    return amplitudes
+
+
+def _choose_phases(settings: MultisineSettings, layout: MultisineLayout, amplitudes: Floats) -> Floats:
+    if settings.phases == "schroeder":
+        return schroeder_phases(amplitudes)
+    phases = random_phases(layout.lines.size, rng=np.random.default_rng([settings.seed, 0]))
+    if settings.phases == "random":
+        return phases
+    return lower_peak(phases, harmonics=layout.harmonics, signals=_limited_signals(settings, layout, amplitudes))
+
+
+def _limited_signals(settings: MultisineSettings, layout: MultisineLayout, amplitudes: Floats) -> Complexes:
+    """Voltage, its slope and the angle of each rig, all in units of their limits, (S, F)."""
+    limits, lines = settings.limits, layout.lines
+    held = hold_response(lines, step=1 / settings.sample_rate, hold=settings.hold)
+    angles = [
+        response_of(rig, lines) * held / (settings.margin * limits.angle) for rig in settings.rigs[:_RIGS_WEIGHED]
+    ]
+    voltage = np.full(lines.size, 1 / (limits.voltage - abs(limits.bias)))
+    slope = 2j * np.pi * lines / limits.slew_rate
+    return np.asarray(amplitudes * np.array([voltage, slope, *angles]), dtype=np.complex128)
+
+
+def _with_ramps(period: Floats, layout: MultisineLayout) -> Floats:
+    """Departure from the bias over the whole profile, (M,)."""
+    ramp, steady = layout.ramp_samples, layout.n_periods * layout.period_samples
+    driven = np.take(period, np.arange(-ramp, steady + ramp), mode="wrap")
+    driven[:ramp] *= fade_in(ramp)
+    driven[steady + ramp :] *= fade_in(ramp)[::-1]
+    departure = np.zeros(layout.n_samples)
+    start = layout.steady_start - ramp
+    departure[start : start + driven.size] = driven
+    return departure
