@@ -1,0 +1,67 @@
+"""How do the two clocks relate? True time t = offset + ratio * stamp, and what was lost on the way.
+
+When nothing common to both logs was recorded, the offset cannot be told from the rig's delay: then
+`offset_known` is false, `offset` is None and the delay of the model contains it (delay - offset).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from freqid.quantity import Quantity, in_unit
+
+__all__ = ["ClockMap"]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class ClockMap:
+    """The map from the sensor's stamps to the time of the voltage, and the state of the frames.
+
+    `ratio_ppm` is (ratio - 1) in parts per million. `lag` is what the records themselves show: delay - offset.
+    `lost_at` (L,) are the stamps just before each gap, `lost_frames` how many frames fell into the gaps;
+    `jitter` is the rms deviation of the stamps from a uniform grid in s; `repeated_stamps` counts stamps equal to the one before.
+    """
+
+    ratio_ppm: Quantity
+    offset_known: bool
+    lag: Quantity
+    lost_frames: int
+    lost_at: NDArray[np.float64] = in_unit("s")
+    frame_interval: float = in_unit("s")
+    jitter: float = in_unit("s")
+    repeated_stamps: int = 0
+    frames: int = 0
+
+    def as_json(self) -> dict[str, Any]:
+        """The form of "clock" in results/model.json."""
+        return {
+            "ratio_ppm": self.ratio_ppm.as_json(),
+            "offset_known": self.offset_known,
+            "lag": self.lag.as_json(),
+            "lost_frames": self.lost_frames,
+            "frames": self.frames,
+            "frame_interval": self.frame_interval,
+            "stamp_jitter": self.jitter,
+            "repeated_stamps": self.repeated_stamps,
+            "lost_at": [float(v) for v in self.lost_at],
+        }
+    @classmethod
+    def from_json(cls, data: dict[str, Any]) -> ClockMap:
+        """Back from the form of results/model.json."""
+        ratio, lag = Quantity.from_json(data["ratio_ppm"]), Quantity.from_json(data["lag"])
+        assert ratio is not None and lag is not None
+        return cls(
+            ratio_ppm=ratio,
+            offset_known=data["offset_known"],
+            lag=lag,
+            lost_frames=data["lost_frames"],
+            lost_at=np.array(data["lost_at"]),
+            frame_interval=data["frame_interval"],
+            jitter=data["stamp_jitter"],
+            repeated_stamps=data["repeated_stamps"],
+            frames=data["frames"],
+        )

@@ -1,0 +1,64 @@
+"""What is the rig, in four numbers? The fitted model with its joint uncertainty and its limits of validity.
+
+`delay` contains the offset between the clocks (delay - offset) where that is unknown. Intervals are from Student's t
+with `degrees_of_freedom` of the noise estimate.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from freqid.capture.clock_map import ClockMap
+from freqid.quantity import Caveat, Quantity
+from freqid.second_order import PARAMETER_ORDER, SecondOrder, parameter_units
+
+__all__ = ["Adequacy", "IdentifiedModel"]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Adequacy:
+    """Lack-of-fit test of the model against the measured variances.
+
+    `statistic` is chi-square distributed with `degrees_of_freedom` where the model is true; `adequate` at the 5 % level... of
+    `p_value`. `better_structure` names a structure that does better, if one was found.
+    """
+
+    statistic: float
+    degrees_of_freedom: int
+    p_value: float
+    better_structure: str | None = None
+
+    @property
+    def adequate(self) -> bool:
+        """Whether the misfit is what noise alone would give (5 % false alarms)."""
+        return self.p_value >= 0.05
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class IdentifiedModel:
+    """Model, joint covariance (4, 4) in `PARAMETER_ORDER` (gain in angle unit per V, Hz, 1, s), and what it rests on."""
+
+    model: SecondOrder
+    covariance: NDArray[np.float64]
+    degrees_of_freedom: float
+    angle_unit: str
+    adequacy: Adequacy
+    clock: ClockMap
+    explained: float
+    caveats: tuple[Caveat, ...] = ()
+    runs: tuple[str, ...] = ()
+    settings: dict[str, Any] = field(default_factory=dict)
+
+    @property
+    def parameters(self) -> dict[str, Quantity]:
+        """The four parameters as quantities."""
+        units = parameter_units(self.angle_unit)
+        deviations = np.sqrt(np.diag(self.covariance))
+        return {
+            name: Quantity.normal(value, units[name], float(u), self.degrees_of_freedom)
+            for name, value, u in zip(PARAMETER_ORDER, self.model.vector, deviations, strict=True)
+        }

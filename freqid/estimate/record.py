@@ -1,0 +1,124 @@
+"""What exactly is to be explained? One run, ready for the estimators, nothing interpolated.
+
+The voltage becomes a `Drive` on its own clock; every readable angle keeps its own stamp, moved to the end of
+its exposure. A smooth voltage is refined by a cubic spline so that straight lines between its points serve.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from freqid.capture.simulated_rig import STAMP_TO_EXPOSURE_END
+from freqid.errors import EstimationError
+from freqid.held_response import Drive
+from freqid.quantity import Caveat
+from freqid.records import InputStream, Periodicity, Run
+
+__all__ = ["MINIMUM_FRAMES", "Record"]
+
+Floats = NDArray[np.float64]
+
+MINIMUM_FRAMES = 20
+UNIFORM_WITHIN = 0.05  # of one interval: stamps closer to a straight line than this are one grid
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Record:
+    """Drive, exposure-end stamps (N,) s and angles (N,) of the readable frames.
+
+    `free_start` is true where the rig may have been moving when the record began; then the estimators
+    add its free decay. `frame_interval` is the median spacing of the stamps in s.
+    """
+
+    drive: Drive
+    stamp: Floats
+    angle: Floats
+    angle_unit: str
+    exposure: float
+    frame_interval: float
+    common_clock: bool
+    free_start: bool
+    periodicity: Periodicity | None
+    caveats: tuple[Caveat, ...]
+
+    @classmethod
+    def from_run(cls, run: Run) -> Record:
+        """Prepare a run; raises EstimationError where too few frames are readable or nothing moves."""
+        a = run.angle
+        usable = np.isfinite(a.time) & np.isfinite(a.angle)
+        if usable.sum() < MINIMUM_FRAMES:
+            raise EstimationError(
+                f"{run.name}: {int(usable.sum())} readable angle samples; at least {MINIMUM_FRAMES} are needed: record longer"
+            )
+        stamp, angle = a.time[usable], a.angle[usable]
+        if np.ptp(angle) == 0:
+            raise EstimationError(f"{run.name}: the angle is constant ({angle[0]:g} {a.angle_unit}): check the sensor")
+        if np.ptp(run.input.voltage) == 0:
+            raise EstimationError(
+                f"{run.name}: the input is constant ({run.input.voltage[0]:g} V): check the input column or channel"
+            )
+        caveats: list[Caveat] = []
+        if not usable.all():
+            caveats.append(Caveat("unreadable_frames", f"{int((~usable).sum())} frames without a readable angle were left out."))
+        drive, remarks = _drive(run.input)
+        stamp = stamp + STAMP_TO_EXPOSURE_END[a.stamp] * a.exposure
+        if run.common_clock and not run.input.commanded:
+            covered = (stamp >= drive.start) & (stamp <= drive.stop + drive.interval)
+            stamp, angle = stamp[covered], angle[covered]
+        return cls(
+            drive=drive,
+            stamp=stamp,
+            angle=angle,
+            angle_unit=a.angle_unit,
+            exposure=a.exposure,
+            frame_interval=float(np.median(np.diff(stamp))),
+            common_clock=run.common_clock,
+            free_start=not run.input.commanded,
+            periodicity=run.input.periodicity,
+            caveats=(*caveats, *remarks),
+        )
+
+
+def _drive(source: InputStream) -> tuple[Drive, list[Caveat]]:
+    good = np.isfinite(source.voltage) & np.isfinite(source.time)
+    time, voltage = source.time[good], source.voltage[good]
+    order = np.arange(len(time))
+    interval = (time[-1] - time[0]) / (len(time) - 1)
+    deviation = float(np.max(np.abs(time - time[0] - order * interval)))
+    smooth = source.hold == "smooth"
+    caveats: list[Caveat] = []
+    if deviation > max(UNIFORM_WITHIN * interval, 0.6 * _resolution(time)):
+        fine = float(np.median(np.diff(time)[np.diff(time) > 0])) / 4
+        grid = time[0] + fine * np.arange(int((time[-1] - time[0]) / fine) + 1)
+        if smooth:
+            voltage = np.interp(grid, time, voltage)
+        else:
+            voltage = voltage[np.searchsorted(time, grid + 1e-12, side="right") - 1]
+        caveats.append(
+            Caveat(
+                "input_stamps_irregular",
+                f"The input stamps are irregular (up to {deviation:.2g} s off a uniform grid); "
+                f"the voltage was placed on a grid of {fine:.2g} s.",
+            )
+        )
+        return Drive.from_samples(voltage, start=float(time[0]), interval=fine, smooth=smooth), caveats
+    if smooth:
+        factor = 8 if len(voltage) < 20_000 else (4 if len(voltage) < 500_000 else 1)
+        if factor > 1:
+            from scipy.interpolate import CubicSpline
+
+            fine_grid = np.arange((len(voltage) - 1) * factor + 1) / factor
+            voltage = CubicSpline(order, voltage)(fine_grid)
+            interval = interval / factor
+    return Drive.from_samples(voltage, start=float(time[0]), interval=float(interval), smooth=smooth), caveats
+
+
+def _resolution(time: Floats) -> float:
+    """Coarsest decimal step (1, 0.1, ... 1e-6 s) that all stamps are multiples of; 0 if none."""
+    for step in (1.0, 0.1, 0.01, 1e-3, 1e-4, 1e-5, 1e-6):
+        if np.all(np.abs(time / step - np.round(time / step)) < 1e-3):
+            return step
+    return 0.0

@@ -1,0 +1,169 @@
+"""Where should the fit begin? A bank of second-order rigs, each matched against the record.
+
+For every natural frequency and damping ratio of a coarse grid the exact response to the drive is simulated on
+the sensor's grid and correlated with the angle at all lags at once (FFT). The best correlation gives
+gain, its sign and the lag together, so that an unknown clock offset and a reversed sensor need no special case: the rest
+before and after the excitation takes part in the correlation.
+
+Source: matched filter (North 1943), the maximum-likelihood lag of a known waveform in white noise.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from freqid.estimate.record import Record
+from freqid.held_response import Drive, HeldResponse
+from freqid.second_order import SecondOrder
+
+__all__ = ["Candidate", "starting_values"]
+
+Floats = NDArray[np.float64]
+
+DAMPING_GRID = (0.05, 0.2, 0.7, 2.0)
+FREQUENCY_RATIO = 1.15
+POINTS_PER_PERIOD = 16  # of the highest excited frequency, on the bank's grid
+LARGEST_RATIO_ERROR = 1.6e-3  # of two ordinary crystal clocks; design limit 1e-3
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Candidate:
+    """A start for the fit and the share (0-1) of the angle's variance it explains."""
+
+    model: SecondOrder
+    clock_ratio: float
+    explained: float
+
+
+def starting_values(record: Record, *, count: int = 4) -> list[Candidate]:
+    """The `count` best distinct starts, best first."""
+    band = _input_band(record)
+    bank = _Bank(record, band[1])
+    low, high = _frequency_range(record, band)
+    frequencies = low * FREQUENCY_RATIO ** np.arange(int(np.log(high / low) / np.log(FREQUENCY_RATIO)) + 1)
+    found = [c for f in frequencies for z in DAMPING_GRID for c in bank.match(float(f), z, 1.0)]
+    best = _distinct(found, count)
+    if record.common_clock:
+        return best
+    return _distinct(best + [c for b in best[:2] for c in bank.match_ratios(b)], count)
+
+
+def _input_band(record: Record) -> tuple[float, float]:
+    """Frequencies below which 1 % and 99.9 % of the input's power lies, Hz."""
+    value = record.drive.value - np.mean(record.drive.value)
+    power = np.cumsum(np.abs(np.fft.rfft(value)) ** 2)
+    share = power / power[-1]
+    resolution = 1 / (len(value) * record.drive.interval)
+    return float(np.searchsorted(share, 0.01) * resolution), float((np.searchsorted(share, 0.999) + 1) * resolution)
+
+
+def _frequency_range(record: Record, band: tuple[float, float]) -> tuple[float, float]:
+    duration = record.stamp[-1] - record.stamp[0]
+    low = max(2.0 / duration, 0.2 * band[0])
+    high = min(0.9 / record.frame_interval, 5 * band[1], 0.45 / record.drive.interval)
+    return low, max(high, 2 * low)
+
+
+def _distinct(found: list[Candidate], count: int) -> list[Candidate]:
+    chosen: list[Candidate] = []
+    for c in sorted(found, key=lambda item: -item.explained):
+        near = any(
+            abs(np.log(c.model.natural_frequency / o.model.natural_frequency)) < 0.2
+            and c.model.damping_ratio == o.model.damping_ratio
+            and abs(c.model.delay - o.model.delay) < 0.1 / c.model.natural_frequency
+            and abs(c.clock_ratio - o.clock_ratio) < 1e-9
+            for o in chosen
+        )
+        if not near:
+            chosen.append(c)
+        if len(chosen) == count:
+            break
+    return chosen
+
+
+class _Bank:
+    """The record on a uniform grid and its spectrum, ready to be correlated with many rigs."""
+
+    def __init__(self, record: Record, highest: float) -> None:
+        self._record = record
+        self._step = max(record.frame_interval, 1 / (POINTS_PER_PERIOD * highest))
+        self._drive = _coarse(record.drive, self._step)
+        self._angle = record.angle - np.mean(record.angle)
+        self._span = float(record.stamp[-1] - record.stamp[0])
+        begin = float(record.stamp[0]) if record.common_clock else record.drive.start
+        end = float(record.stamp[-1]) if record.common_clock else record.drive.stop + min(self._span, 5.0)
+        self._grid = begin + self._step * np.arange(int((end - begin) / self._step) + 1)
+        self._spectra: dict[float, Floats] = {}
+        self._energy = float(np.sum(self._resampled(1.0) ** 2))
+
+    def _resampled(self, ratio: float) -> Floats:
+        n = int(self._span * ratio / self._step) + 1
+        when = self._record.stamp[0] + self._step / ratio * np.arange(n)
+        return np.interp(when, self._record.stamp, self._angle)
+
+    def match(self, frequency: float, damping: float, ratio: float) -> list[Candidate]:
+        """The two best lags of one rig."""
+        shape = HeldResponse(self._drive, frequency, damping).at(self._grid)
+        shape = shape - np.mean(shape)
+        own = float(np.sum(shape**2))
+        angle = self._resampled(ratio)
+        n = len(shape) + len(angle)
+        size = 1 << (n - 1).bit_length()
+        if ratio not in self._spectra:
+            self._spectra[ratio] = np.fft.rfft(angle, size)
+        correlation = np.fft.irfft(self._spectra[ratio] * np.conj(np.fft.rfft(shape, size)), size)
+        # index j >= 0: the shape moved j steps later on the angle's grid; negative ones wrap around
+        lags = np.concatenate([np.arange(len(angle)), np.arange(size - len(shape) + 1, size)])
+        if self._record.common_clock:
+            longest = max(int(0.25 * len(angle)), 1)
+            lags = np.concatenate([np.arange(longest), [size - 2, size - 1]])
+        strength = np.abs(correlation[lags])
+        results = []
+        for _ in range(2):
+            best = int(lags[np.argmax(strength)])
+            moved = (best if best < size // 2 else best - size) * self._step
+            # the shape's grid begins at grid[0] of the drive's clock, the angle's at ratio * stamp[0]
+            lag = moved + ratio * self._record.stamp[0] - self._grid[0]
+            gain = correlation[best] / own
+            explained = correlation[best] ** 2 / (own * self._energy)
+            results.append(
+                Candidate(
+                    model=SecondOrder(
+                        gain=float(gain), natural_frequency=frequency, damping_ratio=damping, delay=float(lag)
+                    ),
+                    clock_ratio=ratio,
+                    explained=float(explained),
+                )
+            )
+            exclude = max(int(0.1 / frequency / self._step), 1)
+            distance = np.abs(lags - best)
+            strength = np.where(np.minimum(distance, size - distance) <= exclude, 0.0, strength)
+        return results
+
+    def match_ratios(self, candidate: Candidate) -> list[Candidate]:
+        """The same rig at clock ratios so spaced that a tenth of its cycle slips between them over the record."""
+        m = candidate.model
+        spacing = 0.2 / (m.natural_frequency * self._span)
+        if spacing > LARGEST_RATIO_ERROR:
+            return []
+        steps = int(LARGEST_RATIO_ERROR / spacing) + 1
+        return [
+            self.match(m.natural_frequency, m.damping_ratio, 1 + k * spacing)[0]
+            for k in range(-steps, steps + 1)
+            if k
+        ]
+
+
+def _coarse(drive: Drive, step: float) -> Drive:
+    """The drive averaged to some four points a step of the grid; enough for a start."""
+    factor = int(step / drive.interval / 4)
+    if factor < 2:
+        return drive
+    n = len(drive.value) // factor
+    value = drive.value[: n * factor].reshape(n, factor).mean(axis=1)
+    return Drive.from_samples(
+        np.concatenate([[0.0], value[1:]]), start=drive.start, interval=drive.interval * factor, smooth=False
+    )

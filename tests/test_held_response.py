@@ -1,0 +1,91 @@
+"""The exact response is what everything rests on: held against brute force, closed forms and limits."""
+
+from __future__ import annotations
+
+import numpy as np
+import pytest
+from scipy.integrate import solve_ivp
+from scipy.linalg import expm
+
+from freqid.held_response import Drive, HeldResponse, free_decay
+
+RIGS = [(3.0, 0.12), (3.0, 0.005), (1.7, 1.0), (1.64, 2.39), (0.7, 0.9999999), (40.0, 0.3)]
+
+
+def _drive(smooth: bool, n: int = 400, interval: float = 0.01) -> Drive:
+    voltage = np.concatenate([[0.3], 0.3 + np.random.default_rng(1).normal(size=n - 1)])
+    return Drive.from_samples(voltage, start=0.5, interval=interval, smooth=smooth)
+
+
+@pytest.mark.parametrize(("frequency", "damping"), RIGS)
+@pytest.mark.parametrize("smooth", [False, True])
+def test_states_equal_the_augmented_matrix_exponential(frequency: float, damping: float, smooth: bool) -> None:
+    """Step by step with scipy's expm of the system augmented by its input: an independent exact solution."""
+    drive = _drive(smooth)
+    wn = 2 * np.pi * frequency
+    a = np.zeros((4, 4))
+    a[0, 1], a[1], a[2, 3] = 1, [-(wn**2), -2 * damping * wn, wn**2, 0], 1
+    step = expm(a * drive.interval)
+    x, angles = np.zeros(2), [0.0]
+    for value, slope in zip(drive.value[:-1], drive.slope[:-1], strict=True):
+        x = (step @ [*x, value, slope])[:2]
+        angles.append(x[0])
+    time = drive.start + np.arange(len(drive.value)) * drive.interval
+    got = HeldResponse(drive, frequency, damping).at(time)
+    # rounding: 1e-16 / (wn dt)^2 with wn dt >= 0.044, times 400 steps, and some head-room
+    np.testing.assert_allclose(got, angles, atol=1e-10)
+
+
+@pytest.mark.parametrize(("frequency", "damping"), RIGS)
+def test_between_samples_equals_an_adaptive_solver(frequency: float, damping: float) -> None:
+    """Angle and exposure mean at odd instants against scipy's adaptive integrator run piece by piece."""
+    drive = _drive(False, n=12, interval=0.05)
+    wn = 2 * np.pi * frequency
+    state, end, mean = np.zeros(3), [], []
+    for m, value in enumerate(drive.value):
+        t0 = drive.start + m * drive.interval
+        piece = solve_ivp(
+            lambda t, y, v=value: [y[1], wn**2 * (v - y[0]) - 2 * damping * wn * y[1], y[0]],
+            (0, drive.interval), state, method="DOP853", rtol=1e-11, atol=1e-13, dense_output=True,
+        )
+        for t in (0.011, 0.037):
+            end.append(t0 + t)
+            mean.append((piece.sol(t)[2] - piece.sol(t - 0.01)[2]) / 0.01)
+        state = piece.y[:, -1]
+    got = HeldResponse(drive, frequency, damping).mean(np.array(end), 0.01)
+    np.testing.assert_allclose(got, mean, atol=2e-9)  # solver's tolerance 1e-11 divided by the exposure
+
+
+def test_exposure_mean_tends_to_the_angle() -> None:
+    """The mean over a vanishing exposure is the angle itself: the difference is half the exposure times the rate."""
+    response = HeldResponse(_drive(False), 3.0, 0.12)
+    time = np.linspace(0.6, 4.0, 50)
+    mean, _ = response.mean_and_rate(time, 1e-4)
+    np.testing.assert_allclose(mean, response.at(time) - 0.5e-4 * response.rate_at(time), atol=1e-5)
+
+
+def test_rate_is_the_derivative_of_the_mean() -> None:
+    """The rate handed to the clock and delay derivatives equals a central difference."""
+    response = HeldResponse(_drive(True), 3.0, 0.12)
+    time = np.linspace(0.6, 4.0, 50)
+    h = 1e-6
+    difference = (response.mean(time + h, 0.008) - response.mean(time - h, 0.008)) / (2 * h)
+    np.testing.assert_allclose(response.mean_and_rate(time, 0.008)[1], difference, atol=1e-6)
+
+
+@pytest.mark.parametrize(("frequency", "damping"), RIGS)
+def test_free_decay_solves_the_equation(frequency: float, damping: float) -> None:
+    """Columns start at (1, 0) and (0, wn) and equal the matrix exponential."""
+    wn = 2 * np.pi * frequency
+    time = np.array([0.0, 0.01, 0.1, 0.7])
+    a = np.array([[0, 1], [-(wn**2), -2 * damping * wn]])
+    expected = [[expm(a * t)[0, 0], expm(a * t)[0, 1] * wn] for t in time]
+    np.testing.assert_allclose(free_decay(wn, damping, time), expected, atol=1e-9)
+
+
+def test_rest_before_and_after() -> None:
+    """Before the first sample the rig rests; long after the last it stands at the last voltage."""
+    drive = Drive.from_samples(np.array([1.0, 1.0, 3.0]), start=2.0, interval=0.1, smooth=False)
+    response = HeldResponse(drive, 3.0, 0.5)
+    np.testing.assert_array_equal(response.at(np.array([-5.0, 0.0, 1.99])), 0.0)
+    np.testing.assert_allclose(response.at(np.array([20.0])), 2.0, atol=1e-12)
