@@ -31,13 +31,13 @@ def main(argv: Sequence[str] | None = None) -> int:
         3 (disagree) and 4 (unresolved).
     """
     _survive_narrow_encodings()
-    words = None if argv is None else list(argv)
+    if not (sys.argv[1:] if argv is None else argv):
+        return _show_help()
     try:
-        status = freqid_command.main(words, prog_name="freqid", standalone_mode=False)
+        status = freqid_command.main(
+            None if argv is None else list(argv), prog_name="freqid", standalone_mode=False
+        )
         return status if isinstance(status, int) else 0
-    except click.exceptions.NoArgsIsHelpError as error:
-        click.echo(error.format_message(), err=True)
-        return USAGE
     except click.UsageError as error:
         return _tell(_usage_message(error), USAGE)
     except click.ClickException as error:
@@ -50,6 +50,12 @@ def main(argv: Sequence[str] | None = None) -> int:
         if os.environ.get("FREQID_DEBUG") == "1" and not _is_fault(error):
             raise
         return _tell(_message(error), FAULT)
+
+
+def _show_help() -> int:
+    context = click.Context(freqid_command, info_name="freqid", **freqid_command.context_settings)
+    click.echo(freqid_command.get_help(context), err=True)
+    return USAGE
 
 
 def _is_fault(error: Exception) -> bool:

@@ -78,7 +78,6 @@ class VerbGroup(click.Group):
     cls=VerbGroup,
     subcommand_metavar="VERB FOLDER [OPTIONS]",
     context_settings={"help_option_names": ["--help", "-h"], "max_content_width": 110},
-    no_args_is_help=True,
 )
 @click.version_option(__version__, message="%(prog)s %(version)s")
 def freqid_command() -> None:

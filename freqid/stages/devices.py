@@ -37,7 +37,7 @@ def list_sound_interfaces() -> tuple[SoundInterface, ...]:
     """
     try:
         import sounddevice
-    except OSError as error:
+    except (OSError, ImportError) as error:
         raise CaptureError(
             f"sound interfaces cannot be listed: {error}; install the PortAudio library (Debian and Ubuntu: package"
             " libportaudio2; it comes with the Windows and macOS packages), or work with exported profiles and `import`"

@@ -1,0 +1,207 @@
+"""freqid excite: what is designed stays within the limits, is told, and is written whole or not at all."""
+
+from __future__ import annotations
+
+import itertools
+import json
+import os
+from typing import Any
+
+import numpy as np
+import pytest
+from scipy.signal import cont2discrete, lfilter
+
+from excitation.profile import Profile
+from excitation.profile_file import read_profile
+from freqid.cli import main
+from freqid.test_folder import TestFolder
+
+FILES = ("profile.csv", "profile.h5", "profile.json", "profile.wav")
+
+
+def designed(folder: TestFolder, capsys: pytest.CaptureFixture[str], *words: str) -> dict[str, Any]:
+    """What `freqid excite FOLDER --json` tells."""
+    assert main(["excite", str(folder.path), "--json", *words]) == 0
+    told: dict[str, Any] = json.loads(capsys.readouterr().out)
+    return told
+
+
+def simulated_swing(profile: Profile, *, gain: float, natural_frequency: float, damping_ratio: float) -> float:
+    """Peak angle at the sampling instants, by exact discretisation of the held input: independent of the design."""
+    wn = 2 * np.pi * natural_frequency
+    system = ([gain * wn**2], [1, 2 * damping_ratio * wn, wn**2])
+    numerator, denominator, _ = cont2discrete(system, 1 / profile.sample_rate, method="zoh")
+    rest = np.zeros(round(3 * profile.sample_rate))
+    voltage = np.concatenate([profile.voltage - profile.bias, rest])
+    return float(np.max(np.abs(lfilter(numerator[0], denominator, voltage))))
+
+
+@pytest.mark.parametrize("kind", ["multisine", "swept-sine", "step"])
+def test_rig_stays_clear_of_its_stops_all_over_the_box(
+    kind: str, folder: TestFolder, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """Whatever rig of the step test's box is driven, it swings less than the stops, and the worst about as predicted."""
+    words = ("--kind", kind) if kind == "step" else ("--kind", kind, "--duration", "25")
+    told = designed(folder, capsys, *words)
+    profile = read_profile(folder.profile("step" if kind == "step" else "response"))
+    swings = [
+        simulated_swing(profile, gain=12 * 1.05, natural_frequency=frequency, damping_ratio=damping)
+        for frequency, damping in itertools.product(np.linspace(2.85, 3.15, 7), (0.096, 0.12, 0.144))
+    ]
+    assert max(swings) < 30.0
+    # The design allows 0.9 of 30 deg = 27 deg at the rigs it looks at, three natural frequencies. Sampling at 250 Hz misses at
+    # most 1 - cos(pi * 12 / 250) = 1.1 % of the peak of the fastest line; the rigs in between may swing a little more.
+    assert told["prediction"]["swing"] == pytest.approx(27.0, rel=1e-3)
+    assert max(swings) == pytest.approx(27.0, rel=0.1)
+
+
+def test_design_is_written_as_told(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
+    """The four files appear, the JSON file holds what was printed, and the rig sheet's sha256 stands in it."""
+    told = designed(folder, capsys, "--band", "0.5", "10", "--duration", "25", "--seed", "3")
+    assert sorted(os.listdir(folder.path)) == sorted([*FILES, "rig.toml"])
+    written = folder.read_json(folder.profile_json, format="freqid profile")
+    assert written["prediction"] == told["prediction"]
+    assert list(written["sources"]) == ["rig.toml"]
+    profile = read_profile(folder.profile_h5)
+    assert (profile.duration, profile.band, profile.seed) == (25.0, (0.5, 10.0), 3)
+    assert told["band"] == [0.5, 10.0] and told["duration"] == 25.0
+    assert profile.n_periods == told["n_periods"] >= 2
+
+
+def test_same_seed_same_voltage(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
+    """A seed repeats the design to the last bit, another gives another, and a new design replaces the profile."""
+    voltages = []
+    for seed in ("1", "1", "2"):
+        designed(folder, capsys, "--duration", "25", "--seed", seed)
+        voltages.append(folder.profile_csv.read_bytes())
+    assert voltages[0] == voltages[1] != voltages[2]
+
+
+def test_step_profile_stands_beside_the_other(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
+    """--kind step writes step_profile.* and leaves profile.* alone."""
+    designed(folder, capsys, "--duration", "25")
+    before = folder.profile_h5.read_bytes()
+    told = designed(folder, capsys, "--kind", "step")
+    assert told["files"] == [f"step_profile.{suffix}" for suffix in ("h5", "csv", "wav", "json")]
+    assert told["kind"] == "step" and told["band"] is None
+    assert folder.profile_h5.read_bytes() == before
+
+
+def test_table_is_for_people_and_cautions_are_on_stderr(
+    folder: TestFolder, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """Stdout holds the table with values and uncertainties, stderr the cautions and no bar."""
+    assert main(["excite", str(folder.path), "--duration", "25"]) == 0
+    out, err = capsys.readouterr()
+    for words in ("worst swing", "27 deg of 27 deg allowed, stops at ±30 deg", "limited by the swing", "natural frequency",
+                  "profile.h5, profile.csv, profile.wav, profile.json"):  # fmt: skip
+        assert words in out
+    assert out.count("±") >= 6
+    for words in ("limits of its maker come first", "no safety certificate", "sign", "clear of the sweep",
+                  "hard-wired stop", "competent person"):  # fmt: skip
+        assert words in err
+    assert "\x1b" not in out + err
+
+
+def test_wanted_damping_lengthens_the_test(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
+    """The test grows until the damping ratio is as certain as wanted, at 95 %, and no further than it must."""
+    usual = designed(folder, capsys)
+    reached = relative(usual)
+    wanted = 0.8 * reached
+    told = designed(folder, capsys, "--wanted-damping", f"{wanted:.6g}")
+    assert relative(told) <= wanted * (1 + 1e-5)  # the option was printed to 6 digits
+    # Information grows with the duration: 1/0.8^2 = 1.56 of the usual one, and not twice that.
+    assert 1.2 < told["duration"] / usual["duration"] < 3.2
+    assert designed(folder, capsys, "--wanted-damping", "0.5")["duration"] == usual["duration"]
+
+
+def relative(told: dict[str, Any]) -> float:
+    """95 % half-width of the damping ratio over its value."""
+    damping = told["prediction"]["expected"]["damping_ratio"]
+    low, high = damping["interval_95"]
+    return float((high - low) / 2 / damping["value"])
+
+
+def test_damping_out_of_reach_is_told_with_what_it_would_take(
+    folder: TestFolder, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """What cannot be reached in the duration allowed is refused with the figures, and nothing is written."""
+    assert main(["excite", str(folder.path), "--duration", "25", "--wanted-damping", "0.00001"]) == 1
+    err = capsys.readouterr().err
+    assert "1e-05 relative (95 %) would take some" in err and "25 s is the most" in err and err.count("\n") == 1
+    assert os.listdir(folder.path) == ["rig.toml"]
+
+
+def test_without_a_step_test_the_amplitude_is_cautious(
+    folder: TestFolder, change_rig: Any, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """Where no swing can be predicted the amplitude is a tenth of the voltage limit, which is said."""
+    change_rig("gain = 12.0 ", "#")
+    told = designed(folder, capsys, "--duration", "25")
+    assert told["prediction"]["swing"] is None
+    # Samples are rounded toward the bias by less than one count of 10 V / 2^31.
+    assert told["peak_voltage"] == pytest.approx(0.5, abs=1e-8)
+    assert told["prediction"]["expected"] == dict.fromkeys(["gain", "natural_frequency", "damping_ratio", "delay"])
+    assert [warning["code"] for warning in told["prediction"]["warnings"]] == ["swing_not_predicted"]
+    assert main(["excite", str(folder.path), "--duration", "25"]) == 0
+    out, err = capsys.readouterr()
+    assert "undetermined" in out and "not predicted" in out and "limited by the unknown swing" in out
+    assert "note: the swing is not predicted: [step_test] lacks" in err
+
+
+@pytest.mark.parametrize(
+    ("changes", "words", "expected"),
+    [
+        ([("natural_frequency = 3.0 ", "#")], [], "band: [step_test] has no natural_frequency"),
+        ([("natural_frequency = 3.0 ", "#")], ["--wanted-damping", "0.1", "--band", "1", "9"], "cannot be planned for"),
+        ([("noise = 0.3", "noise = 0")], ["--wanted-damping", "0.1"], "a noise above 0 in [angle_sensor]"),
+        ([("sample_rate = 250.0", "sample_rate = 250.5")], ["--duration", "25"], "250.5 Hz; a WAV file needs a whole"),
+        ([], ["--band", "5", "2"], "band: 5 to 2 Hz"),
+        ([], ["--band", "5", "200"], "200 Hz is not below 125 Hz"),
+        ([], ["--duration", "2"], "duration: 2 s"),
+        ([("voltage = 5.0", "voltage = -5.0")], [], "rig.toml: [limits] voltage = -5.0: must be a number above 0"),
+        ([("slew_rate", "slewrate")], [], "[limits] unknown key 'slewrate'; did you mean 'slew_rate'?"),
+    ],
+)  # fmt: skip
+def test_what_cannot_be_designed_is_told_in_one_line(
+    changes: list[tuple[str, str]], words: list[str], expected: str, folder: TestFolder, change_rig: Any,
+    capsys: pytest.CaptureFixture[str],
+) -> None:  # fmt: skip
+    """A faulty sheet or settings that do not go together are status 1, one line, and nothing is written."""
+    for old, new in changes:
+        change_rig(old, new)
+    assert main(["excite", str(folder.path), *words]) == 1
+    out, err = capsys.readouterr()
+    assert out == "" and err.count("\n") == 1 and expected in err
+    assert os.listdir(folder.path) == ["rig.toml"]
+
+
+def test_band_for_a_step_is_wrong_usage(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
+    """A step test has no band."""
+    assert main(["excite", str(folder.path), "--kind", "step", "--band", "1", "5"]) == 2
+    assert "--band has no meaning for --kind step" in capsys.readouterr().err
+
+
+@pytest.mark.parametrize(
+    ("band", "code"), [(("0.5", "40"), "band_above_sensor"), (("5", "20"), "resonance_outside_band")]
+)
+def test_doubtful_band_is_a_caveat(
+    band: tuple[str, str], code: str, folder: TestFolder, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """A band beyond the sensor, or beside the resonance, is designed, and the doubt is told."""
+    told = designed(folder, capsys, "--band", *band, "--duration", "25")
+    assert [warning["code"] for warning in told["prediction"]["warnings"]] == [code]
+
+
+def test_failed_writing_leaves_nothing(
+    folder: TestFolder, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """On a full disk no profile and no temporary file is left."""
+
+    def refuse(*_: object) -> None:
+        raise OSError(28, "No space left on device", "profile.h5")
+
+    monkeypatch.setattr(os, "replace", refuse)
+    assert main(["excite", str(folder.path), "--duration", "25"]) == 1
+    assert "profile.h5: No space left on device" in capsys.readouterr().err
+    assert os.listdir(folder.path) == ["rig.toml"]
