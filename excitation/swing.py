@@ -28,7 +28,8 @@ __all__ = ["PredictedAngle", "check_swing", "hold_response", "predicted_angle", 
 _POINTS_PER_PERIOD = 20  # misses at most 1 - cos(pi/20) = 1.2 % of the peak of the fastest component
 _NEGLIGIBLE_ENERGY = 1e-8  # of the angle lies above its highest significant frequency: 1e-4 of its rms
 _NEGLIGIBLE_TAIL = 1e-3  # of the peak may be left when the padding ends
-_MAX_DOUBLINGS = 6  # of the padding; after that what is left is added to the swing
+_MAX_DOUBLINGS = 10  # of the padding, while it stays below so many samples; then what is left is added to the swing
+_MOST_SAMPLES = 1 << 23
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -59,6 +60,8 @@ def predicted_angle(profile: Profile, rig: RigModel) -> PredictedAngle:
         if predicted.remainder <= _NEGLIGIBLE_TAIL * np.max(np.abs(predicted.angle)):
             return PredictedAngle(time=predicted.time, angle=predicted.angle, remainder=0.0)
         padding *= 2
+        if (profile.duration + padding) * profile.sample_rate > _MOST_SAMPLES:
+            break
     return predicted
 
 
