@@ -142,22 +142,26 @@ def normalised_crossing_time(damping_ratio: ArrayLike, level: ArrayLike) -> Floa
     damping_ratio : array
         ζ > 0.
     level : array
-        Fraction of the final value, 0 ≤ level < 1, broadcast against `damping_ratio`.
+        Fraction of the final value, 0 ≤ level ≤ 1, broadcast against `damping_ratio`.
+
+    Returns
+    -------
+    array of the broadcast shape, unit 1; NaN at level 1 for ζ ≥ 1, where it is never reached.
 
     Raises
     ------
     EstimationError
-        A level lies outside [0, 1).
+        A level lies outside [0, 1].
     """
     fraction = np.asarray(level, dtype=np.float64)
-    wrong = ~((fraction >= 0) & (fraction < 1))
+    wrong = ~((fraction >= 0) & (fraction <= 1))
     if np.any(wrong):
-        raise EstimationError(
-            f"level = {fraction[wrong].flat[0]:g}: give a fraction of the final value from 0 up to, not including, 1"
-        )
+        raise EstimationError(f"level = {fraction[wrong].flat[0]:g}: give a fraction of the final value from 0 to 1")
     ratio, fraction = np.broadcast_arrays(checked_damping_ratio(damping_ratio), fraction)
-    crossing = _time_of(1 - fraction, ratio, np.zeros(ratio.shape), _rise_end(ratio, fraction))
-    return np.asarray(np.where(fraction > 0, crossing, 0.0))
+    never = (ratio >= 1) & (fraction == 1)
+    reached = np.where(never, 0.0, fraction)
+    crossing = _time_of(1 - reached, ratio, np.zeros(ratio.shape), _rise_end(ratio, reached))
+    return np.asarray(np.where(never, np.nan, np.where(fraction > 0, crossing, 0.0)))
 
 
 def _rise_end(ratio: Floats, level: Floats) -> Floats:
@@ -167,7 +171,8 @@ def _rise_end(ratio: Floats, level: Floats) -> Floats:
     pole's rate p, so what is missing is at most (1+px)·e^(−px) ≤ 2·e^(−px/2), which is 1 − level at the time returned.
     """
     slow_time_constant = ratio + np.sqrt(np.maximum((ratio - 1) * (ratio + 1), 0.0))
-    return np.where(ratio < 1, np.pi / _damped_frequency(ratio), 2 * np.log(2 / (1 - level)) * slow_time_constant)
+    missing = np.where(ratio < 1, 1.0, 1 - level)
+    return np.where(ratio < 1, np.pi / _damped_frequency(ratio), 2 * np.log(2 / missing) * slow_time_constant)
 
 
 def _time_of(missing: Floats, ratio: Floats, start: Floats, end: Floats) -> Floats:
@@ -176,7 +181,7 @@ def _time_of(missing: Floats, ratio: Floats, start: Floats, end: Floats) -> Floa
     `missing` is negative where the response comes from above. Newton's method inside a shrinking bracket: where a
     step leaves the bracket or does not halve the one before the last, the bracket is halved instead.
     """
-    side = np.sign(missing)
+    side = np.where(missing < 0, -1.0, 1.0)
     low, high, time = start, end, start + (end - start) / 2
     last = before_last = high - low
     done = np.zeros(np.shape(time), dtype=bool)

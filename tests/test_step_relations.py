@@ -228,10 +228,18 @@ def test_a_damping_ratio_that_is_not_positive_is_refused(damping_ratio: object) 
         percent_overshoot(damping_ratio)
 
 
+def test_the_final_value_is_reached_only_below_critical_damping() -> None:
+    """The rise time to 100 % is (π − arccos ζ)/√(1−ζ²) below ζ = 1 (10⁻¹³: rounding) and does not exist from there."""
+    damping_ratio = np.array([0.01, 0.3, 0.9])
+    expected = (np.pi - np.arccos(damping_ratio)) / np.sqrt(1 - damping_ratio**2)
+    np.testing.assert_allclose(normalised_crossing_time(damping_ratio, 1.0), expected, rtol=1e-13)
+    assert np.isnan(normalised_crossing_time([1.0, 2.0], 1.0)).all()
+
+
 def test_levels_and_bands_outside_their_range_are_refused() -> None:
-    """A level of 1 is never reached for ζ ≥ 1, and a band is a fraction."""
-    with pytest.raises(EstimationError, match="level = 1: give a fraction"):
-        normalised_crossing_time(0.5, [0.5, 1.0])
+    """Levels and bands are fractions of the final value."""
+    with pytest.raises(EstimationError, match=r"level = 1\.5: give a fraction"):
+        normalised_crossing_time(0.5, [0.5, 1.5])
     for band in (0, 1, 5):
         with pytest.raises(EstimationError, match=f"band = {band}: give a fraction"):
             normalised_settling_time(0.5, band)
