@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 
 from freqid.capture.logs.log_table import LogColumn, LogTable
 from freqid.capture.logs.text_block import regular_rows
-from freqid.capture.logs.text_cells import WHITE_SPACE, ColumnNumbers, Decimal, column_numbers, split_cells
+from freqid.capture.logs.text_cells import WHITE_SPACE, ColumnNumbers, Decimal, cell_kind, column_numbers, split_cells
 from freqid.capture.logs.text_dialect import COMMENT_MARKS, Dialect, find_dialect, is_comment, trimmed
 from freqid.capture.logs.text_header import Header, read_header
 from freqid.capture.logs.text_lines import decoded, split_lines
@@ -58,6 +58,7 @@ def read_csv(path: Path, *, decimal: Decimal | None = None) -> LogTable:
     first = next((n for n, line in enumerate(lines) if dialect and _is_row(line, dialect)), None)
     if dialect is None or first is None:
         raise LogError(_no_numbers(lines, path.name))
+    _refuse_short_first_row(lines[:first], dialect, path.name)
     header = read_header(lines[:first], dialect)
     columns, numbers, notes = _regular(lines, first, header, dialect) or _careful(
         lines, first, header, dialect, path.name
@@ -90,6 +91,18 @@ def _no_numbers(lines: Sequence[str], source: str) -> str:
             f'{source}: a header only ("{filled[0][:60]}"), no row of numbers below it; record or export the log again'
         )
     return f'{source}: no line with a number in {len(filled)} lines (the first is "{filled[0][:60]}"); is it a log?'
+
+
+def _refuse_short_first_row(above: Sequence[str], dialect: Dialect, source: str) -> None:
+    """Two numbers or more and nothing else, right above the first whole row, are a row that lost its end."""
+    line = len(above)
+    while line and not above[line - 1].strip():
+        line -= 1
+    cells = split_cells(above[line - 1], dialect.separator) if line else []
+    if len(cells) > 1 and all(cell_kind(cell, dialect.decimal) == "number" for cell in cells):
+        raise LogError(
+            f"{source}: line {line} ends before column {len(cells) + 1} of {dialect.width}; correct or remove the line"
+        )
 
 
 def _is_row(line: str, dialect: Dialect) -> bool:

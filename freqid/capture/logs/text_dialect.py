@@ -35,9 +35,10 @@ class Dialect:
         return len(self.kinds)
 
     def starts_data(self, line: str) -> bool:
-        """Whether `line` is a row: no more cells than columns, and half of the columns of numbers hold numbers."""
-        cells = trimmed(split_cells(line, self.separator))
-        if len(cells) > self.width:
+        """Whether `line` is a row: a cell for each column, and half of the columns of numbers hold numbers."""
+        written = split_cells(line, self.separator)
+        cells = trimmed(written)
+        if len(cells) > self.width or len(written) < self.width:
             return False
         cells += [""] * (self.width - len(cells))
         kinds = [
@@ -57,10 +58,13 @@ def find_dialect(lines: Sequence[str], decimal: Decimal | None = None) -> Dialec
         The decimal sign, where the user states it.
     """
     sample = _sample(lines)
+    quoted = any('"' in line for line in sample)
     signs: tuple[Decimal, ...] = (".", ",") if decimal is None else (decimal,)
     best: tuple[tuple[float, bool, int], Dialect] | None = None
     for sign in signs:
         for separator in CANDIDATES:
+            if separator == sign and not quoted:
+                continue  # only within quotes can the same sign be both
             judged = _judge(sample, separator, sign)
             if judged is not None and (best is None or judged[0] > best[0]):
                 best = judged
@@ -106,7 +110,8 @@ def _judge(sample: Sequence[str], separator: str, decimal: Decimal) -> tuple[tup
     regular = [index for index in holding if len(rows[index]) == width]
     cells = [kind for index in regular for kind in kinds[index] if kind != "missing"]
     good = sum(kind != "text" for kind in cells)
-    column_kinds = _column_kinds([kinds[index] for index in regular], width)
+    filled = max(len(trimmed(rows[index])) for index in regular)
+    column_kinds = _column_kinds([kinds[index] for index in regular], filled)
     if "number" not in column_kinds:
         return None
     quality = round(good / len(cells) * len(regular) / len(rows), 3)
@@ -120,8 +125,6 @@ def _column_kinds(rows: Sequence[Sequence[Cell]], width: int) -> tuple[Cell, ...
     for column in range(width):
         counts = Counter(row[column] for row in rows if row[column] != "missing")
         kinds.append(counts.most_common(1)[0][0] if counts else "missing")
-    while kinds and kinds[-1] == "missing":
-        kinds.pop()
     return tuple(kinds)
 
 

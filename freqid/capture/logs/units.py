@@ -38,7 +38,7 @@ _SPELLINGS: Mapping[str, str] = MappingProxyType(
 )
 _NOT_MILLI = frozenset({"MV", "MS", "MRAD"})  # mega is not milli: an upper-case M is no reading of these tables
 _BRACKETS = re.compile(r"\(([^()]*)\)|\[([^\[\]]*)\]|\{([^{}]*)\}|<([^<>]*)>")
-_TRAILING = re.compile(r"(?:_|/|\s+in\s+)\s*([^\s_/]+)\s*$")
+_TRAILING = re.compile(r"(?:_|/|\s+in\s+)\s*([^\s_/()\[\]{}<>]+)\s*$")
 
 
 def canonical_unit(text: str) -> str | None:

@@ -7,6 +7,7 @@ point is taken as it stands, so that 1.0 is digital full scale in every case.
 from __future__ import annotations
 
 import hashlib
+import struct
 import warnings
 from pathlib import Path
 
@@ -33,7 +34,7 @@ def read_wav(path: Path) -> LogTable:
         with warnings.catch_warnings():
             warnings.simplefilter("ignore", wavfile.WavFileWarning)  # further chunks (markers, tags) are no fault
             rate, samples = wavfile.read(path)
-    except (OSError, ValueError, EOFError, IndexError, ArithmeticError, UnboundLocalError) as fault:
+    except (OSError, ValueError, EOFError, IndexError, ArithmeticError, UnboundLocalError, struct.error) as fault:
         raise LogError(f"{path.name}: not a readable WAV file ({fault}); record or export it again") from fault
     channels = _full_scale_one(samples).reshape(len(samples), -1)
     return LogTable(
