@@ -27,7 +27,7 @@ def planned(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> TestFolde
 def test_simulated_run_holds_the_profile_and_says_where_it_is_from(
     planned: TestFolder, capsys: pytest.CaptureFixture[str]
 ) -> None:
-    """The run's voltage is the profile to the last bit; seed and the profile's sha256 are noted; the file is read-only."""
+    """The voltage is the profile to the last bit, seed and sha256 are noted, and the file is read-only."""
     assert main(["capture", str(planned.path), "--simulate", "--seed", "7", "--json"]) == 0
     told = json.loads(capsys.readouterr().out)
     run = read_run(planned.run("response-001"))

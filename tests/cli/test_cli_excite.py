@@ -40,7 +40,7 @@ def simulated_swing(profile: Profile, *, gain: float, natural_frequency: float, 
 def test_rig_stays_clear_of_its_stops_all_over_the_box(
     kind: str, folder: TestFolder, capsys: pytest.CaptureFixture[str]
 ) -> None:
-    """Whatever rig of the step test's box is driven, it swings less than the stops, and the worst about as predicted."""
+    """No rig of the step test's box reaches the stops, and the worst swings at least as far as predicted."""
     words = ("--kind", kind) if kind == "step" else ("--kind", kind, "--duration", "25")
     told = designed(folder, capsys, *words)
     profile = read_profile(folder.profile("step" if kind == "step" else "response"))
@@ -49,10 +49,10 @@ def test_rig_stays_clear_of_its_stops_all_over_the_box(
         for frequency, damping in itertools.product(np.linspace(2.85, 3.15, 7), (0.096, 0.12, 0.144))
     ]
     assert max(swings) < 30.0
-    # The design allows 0.9 of 30 deg = 27 deg at the rigs it looks at, three natural frequencies. Sampling at 250 Hz misses at
-    # most 1 - cos(pi * 12 / 250) = 1.1 % of the peak of the fastest line; the rigs in between may swing a little more.
+    # The design allows 0.9 of 30 deg = 27 deg to the rigs it looks at, which are among these. Seen only at 250 Hz, a
+    # peak of the fastest line is missed by at most 1 - cos(pi * 12 / 250) = 1.1 %; rigs in between may swing further.
     assert told["prediction"]["swing"] == pytest.approx(27.0, rel=1e-3)
-    assert max(swings) == pytest.approx(27.0, rel=0.1)
+    assert max(swings) > 27.0 * (1 - 0.012)
 
 
 def test_design_is_written_as_told(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
@@ -93,8 +93,8 @@ def test_table_is_for_people_and_cautions_are_on_stderr(
     """Stdout holds the table with values and uncertainties, stderr the cautions and no bar."""
     assert main(["excite", str(folder.path), "--duration", "25"]) == 0
     out, err = capsys.readouterr()
-    for words in ("worst swing", "27 deg of 27 deg allowed, stops at ±30 deg", "limited by the swing", "natural frequency",
-                  "profile.h5, profile.csv, profile.wav, profile.json"):  # fmt: skip
+    for words in ("worst swing", "27 deg of 27 deg allowed, stops at ±30 deg", "limited by the swing",
+                  "natural frequency", "profile.h5, profile.csv, profile.wav, profile.json"):  # fmt: skip
         assert words in out
     assert out.count("±") >= 6
     for words in ("limits of its maker come first", "no safety certificate", "sign", "clear of the sweep",

@@ -102,7 +102,7 @@ def test_no_verb_at_all_shows_the_help(capsys: pytest.CaptureFixture[str]) -> No
         (CaptureError("two\nlines"), "freqid: two lines"),
         (ExcitationError("band: no"), "freqid: band: no"),
         (LimitExceeded("swing: 40 predicted"), "freqid: swing: 40 predicted"),
-        (OSError(errno.ENOSPC, "No space left on device", "runs/a é.h5"), "freqid: runs/a é.h5: No space left on device"),
+        (OSError(errno.ENOSPC, "No space left on device", "runs/a é.h5"), "runs/a é.h5: No space left on device; make"),
         (PermissionError(errno.EACCES, "Permission denied"), "freqid: Permission denied"),
         (OSError("odd"), "freqid: odd"),
     ],
