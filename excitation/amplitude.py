@@ -1,8 +1,9 @@
 """How large may an excitation be?
 
-As large as three limits allow: the voltage (with the bias counted on the side where it stands), the
-slew rate, and the swing of every rig that the true one may be, transients included. All three are
-proportional to the departure from the bias, so one scale answers.
+As large as three limits allow: the voltage (the bias counts on the side where it stands, and where the
+output is smooth the peaks between the samples count too), the slew rate, and the swing of every rig that the
+true one may be, transients included. All three are proportional to the departure from the bias, so one scale
+answers.
 """
 
 from __future__ import annotations
@@ -15,13 +16,14 @@ import numpy as np
 
 from excitation.errors import ExcitationError, LimitExceeded
 from excitation.limits import Limits
-from excitation.profile import Profile
+from excitation.profile import Floats, Profile
 from excitation.rig_model import RigModel
 from excitation.swing import check_margin, worst_swing
 
 __all__ = ["Allowance", "largest_allowance", "scaled_to_limits"]
 
 _ROUNDING = 1 - 1e-9  # keeps floating-point rounding of the scaled samples inside the limits
+_FINER = 4  # points per sample of a smooth voltage: its peaks between the samples count too
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -114,8 +116,16 @@ def _check_amplitude(amplitude: float, largest: float, allowance: Allowance) -> 
 
 
 def _voltage_scale(profile: Profile, limits: Limits) -> float:
-    deviation = profile.voltage - profile.bias
-    up, down = float(np.max(deviation)), float(-np.min(deviation))
+    departure = profile.voltage - profile.bias
+    if profile.hold == "smooth":
+        departure = np.concatenate([departure, _between_samples(departure)])
+    up, down = float(np.max(departure)), float(-np.min(departure))
     scales = [(limits.voltage - limits.bias) / up] if up > 0 else []
     scales += [(limits.voltage + limits.bias) / down] if down > 0 else []
     return min(scales)
+
+
+def _between_samples(departure: Floats) -> Floats:
+    """The band-limited signal through the samples, at a finer step: a smooth output passes through these too."""
+    n_finer = _FINER * departure.size
+    return np.asarray(np.fft.irfft(np.fft.rfft(departure), n_finer) * _FINER)

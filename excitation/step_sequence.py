@@ -20,7 +20,7 @@ from excitation.errors import ExcitationError
 from excitation.limits import Limits
 from excitation.profile import Floats, Hold, Profile
 from excitation.rig_model import RigModel
-from excitation.swing import predicted_angle
+from excitation.swing import NEGLIGIBLE_TAIL, angle_with_rest
 
 __all__ = ["StepSettings", "design_step_sequence", "settling_time"]
 
@@ -32,6 +32,7 @@ _SETTLED_PART, _SHORTEST_SETTLED = 0.5, 0.5  # of the settling time; s
 _LONGEST_LEAD_IN = 1.0  # s
 _SMOOTH_RAMP = 8  # samples at least: content above half the sample rate is then negligible
 _LONGEST_SETTLING = 300.0  # s
+_STEP_SAMPLES = 2000  # of the step from which the settling time is read
 _REFINEMENTS = 20
 
 
@@ -79,7 +80,7 @@ class _StepTiming:
     n_steps: int
 
 
-def settling_time(rig: RigModel, *, sample_rate: float) -> float:
+def settling_time(rig: RigModel) -> float:
     """Time in s after which the step response of the rig stays within 1 % of its final value.
 
     Raises
@@ -88,8 +89,8 @@ def settling_time(rig: RigModel, *, sample_rate: float) -> float:
         It has not settled after 5 minutes.
     """
     length = 2.0
-    while length <= _LONGEST_SETTLING:
-        settled = _settled_within(rig, sample_rate=sample_rate, length=length)
+    while length <= 2 * _LONGEST_SETTLING:
+        settled = _settled_within(rig, length=length)
         if settled is not None:
             return settled
         length *= 2
@@ -130,12 +131,15 @@ def design_step_sequence(settings: StepSettings) -> Profile:
     )
 
 
-def _settled_within(rig: RigModel, *, sample_rate: float, length: float) -> float | None:
+def _settled_within(rig: RigModel, *, length: float) -> float | None:
     """The settling time if it lies in the first half of a step held for `length` s, else None."""
-    n_up = math.ceil(length * sample_rate)
-    step = Profile(voltage=np.ones(n_up), sample_rate=sample_rate, hold="zero-order", bias=0.0, kind="step")
-    predicted = predicted_angle(step, rig)
-    held = predicted.time < n_up / sample_rate
+    step = Profile(
+        voltage=np.ones(_STEP_SAMPLES), sample_rate=_STEP_SAMPLES / length, hold="zero-order", bias=0.0, kind="step"
+    )
+    predicted = angle_with_rest(step, rig, padding=length)
+    if predicted.remainder > NEGLIGIBLE_TAIL * np.max(np.abs(predicted.angle)):
+        return None
+    held = predicted.time < length
     angle, time = predicted.angle[held], predicted.time[held]
     final = float(np.mean(angle[time > 0.75 * length]))
     unsettled = np.flatnonzero(np.abs(angle - final) > _SETTLED_BAND * abs(final))
@@ -168,7 +172,7 @@ def _choose_hold_time(settings: StepSettings) -> float:
         return settings.hold_time
     if not settings.rigs:
         return _DEFAULT_HOLD
-    settling = max(settling_time(rig, sample_rate=settings.sample_rate) for rig in settings.rigs)
+    settling = max(settling_time(rig) for rig in settings.rigs)
     return settling + max(_SETTLED_PART * settling, _SHORTEST_SETTLED)
 
 

@@ -23,11 +23,21 @@ from excitation.limits import Limits
 from excitation.profile import Floats, Hold, Profile
 from excitation.rig_model import Complexes, RigModel, response_of
 
-__all__ = ["PredictedAngle", "check_swing", "hold_response", "predicted_angle", "predicted_swing", "worst_swing"]
+__all__ = [
+    "NEGLIGIBLE_TAIL",
+    "PredictedAngle",
+    "angle_with_rest",
+    "check_margin",
+    "check_swing",
+    "hold_response",
+    "predicted_angle",
+    "predicted_swing",
+    "worst_swing",
+]
 
 _POINTS_PER_PERIOD = 20  # misses at most 1 - cos(pi/20) = 1.2 % of the peak of the fastest component
 _NEGLIGIBLE_ENERGY = 1e-8  # of the angle lies above its highest significant frequency: 1e-4 of its rms
-_NEGLIGIBLE_TAIL = 1e-3  # of the peak may be left when the padding ends
+NEGLIGIBLE_TAIL = 1e-3  # of the peak may be left when the padding ends
 _MAX_DOUBLINGS = 10  # of the padding, while it stays below so many samples; then what is left is added to the swing
 _MOST_SAMPLES = 1 << 23
 
@@ -56,13 +66,33 @@ def predicted_angle(profile: Profile, rig: RigModel) -> PredictedAngle:
     """
     padding = max(1.0, profile.duration / 4)
     for _ in range(_MAX_DOUBLINGS):
-        predicted = _padded_angle(profile, rig, padding=padding)
-        if predicted.remainder <= _NEGLIGIBLE_TAIL * np.max(np.abs(predicted.angle)):
+        predicted = angle_with_rest(profile, rig, padding=padding)
+        if predicted.remainder <= NEGLIGIBLE_TAIL * np.max(np.abs(predicted.angle)):
             return PredictedAngle(time=predicted.time, angle=predicted.angle, remainder=0.0)
         padding *= 2
         if (profile.duration + padding) * profile.sample_rate > _MOST_SAMPLES:
             break
     return predicted
+
+
+def angle_with_rest(profile: Profile, rig: RigModel, *, padding: float) -> PredictedAngle:
+    """Angle that the profile will cause if it repeats after a rest of `padding` s or a little more."""
+    deviation, rate = profile.voltage - profile.bias, profile.sample_rate
+    n_padded = _fast_length(deviation.size + math.ceil(padding * rate))
+    spectrum = _angle_spectrum(deviation, rig, rate=rate, n_padded=n_padded, hold=profile.hold)
+    highest = _highest_significant(spectrum)
+    if profile.hold == "zero-order" and _POINTS_PER_PERIOD * highest > n_padded:
+        # the staircase has content above half its rate: the same staircase with finer steps shows it
+        finer = math.ceil(_POINTS_PER_PERIOD * highest / n_padded)
+        spectrum = _angle_spectrum(
+            np.repeat(deviation, finer) / finer, rig, rate=finer * rate, n_padded=finer * n_padded, hold=profile.hold
+        )
+        highest = _highest_significant(spectrum)
+    n_points = _fast_length(max(_POINTS_PER_PERIOD * highest, 1000))
+    angle = np.fft.irfft(spectrum[: n_points // 2], n_points) * (n_points / n_padded)
+    time = np.arange(n_points, dtype=np.float64) * (n_padded / rate / n_points)
+    resting = time > (0.1 * deviation.size + 0.9 * n_padded) / rate
+    return PredictedAngle(time=time, angle=angle, remainder=float(np.max(np.abs(angle[resting]), initial=0.0)))
 
 
 def predicted_swing(profile: Profile, rig: RigModel) -> float:
@@ -119,25 +149,6 @@ def hold_response(frequency: Floats, *, step: float, hold: Hold) -> Complexes:
     if hold == "smooth":
         return np.ones(frequency.shape, dtype=np.complex128)
     return np.asarray(np.sinc(frequency * step) * np.exp(-1j * np.pi * frequency * step))
-
-
-def _padded_angle(profile: Profile, rig: RigModel, *, padding: float) -> PredictedAngle:
-    deviation, rate = profile.voltage - profile.bias, profile.sample_rate
-    n_padded = _fast_length(deviation.size + math.ceil(padding * rate))
-    spectrum = _angle_spectrum(deviation, rig, rate=rate, n_padded=n_padded, hold=profile.hold)
-    highest = _highest_significant(spectrum)
-    if profile.hold == "zero-order" and _POINTS_PER_PERIOD * highest > n_padded:
-        # the staircase has content above half its rate: the same staircase with finer steps shows it
-        finer = math.ceil(_POINTS_PER_PERIOD * highest / n_padded)
-        spectrum = _angle_spectrum(
-            np.repeat(deviation, finer) / finer, rig, rate=finer * rate, n_padded=finer * n_padded, hold=profile.hold
-        )
-        highest = _highest_significant(spectrum)
-    n_points = _fast_length(max(_POINTS_PER_PERIOD * highest, 1000))
-    angle = np.fft.irfft(spectrum[: n_points // 2], n_points) * (n_points / n_padded)
-    time = np.arange(n_points, dtype=np.float64) * (n_padded / rate / n_points)
-    resting = time > (0.1 * deviation.size + 0.9 * n_padded) / rate
-    return PredictedAngle(time=time, angle=angle, remainder=float(np.max(np.abs(angle[resting]), initial=0.0)))
 
 
 def _angle_spectrum(deviation: Floats, rig: RigModel, *, rate: float, n_padded: int, hold: Hold) -> Complexes:
