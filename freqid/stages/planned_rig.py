@@ -2,14 +2,17 @@
 
 The step test gives a most probable rig and, with its uncertainties (relative, at 95 %), a box of rigs
 around it. A swing is safe only if it is safe all over the box: at the highest gain (the swing is
-proportional to it), at the lowest, middle and highest natural frequency, and at either end of the damping
-ratio. The delay moves the swing in time and leaves it as large.
+proportional to it), at either end of the damping ratio, and at natural frequencies all across, so close
+that none of the box lies further than a quarter of a half-power width (2 zeta fn) from one that is looked
+at: a rig that is lightly damped answers quite differently between the corners. The delay moves the swing in
+time and leaves it as large.
 """
 
 from __future__ import annotations
 
-from itertools import product
+import math
 
+from excitation.errors import ExcitationError
 from excitation.limits import Limits
 from excitation.profile import Profile
 from excitation.swing import check_swing
@@ -18,7 +21,9 @@ from freqid.second_order import SecondOrder
 
 __all__ = ["SWING_MARGIN", "check_against_limits", "expected_rig", "limits_of", "rigs_of_the_box"]
 
-SWING_MARGIN = 0.9  # of the way to the stops, at the worst corner of the box
+SWING_MARGIN = 0.9  # of the way to the stops, at the worst rig of the box
+_PART_OF_WIDTH = 0.25
+_MOST_EACH_SIDE = 100  # natural frequencies: enough for damping ratios down to a hundredth of their uncertainty
 
 
 def limits_of(rig: Rig) -> Limits:
@@ -45,20 +50,28 @@ def expected_rig(rig: Rig) -> SecondOrder | None:
 
 
 def rigs_of_the_box(rig: Rig) -> tuple[SecondOrder, ...]:
-    """The expected rig and the six worst of its uncertainty box; empty where there is no expected rig."""
+    """The expected rig, then the largest-gain rigs all over its box (corners first); empty without an expected rig.
+
+    Raises
+    ------
+    ExcitationError
+        The damping ratio is too small for the uncertainty of the natural frequency to look at all that lies between.
+    """
     expected = expected_rig(rig)
     if expected is None:
         return ()
     known = rig.step_test
-    low, high = _ends(expected.natural_frequency, known.natural_frequency_uncertainty)
-    corners = product(
-        (low, expected.natural_frequency, high), _ends(expected.damping_ratio, known.damping_ratio_uncertainty)
-    )
     largest_gain = expected.gain * (1 + known.gain_uncertainty)
-    return expected, *(
-        SecondOrder(gain=largest_gain, natural_frequency=frequency, damping_ratio=damping, delay=expected.delay)
-        for frequency, damping in corners
-    )
+    corners, between = [], []
+    for damping in _ends(expected.damping_ratio, known.damping_ratio_uncertainty):
+        frequencies = _across(expected.natural_frequency, known.natural_frequency_uncertainty, damping)
+        rigs = [
+            SecondOrder(gain=largest_gain, natural_frequency=frequency, damping_ratio=damping, delay=expected.delay)
+            for frequency in frequencies
+        ]
+        corners += [rigs[0], rigs[-1]]
+        between += rigs[1:-1]
+    return expected, *corners, *between
 
 
 def check_against_limits(profile: Profile, rig: Rig) -> float | None:
@@ -73,6 +86,19 @@ def check_against_limits(profile: Profile, rig: Rig) -> float | None:
     limits.check_profile(profile)
     rigs = rigs_of_the_box(rig)
     return check_swing(profile, rigs, limits, margin=SWING_MARGIN) if rigs else None
+
+
+def _across(natural_frequency: float, relative: float, damping_ratio: float) -> list[float]:
+    """Natural frequencies over the box in Hz, ascending: both ends, the middle, as many more as the width needs."""
+    spacing = 2 * _PART_OF_WIDTH * 2 * damping_ratio  # relative; a rig halfway is the part of a width from either
+    n_each_side = max(1, math.ceil(relative / spacing))
+    if n_each_side > _MOST_EACH_SIDE:
+        raise ExcitationError(
+            f"swing: cannot be predicted for a damping ratio of {damping_ratio:.3g} while the natural frequency is"
+            f" known to {relative:.3g} only; find it more closely and lower [step_test]"
+            f" natural_frequency_uncertainty to {0.9 * _MOST_EACH_SIDE * spacing:.2g}"
+        )
+    return [natural_frequency * (1 + relative * n / n_each_side) for n in range(-n_each_side, n_each_side + 1)]
 
 
 def _ends(value: float, relative: float) -> tuple[float, float]:

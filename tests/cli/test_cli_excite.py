@@ -55,6 +55,21 @@ def test_rig_stays_clear_of_its_stops_all_over_the_box(
     assert max(swings) > 27.0 * (1 - 0.012)
 
 
+def test_lightly_damped_rig_is_safe_between_the_corners_too(
+    folder: TestFolder, change_rig: Any, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """A sharp resonance anywhere within a wide uncertainty stays clear of the stops."""
+    change_rig("damping_ratio = 0.12 ", "damping_ratio = 0.02 ")
+    change_rig("natural_frequency_uncertainty = 0.05", "natural_frequency_uncertainty = 0.1")
+    designed(folder, capsys, "--duration", "25")
+    profile = read_profile(folder.profile_h5)
+    swings = [
+        simulated_swing(profile, gain=12 * 1.05, natural_frequency=frequency, damping_ratio=0.016)
+        for frequency in np.linspace(2.7, 3.3, 61)
+    ]
+    assert max(swings) < 30.0
+
+
 def test_design_is_written_as_told(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
     """The four files appear, the JSON file holds what was printed, and the rig sheet's sha256 stands in it."""
     told = designed(folder, capsys, "--band", "0.5", "10", "--duration", "25", "--seed", "3")
@@ -157,6 +172,7 @@ def test_without_a_step_test_the_amplitude_is_cautious(
         ([("noise = 0.3", "noise = 0")], ["--wanted-damping", "0.1"], "a noise above 0 in [angle_sensor]"),
         ([("sample_rate = 250.0", "sample_rate = 250.5")], ["--duration", "25"], "250.5 Hz; a WAV file needs a whole"),
         ([], ["--band", "5", "2"], "band: 5 to 2 Hz"),
+        ([("damping_ratio = 0.12 ", "damping_ratio = 0.0005 ")], [], "lower [step_test] natural_frequency_uncertainty"),
         ([], ["--band", "5", "200"], "200 Hz is not below 125 Hz"),
         ([], ["--duration", "2"], "duration: 2 s"),
         ([("voltage = 5.0", "voltage = -5.0")], [], "rig.toml: [limits] voltage = -5.0: must be a number above 0"),
