@@ -88,11 +88,9 @@ def quantise(profile: Profile, *, full_scale: float) -> tuple[NDArray[np.int32],
 
 def _rounded_toward_bias(departure: Floats, bias: float, scale: CountScale) -> NDArray[np.int32]:
     bias_count = scale.reference_count if bias != 0 else 0
-    steps = departure / scale.volts_per_count
-    nearest = np.round(steps)
-    # a departure that stands on a count but for floating-point rounding stays there: reading and writing again is exact
-    steps = np.where(np.abs(steps - nearest) <= 1e-15 * _FULL_COUNT, nearest, np.trunc(steps))
+    steps = np.round(departure / scale.volts_per_count)
     counts = np.clip(bias_count + steps, -_FULL_COUNT, _FULL_COUNT - 1)
+    # compared in V, as they will be read: a sample that already stands on a count stays there
     excess = np.abs(scale.voltage_of(counts) - bias) > np.abs(departure)
     return np.asarray((counts - excess * np.sign(steps)).astype(np.int32))
 

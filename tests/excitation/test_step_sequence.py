@@ -43,6 +43,13 @@ def test_ramp_is_as_short_as_the_slew_rate_allows(limits: Limits) -> None:
     assert profile.max_slew_rate <= 250.0
 
 
+def test_smaller_step_takes_a_shorter_ramp(limits: Limits, vane: Vane) -> None:
+    """Where the stops allow 1.3 V only, the ramp is that of 1.3 V, not of the 5 V the voltage limit would allow."""
+    profile = design_step_sequence(_settings(replace(limits, slew_rate=50.0), rigs=[vane]))
+    assert profile.settings["ramp_samples"] == math.ceil(profile.peak_voltage * 200.0 / 50.0)
+    assert profile.max_slew_rate > 40.0
+
+
 def test_smooth_steps_keep_the_limit_between_the_samples(limits: Limits) -> None:
     """The band-limited signal through the samples of a smooth output stays inside the voltage limit."""
     profile = design_step_sequence(_settings(limits, hold="smooth"))

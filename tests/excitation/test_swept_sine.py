@@ -68,6 +68,12 @@ def test_profile_rests_fades_and_stays_inside(limits: Limits, vane: Vane, course
     assert np.all(profile.voltage[-500:] == bias)
     assert 27.0 * (1 - 2e-9) < predicted_swing(profile, vane) <= 27.0
     limits.check_profile(profile)
+    record = profile.settings
+    first = round(record["sweep_start_s"] * 500)
+    last = first + round(record["sweep_duration_s"] * 500)
+    # raised cosines over 1000 samples at 0.5 Hz and 42 at 12 Hz: weights of 1e-5 and 2.2e-2 at most after 3 steps
+    assert np.max(np.abs(profile.voltage[first : first + 3] - bias)) <= 1e-4 * profile.peak_voltage
+    assert 0 < np.max(np.abs(profile.voltage[last - 3 : last] - bias)) <= 2.2e-2 * profile.peak_voltage
 
 
 def test_recorded_course_rebuilds_the_samples(limits: Limits) -> None:
