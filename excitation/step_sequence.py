@@ -34,6 +34,7 @@ _SMOOTH_RAMP = 8  # samples at least: content above half the sample rate is then
 _LONGEST_SETTLING = 300.0  # s
 _STEP_SAMPLES = 2000  # of the step from which the settling time is read
 _REFINEMENTS = 20
+_CLOSE_ENOUGH = 1e-3  # of the amplitude: the last scaling takes it up, with a ramp longer by as little
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -119,7 +120,7 @@ def design_step_sequence(settings: StepSettings) -> Profile:
         if settings.amplitude is not None:
             break
         allowance = largest_allowance(unscaled, settings.limits, settings.rigs, margin=settings.margin)
-        if allowance.scale >= 1 - 1e-9:
+        if allowance.scale >= 1 - _CLOSE_ENOUGH:
             break
         size *= allowance.scale
     return scaled_to_limits(
