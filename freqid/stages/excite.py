@@ -24,7 +24,7 @@ from freqid.records import RunKind
 from freqid.rig import Rig, read_rig
 from freqid.stages import Progress, silent
 from freqid.stages.planned_rig import SWING_MARGIN, expected_rig, limits_of, rigs_of_the_box
-from freqid.stages.prediction import Prediction, predict, relative_damping_uncertainty
+from freqid.stages.prediction import Prediction, predict, relative_damping_uncertainty, rig_to_plan_with
 from freqid.test_folder import TestFolder
 
 __all__ = ["Design", "ExciteSettings", "design_excitation"]
@@ -91,6 +91,7 @@ def _long_enough(settings: ExciteSettings, rig: Rig) -> Profile:
     wanted = settings.wanted_damping
     if wanted is None:
         return _designed(settings, rig)
+    rig_to_plan_with(rig)  # refuses before the work, not after
     longest = settings.duration or _LONGEST
     first = None if settings.duration is None else min(settings.duration, _usual(rig))
     profile = _designed(replace(settings, duration=first), rig)

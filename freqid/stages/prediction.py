@@ -19,7 +19,7 @@ from freqid.rig import Rig
 from freqid.second_order import PARAMETER_ORDER, SecondOrder, parameter_units
 from freqid.stages.planned_rig import SWING_MARGIN, check_against_limits, expected_rig
 
-__all__ = ["Prediction", "predict", "relative_damping_uncertainty"]
+__all__ = ["Prediction", "predict", "relative_damping_uncertainty", "rig_to_plan_with"]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -78,14 +78,19 @@ def relative_damping_uncertainty(profile: Profile, rig: Rig) -> float:
     ExcitationError
         It cannot be told: rig or noise unknown, or the profile does not determine the four parameters.
     """
+    reached = _quantities(profile, rig_to_plan_with(rig), rig)["damping_ratio"]
+    return reached.expanded_uncertainty / reached.value
+
+
+def rig_to_plan_with(rig: Rig) -> SecondOrder:
+    """The expected rig; raises ExcitationError where the sheet tells too little to predict an uncertainty."""
     model = expected_rig(rig)
     if model is None or rig.angle_sensor.noise == 0:
         raise ExcitationError(
             "wanted damping: cannot be planned for; give gain, natural_frequency and damping_ratio in [step_test]"
             " and a noise above 0 in [angle_sensor]"
         )
-    reached = _quantities(profile, model, rig)["damping_ratio"]
-    return reached.expanded_uncertainty / reached.value
+    return model
 
 
 def _expected(profile: Profile, rig: Rig) -> tuple[dict[str, Quantity | None], list[Caveat]]:

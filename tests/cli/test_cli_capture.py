@@ -16,14 +16,6 @@ from freqid.run_file import read_run
 from freqid.test_folder import TestFolder
 
 
-@pytest.fixture
-def planned(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> TestFolder:
-    """The folder with a short profile in it."""
-    assert main(["excite", str(folder.path), "--duration", "25"]) == 0
-    capsys.readouterr()
-    return folder
-
-
 def test_simulated_run_holds_the_profile_and_says_where_it_is_from(
     planned: TestFolder, capsys: pytest.CaptureFixture[str]
 ) -> None:

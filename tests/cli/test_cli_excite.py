@@ -16,6 +16,7 @@ from excitation.profile_file import read_profile
 from freqid.cli import main
 from freqid.test_folder import TestFolder
 
+SHORT = ("--duration", "12", "--band", "1", "8")
 FILES = ("profile.csv", "profile.h5", "profile.json", "profile.wav")
 
 
@@ -41,7 +42,7 @@ def test_rig_stays_clear_of_its_stops_all_over_the_box(
     kind: str, folder: TestFolder, capsys: pytest.CaptureFixture[str]
 ) -> None:
     """No rig of the step test's box reaches the stops, and the worst swings at least as far as predicted."""
-    words = ("--kind", kind) if kind == "step" else ("--kind", kind, "--duration", "25")
+    words = ("--kind", kind) if kind == "step" else ("--kind", kind, *SHORT)
     told = designed(folder, capsys, *words)
     profile = read_profile(folder.profile("step" if kind == "step" else "response"))
     swings = [
@@ -83,30 +84,29 @@ def test_design_is_written_as_told(folder: TestFolder, capsys: pytest.CaptureFix
     assert profile.n_periods == told["n_periods"] >= 2
 
 
-def test_same_seed_same_voltage(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
+def test_same_seed_same_voltage(planned: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
     """A seed repeats the design to the last bit, another gives another, and a new design replaces the profile."""
-    voltages = []
-    for seed in ("1", "1", "2"):
-        designed(folder, capsys, "--duration", "25", "--seed", seed)
-        voltages.append(folder.profile_csv.read_bytes())
+    voltages = [planned.profile_csv.read_bytes()]  # the default seed
+    for seed in ("1", "2"):
+        designed(planned, capsys, *SHORT, "--seed", seed)
+        voltages.append(planned.profile_csv.read_bytes())
     assert voltages[0] == voltages[1] != voltages[2]
 
 
-def test_step_profile_stands_beside_the_other(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
+def test_step_profile_stands_beside_the_other(planned: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
     """--kind step writes step_profile.* and leaves profile.* alone."""
-    designed(folder, capsys, "--duration", "25")
-    before = folder.profile_h5.read_bytes()
-    told = designed(folder, capsys, "--kind", "step")
+    before = planned.profile_h5.read_bytes()
+    told = designed(planned, capsys, "--kind", "step")
     assert told["files"] == [f"step_profile.{suffix}" for suffix in ("h5", "csv", "wav", "json")]
     assert told["kind"] == "step" and told["band"] is None
-    assert folder.profile_h5.read_bytes() == before
+    assert planned.profile_h5.read_bytes() == before
 
 
 def test_table_is_for_people_and_cautions_are_on_stderr(
     folder: TestFolder, capsys: pytest.CaptureFixture[str]
 ) -> None:
     """Stdout holds the table with values and uncertainties, stderr the cautions and no bar."""
-    assert main(["excite", str(folder.path), "--duration", "25"]) == 0
+    assert main(["excite", str(folder.path), *SHORT]) == 0
     out, err = capsys.readouterr()
     for words in ("worst swing", "27 deg of 27 deg allowed, stops at ±30 deg", "limited by the swing",
                   "natural frequency", "profile.h5, profile.csv, profile.wav, profile.json"):  # fmt: skip
@@ -120,14 +120,15 @@ def test_table_is_for_people_and_cautions_are_on_stderr(
 
 def test_wanted_damping_lengthens_the_test(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
     """The test grows until the damping ratio is as certain as wanted, at 95 %, and no further than it must."""
-    usual = designed(folder, capsys)
+    usual = designed(folder, capsys, "--kind", "swept-sine")
     reached = relative(usual)
     wanted = 0.8 * reached
-    told = designed(folder, capsys, "--wanted-damping", f"{wanted:.6g}")
+    told = designed(folder, capsys, "--kind", "swept-sine", "--wanted-damping", f"{wanted:.6g}")
     assert relative(told) <= wanted * (1 + 1e-5)  # the option was printed to 6 digits
     # Information grows with the duration: 1/0.8^2 = 1.56 of the usual one, and not twice that.
     assert 1.2 < told["duration"] / usual["duration"] < 3.2
-    assert designed(folder, capsys, "--wanted-damping", "0.5")["duration"] == usual["duration"]
+    easy = designed(folder, capsys, "--kind", "swept-sine", "--wanted-damping", "0.5")
+    assert easy["duration"] == usual["duration"]
 
 
 def relative(told: dict[str, Any]) -> float:
@@ -141,9 +142,9 @@ def test_damping_out_of_reach_is_told_with_what_it_would_take(
     folder: TestFolder, capsys: pytest.CaptureFixture[str]
 ) -> None:
     """What cannot be reached in the duration allowed is refused with the figures, and nothing is written."""
-    assert main(["excite", str(folder.path), "--duration", "25", "--wanted-damping", "0.00001"]) == 1
+    assert main(["excite", str(folder.path), *SHORT, "--wanted-damping", "0.00001"]) == 1
     err = capsys.readouterr().err
-    assert "1e-05 relative (95 %) would take some" in err and "25 s is the most" in err and err.count("\n") == 1
+    assert "1e-05 relative (95 %) would take some" in err and "12 s is the most" in err and err.count("\n") == 1
     assert os.listdir(folder.path) == ["rig.toml"]
 
 
@@ -152,13 +153,13 @@ def test_without_a_step_test_the_amplitude_is_cautious(
 ) -> None:
     """Where no swing can be predicted the amplitude is a tenth of the voltage limit, which is said."""
     change_rig("gain = 12.0 ", "#")
-    told = designed(folder, capsys, "--duration", "25")
+    told = designed(folder, capsys, *SHORT)
     assert told["prediction"]["swing"] is None
     # Samples are rounded toward the bias by less than one count of 10 V / 2^31.
     assert told["peak_voltage"] == pytest.approx(0.5, abs=1e-8)
     assert told["prediction"]["expected"] == dict.fromkeys(["gain", "natural_frequency", "damping_ratio", "delay"])
     assert [warning["code"] for warning in told["prediction"]["warnings"]] == ["swing_not_predicted"]
-    assert main(["excite", str(folder.path), "--duration", "25"]) == 0
+    assert main(["excite", str(folder.path), *SHORT]) == 0
     out, err = capsys.readouterr()
     assert "undetermined" in out and "not predicted" in out and "limited by the unknown swing" in out
     assert "note: the swing is not predicted: [step_test] lacks" in err
@@ -205,7 +206,7 @@ def test_doubtful_band_is_a_caveat(
     band: tuple[str, str], code: str, folder: TestFolder, capsys: pytest.CaptureFixture[str]
 ) -> None:
     """A band beyond the sensor, or beside the resonance, is designed, and the doubt is told."""
-    told = designed(folder, capsys, "--band", *band, "--duration", "25")
+    told = designed(folder, capsys, "--band", *band, "--duration", "12", "--kind", "swept-sine")
     assert [warning["code"] for warning in told["prediction"]["warnings"]] == [code]
 
 
@@ -218,6 +219,6 @@ def test_failed_writing_leaves_nothing(
         raise OSError(28, "No space left on device", "profile.h5")
 
     monkeypatch.setattr(os, "replace", refuse)
-    assert main(["excite", str(folder.path), "--duration", "25"]) == 1
+    assert main(["excite", str(folder.path), *SHORT]) == 1
     assert "profile.h5: No space left on device" in capsys.readouterr().err
     assert os.listdir(folder.path) == ["rig.toml"]

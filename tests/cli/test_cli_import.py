@@ -18,12 +18,11 @@ from freqid.test_folder import TestFolder
 
 
 @pytest.fixture
-def driven(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> Run:
+def driven(planned: TestFolder, capsys: pytest.CaptureFixture[str]) -> Run:
     """A simulated run in the folder, to be logged and brought in again."""
-    assert main(["excite", str(folder.path), "--duration", "25"]) == 0
-    assert main(["capture", str(folder.path), "--simulate", "--seed", "1"]) == 0
+    assert main(["capture", str(planned.path), "--simulate", "--seed", "1"]) == 0
     capsys.readouterr()
-    return read_run(folder.run("response-001"))
+    return read_run(planned.run("response-001"))
 
 
 def write_log(path: Path, header: str, *columns: np.ndarray) -> Path:
