@@ -18,7 +18,7 @@ from excitation.errors import ExcitationError, LimitExceeded
 from excitation.limits import Limits
 from excitation.profile import Floats, Profile
 from excitation.rig_model import RigModel
-from excitation.swing import check_margin, worst_swing
+from excitation.swing import check_margin, fast_length, worst_swing
 
 __all__ = ["Allowance", "largest_allowance", "scaled_to_limits"]
 
@@ -127,5 +127,5 @@ def _voltage_scale(profile: Profile, limits: Limits) -> float:
 
 def _between_samples(departure: Floats) -> Floats:
     """The band-limited signal through the samples, at a finer step: a smooth output passes through these too."""
-    n_finer = _FINER * departure.size
-    return np.asarray(np.fft.irfft(np.fft.rfft(departure), n_finer) * _FINER)
+    n_padded = fast_length(departure.size)
+    return np.asarray(np.fft.irfft(np.fft.rfft(departure, n_padded), _FINER * n_padded) * _FINER)

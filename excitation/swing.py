@@ -29,6 +29,7 @@ __all__ = [
     "angle_with_rest",
     "check_margin",
     "check_swing",
+    "fast_length",
     "hold_response",
     "predicted_angle",
     "predicted_swing",
@@ -78,7 +79,7 @@ def predicted_angle(profile: Profile, rig: RigModel) -> PredictedAngle:
 def angle_with_rest(profile: Profile, rig: RigModel, *, padding: float) -> PredictedAngle:
     """Angle that the profile will cause if it repeats after a rest of `padding` s or a little more."""
     deviation, rate = profile.voltage - profile.bias, profile.sample_rate
-    n_padded = _fast_length(deviation.size + math.ceil(padding * rate))
+    n_padded = fast_length(deviation.size + math.ceil(padding * rate))
     spectrum = _angle_spectrum(deviation, rig, rate=rate, n_padded=n_padded, hold=profile.hold)
     highest = _highest_significant(spectrum)
     if profile.hold == "zero-order" and _POINTS_PER_PERIOD * highest > n_padded:
@@ -88,7 +89,7 @@ def angle_with_rest(profile: Profile, rig: RigModel, *, padding: float) -> Predi
             np.repeat(deviation, finer) / finer, rig, rate=finer * rate, n_padded=finer * n_padded, hold=profile.hold
         )
         highest = _highest_significant(spectrum)
-    n_points = _fast_length(max(_POINTS_PER_PERIOD * highest, 1000))
+    n_points = fast_length(max(_POINTS_PER_PERIOD * highest, 1000))
     angle = np.fft.irfft(spectrum[: n_points // 2], n_points) * (n_points / n_padded)
     time = np.arange(n_points, dtype=np.float64) * (n_padded / rate / n_points)
     resting = time > (0.1 * deviation.size + 0.9 * n_padded) / rate
@@ -165,6 +166,6 @@ def _highest_significant(spectrum: Complexes) -> int:
     return max(1, int(spectrum.size - 1 - np.searchsorted(energy, _NEGLIGIBLE_ENERGY * energy[-1])))
 
 
-def _fast_length(n: int) -> int:
+def fast_length(n: int) -> int:
     """Smallest length not below n that transforms fast: 1, 3, 5 or 9 times a power of two."""
     return min(factor << max(0, math.ceil(math.log2(n / factor))) for factor in (1, 3, 5, 9))
