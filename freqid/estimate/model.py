@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from freqid.capture.clock_map import ClockMap
+from freqid.derived import derived_quantities
 from freqid.quantity import Caveat, Quantity
 from freqid.second_order import PARAMETER_ORDER, SecondOrder, parameter_units
 
@@ -23,8 +24,7 @@ __all__ = ["Adequacy", "IdentifiedModel"]
 class Adequacy:
     """Lack-of-fit test of the model against the measured variances.
 
-    `statistic` is chi-square distributed with `degrees_of_freedom` where the model is true; `adequate` at the 5 % level... of
-    `p_value`. `better_structure` names a structure that does better, if one was found.
+    `statistic` is chi-square distributed with `degrees_of_freedom` where the model is true. `better_structure` names a structure that does better, if one was found.
     """
 
     statistic: float
@@ -50,15 +50,28 @@ class IdentifiedModel:
     clock: ClockMap
     explained: float
     caveats: tuple[Caveat, ...] = ()
+    undetermined: tuple[str, ...] = ()
     runs: tuple[str, ...] = ()
     settings: dict[str, Any] = field(default_factory=dict)
 
     @property
-    def parameters(self) -> dict[str, Quantity]:
-        """The four parameters as quantities."""
+    def parameters(self) -> dict[str, Quantity | None]:
+        """The four parameters as quantities; None where undetermined."""
         units = parameter_units(self.angle_unit)
         deviations = np.sqrt(np.diag(self.covariance))
         return {
-            name: Quantity.normal(value, units[name], float(u), self.degrees_of_freedom)
+            name: None
+            if name in self.undetermined
+            else Quantity.normal(value, units[name], float(u), self.degrees_of_freedom)
             for name, value, u in zip(PARAMETER_ORDER, self.model.vector, deviations, strict=True)
         }
+
+    @property
+    def derived(self) -> dict[str, Quantity | None]:
+        """Step and resonance quantities that the model implies; times count from the onset of the response."""
+        return derived_quantities(
+            self.model.vector,
+            self.covariance,
+            angle_unit=self.angle_unit,
+            degrees_of_freedom=self.degrees_of_freedom,
+        )

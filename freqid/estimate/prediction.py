@@ -68,7 +68,10 @@ class Prediction:
 
 def free_parameters(record: Record) -> tuple[int, ...]:
     """Numbers of the parameters that this record leaves open."""
-    return (0, 1, 2, 3) + (() if record.common_clock else (4,)) + (5,) + ((6, 7) if record.free_start else ())
+    delay = (3,) if record.held_delay is None else ()
+    ratio = () if record.common_clock else (4,)
+    start = (6, 7) if record.free_start else ()
+    return (0, 1, 2, *delay, *ratio, 5, *start)
 
 
 def angle_only(record: Record, p: MotionParameters) -> Floats:
@@ -87,7 +90,8 @@ def predict(record: Record, p: MotionParameters) -> Prediction:
         high = _motion(record, replace(p, model=replace(m, **{name: value * (1 + STEP)})))[0]
         low = _motion(record, replace(p, model=replace(m, **{name: value * (1 - STEP)})))[0]
         columns.append((high - low) / (2 * STEP * value))
-    columns.append(-m.gain * rate)
+    if 3 in free:
+        columns.append(-m.gain * rate)
     if 4 in free:
         columns.append(m.gain * rate * record.stamp)
     columns.append(np.ones_like(angle))

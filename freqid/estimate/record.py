@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 
 from freqid.capture.simulated_rig import STAMP_TO_EXPOSURE_END
 from freqid.errors import EstimationError
+from freqid.estimate.frame_grid import FrameGrid
 from freqid.held_response import Drive
 from freqid.quantity import Caveat
 from freqid.records import InputStream, Periodicity, Run
@@ -30,7 +31,8 @@ class Record:
     """Drive, exposure-end stamps (N,) s and angles (N,) of the readable frames.
 
     `free_start` is true where the rig may have been moving when the record began; then the estimators
-    add its free decay. `frame_interval` is the median spacing of the stamps in s.
+    add its free decay. `held_delay` is set where the delay is not to be
+    fitted. `frame_interval` is the spacing the sensor meant to keep, s.
     """
 
     drive: Drive
@@ -41,6 +43,7 @@ class Record:
     frame_interval: float
     common_clock: bool
     free_start: bool
+    held_delay: float | None
     periodicity: Periodicity | None
     caveats: tuple[Caveat, ...]
 
@@ -74,7 +77,8 @@ class Record:
             angle=angle,
             angle_unit=a.angle_unit,
             exposure=a.exposure,
-            frame_interval=float(np.median(np.diff(stamp))),
+            frame_interval=FrameGrid.from_stamps(stamp).interval,
+            held_delay=None,
             common_clock=run.common_clock,
             free_start=not run.input.commanded,
             periodicity=run.input.periodicity,
@@ -105,6 +109,10 @@ def _drive(source: InputStream) -> tuple[Drive, list[Caveat]]:
             )
         )
         return Drive.from_samples(voltage, start=float(time[0]), interval=fine, smooth=smooth), caveats
+    if smooth and source.periodicity is not None and abs(time[-1] + interval - source.periodicity.stop) < 0.1 * interval:
+        # the last interval of a whole number of periods leads back to where the first period began
+        wrapped = round((source.periodicity.start - time[0]) / interval)
+        voltage, order = np.append(voltage, voltage[wrapped]), np.arange(len(time) + 1)
     if smooth:
         factor = 8 if len(voltage) < 20_000 else (4 if len(voltage) < 500_000 else 1)
         if factor > 1:

@@ -1,0 +1,89 @@
+"""What came out of holding two tests against each other? One row a quantity, the joint test, the verdict.
+
+Source: design of the verdict in DEVELOPERS.md; En: ISO/IEC 17043:2010, B.3.1.3.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any, Literal
+
+from freqid.quantity import Caveat, Quantity
+
+__all__ = ["Cause", "ComparedRow", "CrossCheck", "JointTest", "NextTest", "RowVerdict", "Verdict"]
+
+Verdict = Literal["agree", "disagree", "unresolved"]
+RowVerdict = Literal["agree", "disagree", "unresolved", "not judged"]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class ComparedRow:
+    """One quantity by both tests. `tolerance` is absolute, in the unit of the quantity; None where none was set (then not judged).
+
+    `difference` is frequency test minus step test; `en` its En number; `reason` says why a row is not judged.
+    """
+
+    quantity: str
+    frequency_test: Quantity | None
+    step_test: Quantity | None
+    difference: Quantity | None
+    en: float | None
+    tolerance: float | None
+    verdict: RowVerdict
+    reason: str = ""
+
+    def as_json(self) -> dict[str, Any]:
+        """One entry of "compared" in results/crosscheck.json."""
+
+        def plain(q: Quantity | None) -> dict[str, Any] | None:
+            return None if q is None else q.as_json()
+
+        return {
+            "quantity": self.quantity,
+            "frequency_test": plain(self.frequency_test),
+            "step_test": plain(self.step_test),
+            "difference": plain(self.difference),
+            "en": self.en,
+            "tolerance": self.tolerance,
+            "verdict": self.verdict,
+            "reason": self.reason,
+        }
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class JointTest:
+    """All judged quantities at once: chi-square of the difference vector with the joint covariances."""
+
+    statistic: float
+    degrees_of_freedom: int
+    p_value: float
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Cause:
+    """A possible cause of a disagreement: a stable code, strength 0 to 1, and the evidence in one sentence."""
+
+    cause: str
+    strength: float
+    evidence: str
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class NextTest:
+    """What to run next: a command to copy, and what it will settle."""
+
+    command: str
+    reason: str
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class CrossCheck:
+    """The verdict with everything it rests on. `sentence` is the reason in one sentence."""
+
+    verdict: Verdict
+    sentence: str
+    compared: tuple[ComparedRow, ...]
+    joint: JointTest | None
+    causes: tuple[Cause, ...] = ()
+    next_test: NextTest | None = None
+    caveats: tuple[Caveat, ...] = ()

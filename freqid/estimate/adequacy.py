@@ -1,0 +1,50 @@
+"""Does a second-order model describe the record within its noise? A lack-of-fit test.
+
+    statistic = min over d of  sum 2 |G_measured - G_model - S d|^2 / variance,     S the model's sensitivity
+
+is chi-square with 2 F - 4 degrees of freedom where the model is true (F complex points, four parameters). As the variances are
+themselves estimates, its mean square is referred to Fisher's F with the degrees of freedom of the noise.
+Source: N. Draper & H. Smith, *Applied Regression Analysis*, 3rd ed. 1998, ch. 2; Pintelon & Schoukens 2012, ch. 11.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from freqid.estimate.frequency_response import FrequencyResponse
+from freqid.estimate.model import Adequacy
+from freqid.second_order import SecondOrder
+
+__all__ = ["lack_of_fit", "whitened_misfit"]
+
+Floats = NDArray[np.float64]
+
+
+def whitened_misfit(measured: FrequencyResponse, model: SecondOrder) -> NDArray[np.complex128]:
+    """Measured minus model in units of standard uncertainty of real and imaginary part, complex (F,)."""
+    return (measured.response - model.response(measured.frequency)) / np.sqrt(measured.variance / 2)
+
+
+def lack_of_fit(
+    measured: FrequencyResponse, model: SecondOrder, *, noise_freedom: float, use: NDArray[np.bool_] | None = None
+) -> Adequacy:
+    """Test `model` against the independent points `use` (F,) of `measured`.
+
+    `noise_freedom` is the total number of real degrees of freedom behind the variances.
+    """
+    from scipy.stats import f as fisher
+
+    use = np.ones(len(measured.frequency), dtype=bool) if use is None else use
+    misfit = whitened_misfit(measured, model)[use]
+    weight = 1 / np.sqrt(measured.variance[use] / 2)
+    slope = model.sensitivity(measured.frequency[use]) * weight[:, None] * np.maximum(np.abs(model.vector), 1e-9)
+    design = np.concatenate([slope.real, slope.imag])
+    target = np.concatenate([misfit.real, misfit.imag])
+    rest = target - design @ np.linalg.lstsq(design, target, rcond=None)[0]
+    degrees = len(target) - 4
+    if degrees < 1:
+        return Adequacy(statistic=float("nan"), degrees_of_freedom=degrees, p_value=float("nan"))
+    statistic = float(rest @ rest)
+    p_value = float(fisher.sf(statistic / degrees, degrees, max(noise_freedom, 1.0)))
+    return Adequacy(statistic=statistic, degrees_of_freedom=degrees, p_value=p_value)

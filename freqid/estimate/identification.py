@@ -1,0 +1,271 @@
+"""From one run to frequency response, clock map and model: the whole estimate, in order.
+
+1. The record as it is (`record`), a start without the user's help (`starting_values`), the whole-record fit (`record_fit`).
+2. The noise, measured between the harmonics where the excitation is periodic (`noise_spectrum`).
+3. The four parameters with their joint covariance (`weighted_fit`).
+4. The frequency response around that fit: least squares at the lines, or the local polynomial method.
+5. The model held against that response (`adequacy`); what is doubtful becomes a caveat.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from typing import Literal
+
+import numpy as np
+from numpy.typing import NDArray
+
+from freqid.capture.clock_map import ClockMap
+from freqid.errors import EstimationError
+from freqid.estimate.adequacy import lack_of_fit
+from freqid.estimate.frame_grid import FrameGrid
+from freqid.estimate.frequency_response import FrequencyResponse
+from freqid.estimate.local_polynomial import local_polynomial_response
+from freqid.estimate.model import Adequacy, IdentifiedModel
+from freqid.estimate.periodic import periodic_response, steady_noise
+from freqid.estimate.prediction import MotionParameters
+from freqid.estimate.record import Record
+from freqid.estimate.record_fit import RecordFit, fit_record, refine
+from freqid.estimate.weighted_fit import WeightedFit, covariance_of, fit_weighted
+from freqid.quantity import Caveat, Quantity
+from freqid.records import Run
+
+__all__ = ["Identification", "Method", "Motion", "clock_caveats", "clock_map", "estimate_motion", "identify", "parameter_covariance"]
+
+Floats = NDArray[np.float64]
+Method = Literal["auto", "periodic", "local-polynomial"]
+
+POORLY_EXPLAINED = 0.5
+RIDGE = 0.5  # relative uncertainty of the natural frequency beyond which it is not determined
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Identification:
+    """What one run tells: response, model (with the clock map), and the residual (N,) at `time` (N,) on the input's clock."""
+
+    response: FrequencyResponse
+    model: IdentifiedModel
+    time: Floats
+    residual: Floats
+    angle: Floats
+
+
+def identify(run: Run, *, method: Method = "auto") -> Identification:
+    """Estimate response and model from a run.
+
+    `method` "auto" takes "periodic" where the excitation is known to repeat, else "local-polynomial".
+    Raises EstimationError where the record does not determine the answer.
+    """
+    record = Record.from_run(run)
+    if method == "periodic" and record.periodicity is None:
+        raise EstimationError(f"{run.name}: the excitation is not known to be periodic: use --method local-polynomial")
+    if method == "local-polynomial":
+        record = replace(record, periodicity=None)
+    motion = estimate_motion(record)
+    record, weighted = motion.record, motion.weighted
+    response, adequacy = _response(record, weighted.fit)
+    covariance = parameter_covariance(weighted)
+    caveats = [*record.caveats, *motion.caveats, *response.caveats, *_sign_caveats(record, weighted.fit)]
+    if np.isfinite(adequacy.p_value) and not adequacy.adequate:
+        if response.method == "periodic":
+            covariance = covariance * max(1.0, adequacy.statistic / adequacy.degrees_of_freedom)
+        caveats.append(_inadequate(adequacy))
+    if weighted.fit.explained < POORLY_EXPLAINED:
+        caveats.append(
+            Caveat(
+                "poorly_explained",
+                f"The model explains only {100 * weighted.fit.explained:.0f} % of the angle's variance: "
+                "check that input and angle belong together.",
+            )
+        )
+    model = IdentifiedModel(
+        model=weighted.fit.parameters.model,
+        covariance=covariance,
+        degrees_of_freedom=weighted.degrees_of_freedom,
+        angle_unit=record.angle_unit,
+        adequacy=adequacy,
+        clock=clock_map(record, run, weighted),
+        explained=weighted.fit.explained,
+        caveats=(*caveats, *clock_caveats(record)),
+        undetermined=motion.undetermined,
+        runs=(run.name,),
+        settings={"method": response.method, "free_start": record.free_start, "hold": run.input.hold},
+    )
+    p = weighted.fit.parameters
+    return Identification(
+        response=response,
+        model=model,
+        time=p.clock_ratio * record.stamp - (0.0 if record.common_clock else p.model.delay),
+        residual=weighted.fit.residual,
+        angle=record.angle,
+    )
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Motion:
+    """Steps 1 to 3: the record as fitted, the fit with its covariance, and what had to be held."""
+
+    record: Record
+    weighted: WeightedFit
+    caveats: tuple[Caveat, ...]
+
+    @property
+    def undetermined(self) -> tuple[str, ...]:
+        """Parameters that the record does not determine."""
+        return () if self.record.held_delay is None else ("delay",)
+
+
+def estimate_motion(record: Record) -> Motion:
+    """Fit the motion with the covariance of its free parameters.
+
+    On a common clock the delay is held at zero where the best one would be negative, or where a fast pole and the
+    delay cannot be told apart; a caveat says so.
+    """
+    fit = fit_record(record)
+    weighted = _with_covariance(record, fit)
+    reason = _why_hold(record, weighted)
+    if reason is None:
+        return Motion(record=record, weighted=weighted, caveats=())
+    held = replace(record, held_delay=0.0)
+    start = replace(fit.parameters, model=replace(fit.parameters.model, delay=0.0))
+    starts = [trial for trial in (refine(held, start), refine(held, _sluggish(start))) if trial is not None]
+    if not starts:
+        return Motion(record=record, weighted=weighted, caveats=())
+    best = min(starts, key=lambda trial: trial.sum_of_squares)
+    return Motion(record=held, weighted=_with_covariance(held, best), caveats=(Caveat("delay_held_at_zero", reason),))
+
+
+def _with_covariance(record: Record, fit: RecordFit) -> WeightedFit:
+    noise = steady_noise(record, fit)
+    return covariance_of(record, fit) if noise is None else fit_weighted(record, fit, noise)
+
+
+def _why_hold(record: Record, weighted: WeightedFit) -> str | None:
+    model = weighted.fit.parameters.model
+    if not record.common_clock:
+        return None
+    if model.delay < -max(record.frame_interval, record.drive.interval):
+        return (
+            f"The best fit would put the angle {-model.delay:.3g} s before the voltage, which cannot be: the delay was held "
+            "at 0 (noise, drift or further dynamics take its place)."
+        )
+    relative = np.sqrt(np.diag(parameter_covariance(weighted)))[1] / model.natural_frequency
+    if model.damping_ratio > 1 and relative > RIDGE:
+        return (
+            "The fast pole and a delay look alike in this record: the delay was held at 0, so that the fast pole carries "
+            "the whole lag."
+        )
+    return None
+
+
+def _sluggish(start: MotionParameters) -> MotionParameters:
+    """The same slowest pole with a second one ten times faster: a start on the ridge of overdamped rigs."""
+    slow = 1 / start.model.slowest_decay
+    fast = 10 * slow
+    wn = np.sqrt(slow * fast)
+    model = replace(
+        start.model, natural_frequency=float(wn / (2 * np.pi)), damping_ratio=float((slow + fast) / (2 * wn))
+    )
+    return replace(start, model=model)
+
+
+def parameter_covariance(weighted: WeightedFit) -> Floats:
+    """Covariance (4, 4) of the model's parameters; a held delay has no variance of its own."""
+    free = weighted.fit.prediction.free
+    covariance = np.zeros((4, 4))
+    rows = [free.index(i) for i in range(4) if i in free]
+    kept = [i for i in range(4) if i in free]
+    covariance[np.ix_(kept, kept)] = weighted.covariance[np.ix_(rows, rows)]
+    return covariance
+
+
+def _response(record: Record, fit: RecordFit) -> tuple[FrequencyResponse, Adequacy]:
+    model = fit.parameters.model
+    if record.periodicity is not None:
+        measured = periodic_response(record, fit)
+        return measured, lack_of_fit(measured, model, noise_freedom=float(np.sum(measured.degrees_of_freedom)) / 4)
+    measured, independent = local_polynomial_response(record, fit)
+    pooled = _pool_noise(measured, independent)
+    freedom = float(np.sum(measured.degrees_of_freedom[independent]))
+    return measured, lack_of_fit(pooled, model, noise_freedom=freedom, use=independent)
+
+
+def _pool_noise(measured: FrequencyResponse, independent: NDArray[np.bool_]) -> FrequencyResponse:
+    """Noise of each point averaged with two independent neighbours on either side: nine degrees of freedom are few."""
+    power = measured.noise[independent] ** 2
+    padded = np.pad(power, 2, mode="reflect") if len(power) > 2 else np.pad(power, 2, mode="edge")
+    smooth = np.convolve(padded, np.full(5, 0.2), mode="valid")
+    variance = measured.variance.copy()
+    variance[independent] *= smooth / power
+    return replace(measured, variance=variance)
+
+
+def _inadequate(adequacy: Adequacy) -> Caveat:
+    excess = np.sqrt(adequacy.statistic / adequacy.degrees_of_freedom)
+    chance = f"= {adequacy.p_value:.2g}" if adequacy.p_value > 1e-6 else "< 1e-6"
+    return Caveat(
+        "model_inadequate",
+        f"A second-order model does not describe the response within its noise: the misfit is {excess:.3g} times what noise "
+        f"alone would give (p {chance}). The intervals contain the misfit; look at the residuals for nonlinearity or "
+        "further dynamics.",
+    )
+
+
+def _sign_caveats(record: Record, fit: RecordFit) -> list[Caveat]:
+    """With odd lines only and an unknown offset, a reversed sensor looks like a shift of half a period."""
+    m, periodicity = fit.parameters.model, record.periodicity
+    if record.common_clock or periodicity is None:
+        return []
+    odd = np.all(np.round(periodicity.lines * periodicity.period) % 2 == 1)
+    if odd:
+        for shift in (-0.5, 0.5):
+            other = replace(m, gain=-m.gain, delay=m.delay + shift * periodicity.period)
+            trial = refine(record, replace(fit.parameters, model=other), evaluations=8)
+            if trial is not None and trial.sum_of_squares < fit.sum_of_squares * (1 + 10 / fit.degrees_of_freedom):
+                return [
+                    Caveat(
+                        "sign_undetermined",
+                        "The record does not show the onset of the excitation: a reversed sensor and a shift of half a "
+                        "period look alike, so the sign of the gain and the delay are undetermined.",
+                    )
+                ]
+    if m.gain < 0:
+        return [Caveat("sensor_reversed", "The gain is negative: the angle moves against the voltage (sensor reversed?).")]
+    return []
+
+
+def clock_map(record: Record, run: Run, weighted: WeightedFit) -> ClockMap:
+    """What the fit and the stamps say about the two clocks."""
+    grid = FrameGrid.from_stamps(run.angle.time[np.isfinite(run.angle.time)])
+    free = weighted.fit.prediction.free
+    p = weighted.fit.parameters
+
+    def deviation(number: int) -> float:
+        return float(np.sqrt(weighted.covariance[free.index(number), free.index(number)])) if number in free else 0.0
+
+    stamps = run.angle.time[np.isfinite(run.angle.time)]
+    return ClockMap(
+        ratio_ppm=Quantity.normal(
+            (p.clock_ratio - 1) * 1e6, "ppm", deviation(4) * 1e6, weighted.degrees_of_freedom
+        ),
+        offset_known=record.common_clock,
+        lag=Quantity.normal(p.model.delay, "s", deviation(3), weighted.degrees_of_freedom),
+        lost_frames=grid.lost,
+        lost_at=stamps[grid.before_gaps],
+        frame_interval=grid.interval,
+        jitter=grid.jitter,
+        repeated_stamps=int(np.sum(np.diff(stamps) == 0)),
+        frames=len(stamps),
+    )
+
+
+def clock_caveats(record: Record) -> list[Caveat]:
+    if record.common_clock:
+        return []
+    return [
+        Caveat(
+            "delay_includes_clock_offset",
+            "The two logs share no clock: the delay contains the offset between them and is not the rig's own.",
+        )
+    ]
+

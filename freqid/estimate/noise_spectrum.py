@@ -1,0 +1,77 @@
+"""How loud is the noise, frequency by frequency? A smoothed periodogram of the residual on the frame grid.
+
+Frames keep their slot number; lost ones are empty. `level` is the noise variance that white noise of the same loudness would
+have, so white noise of variance s^2 has the level s^2 everywhere. Bins at the harmonics of a periodic excitation are left
+out: they hold the signal's own misfit. Between whole periods the remaining bins carry the same information
+as the scatter from period to period (Parseval).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from freqid.estimate.frame_grid import FrameGrid
+
+__all__ = ["NoiseSpectrum", "noise_spectrum"]
+
+Floats = NDArray[np.float64]
+
+FEWEST_BINS = 20
+LARGEST_SHARE = 8  # a smoothing window holds at most an eighth of the bins
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class NoiseSpectrum:
+    """Noise level (B,) in angle unit squared at `frequency` (B,) Hz, and the degrees of freedom of each level."""
+
+    frequency: Floats
+    level: Floats
+    degrees_of_freedom: Floats
+
+    def at(self, frequency: Floats) -> tuple[Floats, Floats]:
+        """Level and degrees of freedom at other frequencies; those above half the frame rate fold back."""
+        top = self.frequency[-1]
+        folded = np.abs((np.asarray(frequency) + top) % (2 * top) - top)
+        return (
+            np.interp(folded, self.frequency, self.level),
+            np.interp(folded, self.frequency, self.degrees_of_freedom),
+        )
+
+
+def noise_spectrum(
+    residual: Floats, grid: FrameGrid, *, parameters: int, harmonic: tuple[float, Floats] | None = None
+) -> NoiseSpectrum:
+    """Smoothed noise level of `residual` (N,) on `grid`.
+
+    `parameters` is how many were fitted. `harmonic` is (resolution in Hz, frequencies (H,) Hz to leave out): bins closer than half
+    the resolution to one of them are not used. Raises ValueError where fewer than `FEWEST_BINS` bins are left.
+    """
+    power = np.abs(grid.spectrum(residual)) ** 2 * grid.size / len(residual)
+    frequency = grid.frequency
+    usable = np.ones(len(frequency), dtype=bool)
+    usable[0] = False
+    scale = 1.0
+    if harmonic is None:
+        scale = len(residual) / max(len(residual) - parameters, 1)
+    else:
+        resolution, lines = harmonic
+        order = np.sort(lines)
+        above = np.clip(np.searchsorted(order, frequency), 0, len(order) - 1)
+        below = np.clip(above - 1, 0, len(order) - 1)
+        distance = np.minimum(np.abs(order[above] - frequency), np.abs(order[below] - frequency))
+        usable &= distance > 0.55 * resolution
+    index = np.flatnonzero(usable)
+    if len(index) < FEWEST_BINS:
+        raise ValueError(f"only {len(index)} bins free of the excitation; {FEWEST_BINS} are needed")
+    half = int(np.clip(len(index) // LARGEST_SHARE, FEWEST_BINS, 200)) // 2
+    total = np.concatenate([[0.0], np.cumsum(power[index])])
+    centre = np.searchsorted(index, np.arange(len(frequency)))
+    low = np.clip(centre - half, 0, max(len(index) - 2 * half, 0))
+    high = np.minimum(low + 2 * half, len(index))
+    level = scale * (total[high] - total[low]) / (high - low)
+    return NoiseSpectrum(
+        frequency=frequency, level=np.maximum(level, 1e-300), degrees_of_freedom=2.0 * (high - low)
+    )

@@ -1,0 +1,175 @@
+"""What is the response at the lines of a periodic voltage? Least squares at the true instants of the frames.
+
+Nothing is interpolated: over the steady part, what the whole-record fit left over is regressed on a cosine and a sine at every
+excited line, together with rest angle, drift, what is left of the start-up transient (free decay of the fitted poles)
+and a small change of the clock ratio. The start-up transient itself is in the whole-record fit. The uncertainty comes from
+the noise between the harmonics, which is the scatter from period to period; with a single period, from unexcited harmonics.
+
+Source: Pintelon & Schoukens, *System Identification*, 2nd ed. 2012, ch. 2 and 4; sine fitting with known frequency: IEEE Std 1241.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from freqid.errors import EstimationError
+from freqid.estimate.frame_grid import FrameGrid
+from freqid.estimate.frequency_response import FrequencyResponse
+from freqid.estimate.noise_spectrum import NoiseSpectrum, noise_spectrum
+from freqid.estimate.record import Record
+from freqid.estimate.record_fit import RecordFit
+from freqid.held_response import Drive, free_decay
+from freqid.quantity import Caveat
+from freqid.records import Periodicity
+
+__all__ = ["line_amplitudes", "periodic_response", "steady_noise"]
+
+Floats = NDArray[np.float64]
+Complexes = NDArray[np.complex128]
+
+
+def line_amplitudes(drive: Drive, periodicity: Periodicity) -> Complexes:
+    """Complex amplitude (F,) of the continuous voltage at each line: u(t) = Re sum U exp(j 2 pi f t).
+
+    Exact for the held staircase and for straight lines, by folding the steady part to one period.
+    """
+    per_period = periodicity.period / drive.interval
+    n = round(per_period)
+    first = round((periodicity.start - drive.start) / drive.interval)
+    whole = max(int((len(drive.value) - first) // n), 0)
+    periods = min(periodicity.n_periods, whole)
+    f = periodicity.lines
+    smooth = bool(np.any(drive.slope))
+    hold = np.sinc(f * drive.interval) * np.exp(-1j * np.pi * f * drive.interval)
+    if smooth:
+        hold = np.sinc(f * drive.interval) ** 2 + 0j
+    if periods >= 1 and abs(per_period - n) < 1e-6 * n:
+        folded = drive.value[first : first + periods * n].reshape(periods, n).mean(axis=0)
+        harmonic = np.round(f * periodicity.period).astype(int)
+        amplitude = 2 / n * np.fft.fft(folded)[harmonic % n]
+        shift = np.exp(-2j * np.pi * f * (drive.start + first * drive.interval))
+        return np.asarray(amplitude * shift * hold)
+    raise EstimationError(
+        f"the period ({periodicity.period:g} s) is not a whole number of input samples ({per_period:.3f}): "
+        "use --method local-polynomial"
+    )
+
+
+def _steady(record: Record, fit: RecordFit, periodicity: Periodicity) -> tuple[NDArray[np.bool_], Floats, int]:
+    """Frames of the steady part, their time on the input's clock, and the number of whole periods they cover."""
+    p = fit.parameters
+    time = p.clock_ratio * record.stamp - p.model.delay
+    first = max(periodicity.start, float(time[0]) - record.frame_interval)
+    last = min(periodicity.stop, float(time[-1]) + record.frame_interval)
+    periods = int((last - first) / periodicity.period + 0.02)
+    if periods < 1:
+        raise EstimationError(
+            f"the angle log covers {max(last - first, 0):.3g} s of the steady excitation, less than one period "
+            f"({periodicity.period:.3g} s): record longer"
+        )
+    inside = (time >= first) & (time < first + periods * periodicity.period)
+    return inside, time, periods
+
+
+def steady_noise(record: Record, fit: RecordFit) -> NoiseSpectrum | None:
+    """Noise level between the harmonics of a periodic excitation, independent of any model; None if there is none."""
+    periodicity = record.periodicity
+    if periodicity is None:
+        return None
+    inside, time, periods = _steady(record, fit, periodicity)
+    basis, _ = _basis(record, fit, periodicity, inside, time)
+    if basis.shape[1] > 0.8 * inside.sum():
+        return None
+    residual = fit.residual[inside]
+    rest = residual - basis @ np.linalg.lstsq(basis, residual, rcond=None)[0]
+    grid = FrameGrid.from_stamps(record.stamp[inside])
+    top = 0.5 / record.frame_interval
+    if periods >= 2:
+        # every harmonic of the period is left out, excited or not: distortion sits there
+        known = np.arange(1, int(top * periodicity.period) + 2) / periodicity.period
+    else:
+        known = periodicity.lines
+    folded = np.abs((known + top) % (2 * top) - top)
+    try:
+        return noise_spectrum(
+            rest,
+            grid,
+            parameters=basis.shape[1],
+            harmonic=(fit.parameters.clock_ratio / (periods * periodicity.period), folded),
+        )
+    except ValueError:
+        return None
+
+
+def periodic_response(record: Record, fit: RecordFit) -> FrequencyResponse:
+    """Response at the excited lines with its variance.
+
+    Raises EstimationError where the frames are too few for the lines or cover less than one period.
+    """
+    periodicity = record.periodicity
+    if periodicity is None:
+        raise EstimationError("the excitation is not known to be periodic: use --method local-polynomial")
+    inside, time, periods = _steady(record, fit, periodicity)
+    basis, n_lines = _basis(record, fit, periodicity, inside, time)
+    count = int(inside.sum())
+    if basis.shape[1] > 0.8 * count:
+        raise EstimationError(
+            f"{count} frames cannot carry {n_lines} lines: fewer lines (narrower band, odd grid) or a longer record"
+        )
+    scale = np.sqrt(np.sum(basis**2, axis=0))
+    coefficient, *_ = np.linalg.lstsq(basis / scale, fit.residual[inside], rcond=None)
+    coefficient = coefficient / scale
+    inverse = np.diag(np.linalg.pinv((basis / scale).T @ (basis / scale))) / scale**2
+    amplitude = coefficient[:n_lines] + 1j * coefficient[n_lines : 2 * n_lines]
+    spread = inverse[:n_lines] + inverse[n_lines : 2 * n_lines]
+    f = periodicity.lines
+    noise = steady_noise(record, fit)
+    caveats: tuple[Caveat, ...] = ()
+    if noise is None:
+        rest = fit.residual[inside] - basis @ coefficient
+        degrees = count - basis.shape[1]
+        level, freedom = np.full(n_lines, rest @ rest / degrees), np.full(n_lines, float(degrees))
+        caveats = (
+            Caveat(
+                "noise_assumed_white",
+                "One period with every harmonic excited shows no noise of its own; it was taken as white from the residual.",
+            ),
+        )
+    else:
+        level, freedom = noise.at(f)
+    p = fit.parameters
+    exposure = np.sinc(f * record.exposure) * np.exp(-1j * np.pi * f * record.exposure)
+    drive = line_amplitudes(record.drive, periodicity)
+    transfer = drive * exposure
+    variance_of_line = level * spread
+    response = p.model.response(f) + amplitude / transfer * np.exp(-2j * np.pi * f * p.model.delay)
+    signal = np.abs(response * transfer)
+    return FrequencyResponse(
+        frequency=f,
+        response=response,
+        variance=variance_of_line / np.abs(transfer) ** 2,
+        coherence=signal**2 / (signal**2 + periods * variance_of_line),
+        noise=np.sqrt(variance_of_line),
+        input_amplitude=np.abs(drive),
+        degrees_of_freedom=freedom,
+        angle_unit=record.angle_unit,
+        method="periodic",
+        caveats=caveats,
+    )
+
+
+def _basis(
+    record: Record, fit: RecordFit, periodicity: Periodicity, inside: NDArray[np.bool_], time: Floats
+) -> tuple[Floats, int]:
+    """Columns: cosine and minus sine of every line, rest, drift, two free decays, clock ratio."""
+    t = time[inside]
+    m = fit.parameters.model
+    argument = 2 * np.pi * np.outer(t, periodicity.lines)
+    span = t[-1] - t[0]
+    decay = free_decay(2 * np.pi * m.natural_frequency, m.damping_ratio, t - t[0])
+    columns = [np.cos(argument), -np.sin(argument), np.ones((len(t), 1)), ((t - t.mean()) / span)[:, None], decay]
+    if 4 in fit.prediction.free:
+        ratio = fit.prediction.jacobian[inside][:, fit.prediction.free.index(4)]
+        columns.append(ratio[:, None])
+    return np.concatenate(columns, axis=1), len(periodicity.lines)

@@ -1,0 +1,103 @@
+"""What are the four parameters, and how sure are they jointly? Maximum likelihood with the measured noise.
+
+The whole record is weighted, frequency by frequency, with the noise spectrum measured between the harmonics (Gauss-Newton from
+the unweighted fit). With weights W and noise covariance V the covariance is the sandwich
+
+    (J' W J)^-1 (J' W V W J) (J' W J)^-1
+
+which is the Cramer-Rao bound where W = V^-1 and stays honest where it is not. Clock ratio, rest angle and start are
+estimated along and so are in the covariance: delay and clock ratio are correlated, and leaving that out spoils the interval of the delay.
+
+Source: Pintelon & Schoukens 2012, ch. 9 (sample maximum likelihood); L. Ljung 1999, ch. 9.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from freqid.estimate.frame_grid import FrameGrid
+from freqid.estimate.noise_spectrum import NoiseSpectrum, noise_spectrum
+from freqid.estimate.prediction import MotionParameters, predict
+from freqid.estimate.record import Record
+from freqid.estimate.record_fit import RecordFit
+
+__all__ = ["WeightedFit", "covariance_of", "fit_weighted"]
+
+Floats = NDArray[np.float64]
+ITERATIONS = 4
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class WeightedFit:
+    """The fit and the covariance (P, P) of its free parameters, numbered as in `fit.prediction.free`."""
+
+    fit: RecordFit
+    covariance: Floats
+    degrees_of_freedom: float
+
+
+def fit_weighted(record: Record, fit: RecordFit, noise: NoiseSpectrum) -> WeightedFit:
+    """Refine `fit` with weights from `noise`, a spectrum measured independently of the model."""
+    grid = FrameGrid.from_stamps(record.stamp)
+    level, freedom = noise.at(grid.frequency)
+    free = list(fit.prediction.free)
+    current = fit
+    for _ in range(ITERATIONS):
+        weighted = _weigh(grid, current.prediction.jacobian, level)
+        normal = current.prediction.jacobian.T @ weighted
+        step = _solve(normal, weighted.T @ current.residual)
+        vector = current.parameters.vector
+        vector[free] += step
+        if not (vector[1] > 0 and vector[2] > 0):
+            break
+        parameters = MotionParameters.from_vector(vector)
+        prediction = predict(record, parameters)
+        current = RecordFit(parameters=parameters, prediction=prediction, residual=record.angle - prediction.angle)
+        if np.all(np.abs(step) <= 1e-4 * np.sqrt(np.diag(_inverse(normal)))):
+            break
+    weighted = _weigh(grid, current.prediction.jacobian, level)
+    return WeightedFit(
+        fit=current,
+        covariance=_sandwich(grid, current.prediction.jacobian, weighted, level),
+        degrees_of_freedom=float(min(freedom.sum() / 8, current.degrees_of_freedom)),
+    )
+
+
+def covariance_of(record: Record, fit: RecordFit) -> WeightedFit:
+    """Covariance of the unweighted fit with the spectrum of its own residual, misfit of the model included."""
+    grid = FrameGrid.from_stamps(record.stamp)
+    noise = noise_spectrum(fit.residual, grid, parameters=fit.prediction.jacobian.shape[1])
+    level, freedom = noise.at(grid.frequency)
+    return WeightedFit(
+        fit=fit,
+        covariance=_sandwich(grid, fit.prediction.jacobian, fit.prediction.jacobian, level),
+        degrees_of_freedom=float(min(np.median(freedom), fit.degrees_of_freedom)),
+    )
+
+
+def _weigh(grid: FrameGrid, jacobian: Floats, level: Floats) -> Floats:
+    return grid.back(grid.spectrum(jacobian) / level[:, None])
+
+
+def _sandwich(grid: FrameGrid, jacobian: Floats, weighted: Floats, level: Floats) -> Floats:
+    outer = _inverse(jacobian.T @ weighted)
+    spectrum = grid.spectrum(weighted)
+    power = (level * grid.multiplicity)[:, None]
+    inner = np.real(np.conj(spectrum).T @ (power * spectrum))
+    return np.asarray(outer @ inner @ outer)
+
+
+def _solve(normal: Floats, right: Floats) -> Floats:
+    scale = 1 / np.sqrt(np.diag(normal))
+    return np.asarray(scale * np.linalg.solve(normal * np.outer(scale, scale), scale * right))
+
+
+def _inverse(normal: Floats) -> Floats:
+    """Inverse of a badly scaled normal matrix; directions without information get a huge variance, not an error."""
+    scale = 1 / np.sqrt(np.diag(normal))
+    value, vector = np.linalg.eigh(normal * np.outer(scale, scale))
+    value = np.maximum(value, 1e-14 * value.max())
+    return np.asarray((vector / value) @ vector.T * np.outer(scale, scale))

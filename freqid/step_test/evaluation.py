@@ -1,0 +1,176 @@
+"""From one run to the step-test values: every step read off, all pooled, and the model of the whole record.
+
+The model (least squares at the true instants, as for the frequency test) gives the parameters; the read-offs come from the
+record itself, the model lends them only the onset and the width of the smoothing window. Pooling weighs each step by
+its own uncertainty; the pooled uncertainty is the larger of what the weights say and what the scatter says.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from freqid.errors import StepTestError
+from freqid.estimate.identification import Motion, clock_caveats, clock_map, estimate_motion, parameter_covariance
+from freqid.estimate.record import Record
+from freqid.quantity import Caveat, Quantity, coverage_factor
+from freqid.records import Run
+from freqid.second_order import SecondOrder
+from freqid.step_test.reading import StepFrames, read_step
+from freqid.step_test.smooth_curve import HALF_WIDTH_IN_PERIODS
+from freqid.step_test.step_result import STEP_QUANTITIES, StepReading, StepResult
+from freqid.step_test.steps import VoltageStep, find_steps
+
+__all__ = ["evaluate_steps", "pool"]
+
+Floats = NDArray[np.float64]
+
+FEWEST_FRAMES_IN_A_HOLD = 12
+FRAMES_PER_PERIOD = 8
+SETTLED_SHARE = 0.3  # of a hold, at its end, that is averaged for the settled level
+SETTLED_TIME_CONSTANTS = 3.0  # a hold shorter than this many time constants is not settled
+
+
+def evaluate_steps(run: Run) -> StepResult:
+    """Evaluate every step of a run; raises StepTestError where there is none, EstimationError where nothing fits."""
+    record = Record.from_run(run)
+    steps = find_steps(record.drive)
+    motion = estimate_motion(record)
+    record, weighted = motion.record, motion.weighted
+    model = weighted.fit.parameters.model
+    noise = float(np.sqrt(weighted.fit.sum_of_squares / weighted.fit.degrees_of_freedom))
+    readings, caveats = [], [*record.caveats, *motion.caveats]
+    for step in steps:
+        frames = _frames(record, motion, step, steps, noise)
+        if frames is not None:
+            readings.append(_reading(frames, step, model, motion))
+    if not readings:
+        raise StepTestError(
+            f"{run.name}: {len(steps)} steps, but none is held for {FEWEST_FRAMES_IN_A_HOLD} frames and "
+            f"{SETTLED_TIME_CONSTANTS:g} time constants ({model.slowest_decay:.3g} s each): hold each level longer"
+        )
+    quantities, more = _pooled(readings, model, record)
+    return StepResult(
+        quantities=quantities,
+        steps=tuple(readings),
+        model=model,
+        covariance=parameter_covariance(weighted),
+        degrees_of_freedom=weighted.degrees_of_freedom,
+        angle_unit=record.angle_unit,
+        clock=clock_map(record, run, weighted),
+        explained=weighted.fit.explained,
+        undetermined=motion.undetermined,
+        caveats=(*caveats, *more, *clock_caveats(record)),
+        runs=(run.name,),
+    )
+
+
+def _frames(
+    record: Record, motion: Motion, step: VoltageStep, steps: list[VoltageStep], noise: float
+) -> StepFrames | None:
+    """Frames of the hold after `step`, or None where it is too short to be read."""
+    p = motion.weighted.fit.parameters
+    m = p.model
+    # the exposure mean belongs to the middle of the exposure
+    time = p.clock_ratio * record.stamp - m.delay - record.exposure / 2
+    onset = step.time
+    before = (time >= onset - SETTLED_SHARE * (onset - step.plateau_start)) & (time < onset - step.duration)
+    hold = (time >= onset) & (time < step.plateau_stop)
+    length = min(step.plateau_stop, float(time[-1])) - onset
+    settled = time >= onset + (1 - SETTLED_SHARE) * length
+    after = hold & settled
+    if hold.sum() < FEWEST_FRAMES_IN_A_HOLD or before.sum() < 3 or after.sum() < 3:
+        return None
+    if length < SETTLED_TIME_CONSTANTS * m.slowest_decay or onset - step.plateau_start < 2 * m.slowest_decay:
+        return None
+    return StepFrames(
+        time=time[hold] - onset,
+        angle=record.angle[hold],
+        before=_level(record.angle[before], noise),
+        after=_level(record.angle[after], noise),
+        voltage_change=step.change,
+        noise=noise,
+        period=_period(m),
+        angle_unit=record.angle_unit,
+    )
+
+
+def _level(angle: Floats, noise: float) -> tuple[float, float]:
+    return float(np.mean(angle)), noise / float(np.sqrt(len(angle)))
+
+
+def _period(m: SecondOrder) -> float:
+    """Period of the damped oscillation; for a sluggish rig that of its natural frequency."""
+    damped = np.sqrt(max(1 - m.damping_ratio**2, 0.25))
+    return float(1 / (m.natural_frequency * damped))
+
+
+def _reading(frames: StepFrames, step: VoltageStep, model: SecondOrder, motion: Motion) -> StepReading:
+    quantities = read_step(frames, half_width=HALF_WIDTH_IN_PERIODS * frames.period)
+    p = motion.weighted.fit.parameters
+    rest_voltage = motion.record.drive.rest
+    predicted = p.rest_angle + model.gain * (step.after - rest_voltage)
+    quantities["steady_state_error"] = Quantity.normal(frames.after[0] - predicted, frames.angle_unit, frames.after[1])
+    return StepReading(
+        time=step.time,
+        voltage_before=step.before,
+        voltage_after=step.after,
+        quantities={name: quantities.get(name) for name in STEP_QUANTITIES},
+    )
+
+
+def _pooled(
+    readings: list[StepReading], model: SecondOrder, record: Record
+) -> tuple[dict[str, Quantity | None], list[Caveat]]:
+    pooled: dict[str, Quantity | None] = {}
+    caveats: list[Caveat] = []
+    coarse = _period(model) / record.frame_interval < FRAMES_PER_PERIOD
+    timed = {"percent_overshoot", "peak_time", "delay_time_50", "rise_time_0_90", "rise_time_10_90", "log_decrement"}
+    for name in STEP_QUANTITIES:
+        values = [q for r in readings if (q := r.quantities[name]) is not None]
+        if coarse and name in timed:
+            pooled[name] = None
+            caveats.append(
+                Caveat(
+                    "too_few_frames",
+                    f"{name} was not read off: {_period(model) / record.frame_interval:.1f} frames per period, "
+                    f"{FRAMES_PER_PERIOD} are needed; take the value of the fitted model.",
+                )
+            )
+            continue
+        pooled[name] = pool(values)
+        if pooled[name] is None:
+            caveats.append(Caveat(f"no_{name}", _why_missing(name, model)))
+    return pooled, caveats
+
+
+def _why_missing(name: str, model: SecondOrder) -> str:
+    if name in ("peak_time", "log_decrement", "time_constant") and model.damping_ratio > 0.4:
+        return f"{name} was not read off: too few swings stand clear of the noise (damping ratio {model.damping_ratio:.2g})."
+    if name.startswith("settling"):
+        return f"{name} was not read off: the noise is as wide as the band, or the angle had not settled; see the fitted model."
+    return f"{name} was not read off: no step shows it clearly; see the fitted model."
+
+
+def pool(values: list[Quantity]) -> Quantity | None:
+    """Weighted mean of several readings of one quantity; None of none.
+
+    The standard uncertainty is the larger of the internal (weights) and the external one (scatter, JCGM 100 4.2.3).
+    """
+    if not values:
+        return None
+    value = np.array([q.value for q in values])
+    u = np.array([max(q.standard_uncertainty, 1e-300) for q in values])
+    weight = u**-2.0
+    mean = float(np.sum(weight * value) / np.sum(weight))
+    internal = float(1 / np.sqrt(np.sum(weight)))
+    n = len(values)
+    if n == 1:
+        return Quantity.normal(mean, values[0].unit, internal)
+    external = float(np.sqrt(np.sum(weight * (value - mean) ** 2) / np.sum(weight) / (n - 1)))
+    if external <= internal:
+        return Quantity.normal(mean, values[0].unit, internal)
+    half = max(coverage_factor(n - 1) * external, coverage_factor() * internal)
+    return Quantity(
+        value=mean, unit=values[0].unit, standard_uncertainty=external, interval_95=(mean - half, mean + half)
+    )
