@@ -20,6 +20,7 @@ __all__ = ["StepFrames", "read_step"]
 Floats = NDArray[np.float64]
 
 POINTS_PER_PERIOD = 100  # of the smoothed curve
+BAND_OVER_NOISE = 4.0  # a hold has some fifty independent points: their largest stays below this many deviations
 CLEAR = 4.0  # an extreme counts while it stands this many standard uncertainties above the settled level
 
 
@@ -98,7 +99,7 @@ class _Trace:
         for name, band in (("settling_time_5", 0.05), ("settling_time_2", 0.02)):
             found[name] = None
             good = np.isfinite(self.level)
-            if not good.any() or 2.5 * np.hypot(np.nanmedian(self.noise), self.ends) > band:
+            if not good.any() or BAND_OVER_NOISE * np.hypot(np.nanmedian(self.noise), self.ends) > band:
                 continue
             outside = np.flatnonzero(good & (np.abs(self.level - 1) > band))
             if len(outside) == 0 or outside[-1] + 1 >= len(self.level):
@@ -124,10 +125,7 @@ class _Trace:
                 break
             clear.append(int(j))
         if not clear:
-            rest = np.hypot(np.nanmedian(self.noise), self.ends)
-            top = float(np.nanmax(deviation)) if np.isfinite(deviation).any() else np.nan
-            if np.isfinite(top):
-                none["percent_overshoot"] = Quantity.finite_or_none(100 * max(top, 0.0), "%", 100 * float(rest))
+            none["percent_overshoot"] = self._no_overshoot()
             return none
         peak = clear[0]
         u_peak = float(np.hypot(self.noise[peak], self.ends))
@@ -139,6 +137,13 @@ class _Trace:
         none["peak_time"] = Quantity.normal(float(self.time[peak]), "s", float(u_slope / curvature))
         none.update(self._decay(np.array(clear), deviation))
         return none
+
+    def _no_overshoot(self) -> Quantity | None:
+        """Nothing stands clear of the settled level: none, up to what the noise could hide."""
+        hidden = 100 * float(np.hypot(np.nanmedian(self.noise), self.ends)) if np.isfinite(self.noise).any() else np.nan
+        if not np.isfinite(hidden):
+            return None
+        return Quantity(value=0.0, unit="%", standard_uncertainty=hidden, interval_95=(0.0, 2 * hidden))
 
     def _decay(self, clear: Floats, deviation: Floats) -> dict[str, Quantity | None]:
         """Straight line through ln|extreme| against its number and its time, weighted with its uncertainty."""
