@@ -33,8 +33,8 @@ def command(folder: Path, kind: RunKind, device: str | None, simulate: bool, see
     if simulate and device is not None:
         raise click.UsageError("--device and --simulate exclude each other; give one of them")
     test = TestFolder.existing(folder)
-    print_cautions()
     if not simulate:
+        print_cautions()
         capture_through_sound_interface(test, kind=kind, device=device)
     with progress_bar() as progress:
         run = capture_simulated(test, kind=kind, seed=seed, progress=progress)

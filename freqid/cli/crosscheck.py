@@ -1,0 +1,72 @@
+"""freqid crosscheck: the comparison, the verdict, causes and the next test."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import click
+
+from freqid.cli.options import folder_argument, json_option
+from freqid.cli.output import print_json, print_table
+from freqid.crosscheck.comparison_result import ComparedRow, CrossCheck
+from freqid.crosscheck.result_file import crosscheck_as_json
+from freqid.quantity import Quantity
+from freqid.stages.crosscheck import cross_check_folder
+from freqid.test_folder import TestFolder
+
+__all__ = ["EXIT_STATUS", "command", "print_cross_check"]
+
+EXIT_STATUS = {"agree": 0, "disagree": 3, "unresolved": 4}
+
+
+@click.command("crosscheck")
+@folder_argument
+@json_option
+def command(folder: Path, as_json: bool) -> int:
+    """Hold the frequency test of FOLDER against its step test, within the tolerances of rig.toml.
+
+    Exit status 0 agree, 3 disagree, 4 unresolved. Writes results/crosscheck.json. Example: freqid crosscheck vane
+    """
+    check = cross_check_folder(TestFolder.existing(folder))
+    if as_json:
+        print_json({"format": "freqid crosscheck", "format_version": 1, **crosscheck_as_json(check)})
+    else:
+        print_cross_check(check)
+    return EXIT_STATUS[check.verdict]
+
+
+def print_cross_check(check: CrossCheck) -> None:
+    """Every row, the agreement strip, then the verdict, its causes and the next test."""
+    print_table(
+        [_cells(row) for row in check.compared],
+        columns=("quantity", "frequency test", "step test", "difference", "En", "verdict"),
+    )
+    click.echo(_strip(check))
+    click.echo(f"\n{check.verdict.upper()}: {check.sentence}")
+    if check.joint is not None:
+        click.echo(f"Jointly: chi-square {check.joint.statistic:.3g} with {check.joint.degrees_of_freedom} degrees of "
+                   f"freedom, p = {check.joint.p_value:.2g}")  # fmt: skip
+    for cause in check.causes:
+        click.echo(f"Cause? {cause.cause.replace('_', ' ')} ({cause.strength:.1f}): {cause.evidence}")
+    if check.next_test is not None:
+        click.echo(f"Next: {check.next_test.command}\n      {check.next_test.reason}")
+
+
+def _cells(row: ComparedRow) -> tuple[str, ...]:
+    verdict = row.verdict if row.verdict != "not judged" else f"({row.reason})"
+    en = "" if row.en is None else f"{row.en:+.2f}"
+    name = row.quantity.replace("_", " ")
+    return name, _text(row.frequency_test), _text(row.step_test), _text(row.difference), en, verdict
+
+
+def _text(quantity: Quantity | None) -> str:
+    return "" if quantity is None else str(quantity)
+
+
+def _strip(check: CrossCheck) -> str:
+    import sys
+
+    from freqid.report.agreement_words import agreement_text
+
+    encoding = (sys.stdout.encoding or "ascii").lower()
+    return agreement_text(check, width=100, ascii=not encoding.startswith("utf"))

@@ -1,0 +1,70 @@
+"""freqid estimate: clock map, frequency response and model."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Literal
+
+import click
+
+from freqid.cli.options import folder_argument, json_option
+from freqid.cli.output import print_caveats, print_json, print_table, progress_bar, quantity_rows
+from freqid.estimate.identification import Identification
+from freqid.estimate.result_files import model_as_json
+from freqid.stages.estimate import estimate_folder
+from freqid.test_folder import TestFolder
+
+__all__ = ["command", "print_identification"]
+
+
+@click.command("estimate")
+@folder_argument
+@click.option("--run", "run", metavar="NAME|all", help="The run to use, or all; the latest complete one unless given.")
+@click.option("--method", type=click.Choice(["auto", "periodic", "local-polynomial"]), default="auto", show_default=True,
+              help="How the response is estimated; auto takes periodic where the excitation is known to repeat.")
+@json_option
+def command(
+    folder: Path, run: str | None, method: Literal["auto", "periodic", "local-polynomial"], as_json: bool
+) -> None:  # fmt: skip
+    """Estimate clock map, frequency response and second-order model from a run in FOLDER.
+
+    Writes results/response.h5, results/response.csv and results/model.json. Example: freqid estimate vane
+    """
+    test = TestFolder.existing(folder)
+    with progress_bar() as progress:
+        found = estimate_folder(test, run=run, method=method, progress=progress)
+    if as_json:
+        print_json({"format": "freqid model", "format_version": 1, **model_as_json(found.model)})
+    else:
+        print_identification(found)
+    print_caveats(found.model.caveats)
+
+
+def print_identification(found: Identification) -> None:
+    """Parameters, derived quantities and what was found about the record, as tables."""
+    model = found.model
+    print_table(
+        quantity_rows(model.parameters), columns=("model", "value ± 95 %", "unit"), title="Model from the frequency test"
+    )
+    print_table(quantity_rows(model.derived), columns=("derived from it", "value ± 95 %", "unit"))
+    print_table(_facts(found))
+
+
+def _facts(found: Identification) -> list[tuple[str, str]]:
+    model, clock = found.model, found.model.clock
+    response = found.response
+    clocks = "one for both logs" if clock.offset_known else f"two; sensor's off by {clock.ratio_ppm}, offset unknown"
+    adequacy = model.adequacy
+    if adequacy.p_value != adequacy.p_value:
+        adequate = "not tested: too few points"
+    else:
+        word = "describes the response within its noise" if adequacy.adequate else "does NOT describe the response"
+        adequate = f"{word} (p = {adequacy.p_value:.2g})"
+    return [
+        ("runs", ", ".join(model.runs)),
+        ("response", f"{len(response.frequency)} points from {response.frequency[0]:.3g} to "
+                     f"{response.frequency[-1]:.3g} Hz, {response.method}"),
+        ("clocks", clocks),
+        ("frames", f"{clock.frames} read, {clock.lost_frames} lost, stamps off their grid by {1e3 * clock.jitter:.2g} ms rms"),
+        ("model", f"explains {100 * model.explained:.2f} % of the angle's variance; {adequate}"),
+    ]  # fmt: skip

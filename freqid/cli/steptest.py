@@ -1,0 +1,54 @@
+"""freqid steptest: step-test values and step model."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import click
+
+from freqid.cli.options import folder_argument, json_option
+from freqid.cli.output import print_caveats, print_json, print_table, progress_bar, quantity_rows
+from freqid.stages.steptest import step_test_folder
+from freqid.step_test.result_file import step_as_json
+from freqid.step_test.step_result import StepResult
+from freqid.test_folder import TestFolder
+
+__all__ = ["command", "print_step_result"]
+
+
+@click.command("steptest")
+@folder_argument
+@click.option("--run", "run", metavar="NAME", help="The step run to use; the latest complete one unless given.")
+@json_option
+def command(folder: Path, run: str | None, as_json: bool) -> None:
+    """Read overshoot, times and static gain off every step of a step run in FOLDER, and fit its model.
+
+    Times count from the onset of the response. Writes results/step.json. Example: freqid steptest vane
+    """
+    test = TestFolder.existing(folder)
+    with progress_bar() as progress:
+        result = step_test_folder(test, run=run, progress=progress)
+    if as_json:
+        print_json({"format": "freqid step test", "format_version": 1, **step_as_json(result)})
+    else:
+        print_step_result(result)
+    print_caveats(result.caveats)
+
+
+def print_step_result(result: StepResult) -> None:
+    """Fitted parameters, and the read-offs beside what the fit implies."""
+    print_table(
+        quantity_rows(result.parameters), columns=("model", "value ± 95 %", "unit"), title="Model from the step test"
+    )
+    read, derived = dict(quantity_rows_by_name(result.quantities)), dict(quantity_rows_by_name(result.derived))
+    rows = [(name, *read[name], derived.get(name, ("", ""))[0]) for name in read]
+    up = sum(step.direction == "up" for step in result.steps)
+    print_table(
+        rows,
+        columns=(f"{len(result.steps)} steps ({up} up)", "read off ± 95 %", "unit", "fit implies"),
+    )
+
+
+def quantity_rows_by_name(quantities: dict) -> list[tuple[str, tuple[str, str]]]:  # type: ignore[type-arg]
+    """Rows of `quantity_rows` keyed by their name."""
+    return [(name, (value, unit)) for name, value, unit in quantity_rows(quantities)]

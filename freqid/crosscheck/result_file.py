@@ -1,0 +1,69 @@
+"""How does a cross-check get into results/crosscheck.json and back?"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import asdict
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from freqid.crosscheck.comparison_result import Cause, ComparedRow, CrossCheck, JointTest, NextTest
+from freqid.errors import TestFolderError
+from freqid.quantity import Caveat, Quantity
+
+if TYPE_CHECKING:
+    from freqid.test_folder import TestFolder
+
+__all__ = ["CROSSCHECK_FORMAT", "crosscheck_as_json", "read_crosscheck", "write_crosscheck"]
+
+CROSSCHECK_FORMAT = "freqid crosscheck"
+
+
+def write_crosscheck(folder: TestFolder, check: CrossCheck, *, computed_from: Iterable[Path]) -> None:
+    """Write results/crosscheck.json, whole or not at all."""
+    content = folder.provenance(format=CROSSCHECK_FORMAT, computed_from=computed_from)
+    folder.write_json(folder.crosscheck, {**content, **crosscheck_as_json(check)})
+
+
+def crosscheck_as_json(check: CrossCheck) -> dict[str, Any]:
+    """The body of results/crosscheck.json."""
+    return {
+        "verdict": check.verdict,
+        "sentence": check.sentence,
+        "compared": [row.as_json() for row in check.compared],
+        "joint": None if check.joint is None else asdict(check.joint),
+        "causes": [asdict(cause) for cause in check.causes],
+        "next_test": None if check.next_test is None else asdict(check.next_test),
+        "warnings": [c.as_json() for c in check.caveats],
+    }
+
+
+def read_crosscheck(folder: TestFolder) -> CrossCheck:
+    """The cross-check in results/crosscheck.json; raises TestFolderError where it is missing, damaged or newer."""
+    content = folder.read_json(folder.crosscheck, format=CROSSCHECK_FORMAT)
+    try:
+        return CrossCheck(
+            verdict=content["verdict"],
+            sentence=content["sentence"],
+            compared=tuple(_row(row) for row in content["compared"]),
+            joint=None if content["joint"] is None else JointTest(**content["joint"]),
+            causes=tuple(Cause(**cause) for cause in content["causes"]),
+            next_test=None if content["next_test"] is None else NextTest(**content["next_test"]),
+            caveats=Caveat.all_from_json(content["warnings"]),
+        )
+    except (KeyError, TypeError, ValueError) as error:
+        raise TestFolderError(
+            f"{folder.crosscheck}: damaged ({error!r}); run `freqid crosscheck {folder.quoted}` again"
+        ) from None
+
+
+def _row(row: dict[str, Any]) -> ComparedRow:
+    quantities = {name: Quantity.from_json(row[name]) for name in ("frequency_test", "step_test", "difference")}
+    return ComparedRow(
+        **quantities,
+        quantity=row["quantity"],
+        en=row["en"],
+        tolerance=row["tolerance"],
+        verdict=row["verdict"],
+        reason=row["reason"],
+    )

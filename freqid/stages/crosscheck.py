@@ -1,0 +1,27 @@
+"""How do both results become a verdict? Compared within the tolerances of the rig sheet, kept in results/crosscheck.json."""
+
+from __future__ import annotations
+
+from freqid.crosscheck.comparison import cross_check
+from freqid.crosscheck.comparison_result import CrossCheck
+from freqid.crosscheck.result_file import write_crosscheck
+from freqid.estimate.resonance import read_resonance
+from freqid.estimate.result_files import read_identification
+from freqid.rig import read_rig
+from freqid.step_test.result_file import read_step_result
+from freqid.test_folder import TestFolder
+
+__all__ = ["cross_check_folder"]
+
+
+def cross_check_folder(folder: TestFolder) -> CrossCheck:
+    """Compare results/model.json with results/step.json and write results/crosscheck.json."""
+    rig = read_rig(folder.rig)
+    found, step = read_identification(folder), read_step_result(folder)
+    tolerance = {name: getattr(rig.tolerance, name) for name in ("gain", "natural_frequency", "damping_ratio")}
+    check = cross_check(
+        found.model, step, tolerance=tolerance, resonance=read_resonance(found.response), folder=folder.quoted
+    )
+    sources = [folder.rig, folder.model, folder.response_h5, folder.step]
+    write_crosscheck(folder, check, computed_from=sources)
+    return check
