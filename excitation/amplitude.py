@@ -92,7 +92,7 @@ def scaled_to_limits(
     allowance = largest_allowance(profile, limits, rigs, margin=margin)
     largest = allowance.scale * _ROUNDING * profile.peak_voltage
     if amplitude is not None:
-        _check_amplitude(amplitude, largest, allowance)
+        _check_amplitude(amplitude, largest, allowance, limits=limits, margin=margin)
     chosen = largest if amplitude is None else amplitude
     deviation = (profile.voltage - profile.bias) * (chosen / profile.peak_voltage)
     limited_by = allowance.limited_by if amplitude is None else "amplitude asked for"
@@ -105,13 +105,20 @@ def scaled_to_limits(
     return scaled
 
 
-def _check_amplitude(amplitude: float, largest: float, allowance: Allowance) -> None:
+def _check_amplitude(
+    amplitude: float, largest: float, allowance: Allowance, *, limits: Limits, margin: float
+) -> None:
     if not (np.isfinite(amplitude) and amplitude > 0):
         raise ExcitationError(f"amplitude: {amplitude} V; it must be above 0")
     if amplitude > largest:
+        figures = {
+            "voltage": f"the peak may be {limits.voltage:g} V",
+            "slew rate": f"it would change faster than {limits.slew_rate:g} V/s",
+            "swing": f"the predicted swing would be {margin * limits.angle * amplitude / largest:.3g} of "
+            f"{margin * limits.angle:.3g} allowed ({margin:g} of the stops at {limits.angle:g})",
+        }[allowance.limited_by]
         raise LimitExceeded(
-            f"amplitude: {amplitude:.6g} V asked for, {largest:.6g} V is the most the limit on the "
-            f"{allowance.limited_by} allows; ask for less, or leave it to the design"
+            f"amplitude: {amplitude:.6g} V asked for, but {figures}; ask for at most {largest:.6g} V, or leave it to the design"
         )
 
 

@@ -28,6 +28,8 @@ _ABOVE_ZERO = click.FloatRange(min=0, min_open=True)
 @click.option("--wanted-damping", type=click.FloatRange(0, 1, min_open=True), metavar="REL",
               help="Uncertainty wanted for the damping ratio, relative, at 95 % (0.05 is 5 %): the test is made as"
                    " long as it takes, at most --duration.")
+@click.option("--amplitude", type=_ABOVE_ZERO, metavar="V",
+              help="Peak voltage from the bias; refused where it would pass a limit. The largest safe one unless given.")
 @click.option("--seed", type=click.IntRange(min=0), default=1, show_default=True, help="Of the random phases.")
 @json_option
 def command(
@@ -36,6 +38,7 @@ def command(
     band: tuple[float, float] | None,
     duration: float | None,
     wanted_damping: float | None,
+    amplitude: float | None,
     seed: int,
     as_json: bool,
 ) -> None:  # fmt: skip
@@ -47,7 +50,9 @@ def command(
     if kind == "step" and band is not None:
         raise click.UsageError("--band has no meaning for --kind step; leave it out")
     test = TestFolder.existing(folder)
-    settings = ExciteSettings(kind=kind, band=band, duration=duration, wanted_damping=wanted_damping, seed=seed)
+    settings = ExciteSettings(
+        kind=kind, band=band, duration=duration, wanted_damping=wanted_damping, amplitude=amplitude, seed=seed
+    )
     with progress_bar() as progress:
         design = design_excitation(test, settings, progress=progress)
     if as_json:

@@ -149,7 +149,8 @@ def _why_hold(record: Record, weighted: WeightedFit) -> str | None:
             f"The best fit would put the angle {-model.delay:.3g} s before the voltage, which cannot be: the delay was held "
             "at 0 (noise, drift or further dynamics take its place)."
         )
-    relative = np.sqrt(np.diag(parameter_covariance(weighted)))[1] / model.natural_frequency
+    variance = parameter_covariance(weighted)[1, 1]
+    relative = np.sqrt(variance) / model.natural_frequency if variance > 0 else np.inf
     if model.damping_ratio > 1 and relative > RIDGE:
         return (
             "The fast pole and a delay look alike in this record: the delay was held at 0, so that the fast pole carries "

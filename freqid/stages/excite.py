@@ -43,13 +43,15 @@ class ExciteSettings:
 
     `band` (Hz) lies about the expected natural frequency where None; a step test has none. `duration` (s) is
     chosen where None. `wanted_damping` is the half-width of the 95 % interval wanted for the damping ratio,
-    relative: the test is made as long as that takes, but no longer than `duration` where that is given.
+    relative: the test is made as long as that takes, but no longer than `duration` where that is given. `amplitude`
+    (V from the bias) is refused where it would pass a limit; the largest safe one is taken where None.
     """
 
     kind: Literal["multisine", "swept-sine", "step"] = "multisine"
     band: tuple[float, float] | None = field(default=None, metadata={"unit": "Hz"})
     duration: float | None = field(default=None, metadata={"unit": "s"})
     wanted_damping: float | None = None
+    amplitude: float | None = field(default=None, metadata={"unit": "V"})
     seed: int = 1
 
     @property
@@ -114,8 +116,8 @@ def _long_enough(settings: ExciteSettings, rig: Rig) -> Profile:
 def _designed(settings: ExciteSettings, rig: Rig) -> Profile:
     """The profile at the largest amplitude allowed, or at the cautious one where no swing can be predicted."""
     design = {"multisine": _multisine, "swept-sine": _swept_sine, "step": _step}[settings.kind]
-    profile = design(settings, rig, None)
-    if expected_rig(rig) is not None:
+    profile = design(settings, rig, settings.amplitude)
+    if expected_rig(rig) is not None or settings.amplitude is not None:
         return profile
     limits = limits_of(rig)
     cautious = _CAUTIOUS_PART * (limits.voltage - abs(limits.bias))
