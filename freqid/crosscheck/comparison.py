@@ -56,7 +56,7 @@ def cross_check(
     step: StepResult,
     *,
     tolerance: Mapping[str, float],
-    resonance: ResonanceReading | str,
+    resonance: ResonanceReading | str = "the measured curve was not given",
     folder: str = "FOLDER",
 ) -> CrossCheck:
     """Compare the frequency test with the step test.
