@@ -39,9 +39,12 @@ def print_cross_check(check: CrossCheck) -> None:
     """Every row, the agreement strip, then the verdict, its causes and the next test."""
     print_table(
         [_cells(row) for row in check.compared],
-        columns=("quantity", "frequency test", "step test", "difference", "En", "verdict"),
+        columns=("quantity", "frequency test", "step test", "difference", "unit", "En", "verdict"),
     )
-    click.echo(_strip(check))
+    for row in check.compared:
+        if row.difference is None:
+            click.echo(f" {row.quantity.replace('_', ' ')}: {row.reason}")
+    click.echo(f"\n{_strip(check)}")
     click.echo(f"\n{check.verdict.upper()}: {check.sentence}")
     if check.joint is not None:
         click.echo(f"Jointly: chi-square {check.joint.statistic:.3g} with {check.joint.degrees_of_freedom} degrees of "
@@ -53,14 +56,16 @@ def print_cross_check(check: CrossCheck) -> None:
 
 
 def _cells(row: ComparedRow) -> tuple[str, ...]:
-    verdict = row.verdict if row.verdict != "not judged" else f"({row.reason})"
+    verdict = "-" if row.verdict == "not judged" else row.verdict
     en = "" if row.en is None else f"{row.en:+.2f}"
-    name = row.quantity.replace("_", " ")
-    return name, _text(row.frequency_test), _text(row.step_test), _text(row.difference), en, verdict
+    known = [q for q in (row.frequency_test, row.step_test) if q is not None]
+    unit = known[0].unit if known and known[0].unit != "1" else ""
+    numbers = (_text(row.frequency_test), _text(row.step_test), _text(row.difference))
+    return row.quantity.replace("_", " "), *numbers, unit, en, verdict
 
 
 def _text(quantity: Quantity | None) -> str:
-    return "" if quantity is None else str(quantity)
+    return "" if quantity is None else " ± ".join(quantity.rounded())
 
 
 def _strip(check: CrossCheck) -> str:

@@ -43,8 +43,11 @@ def command(
 def print_identification(found: Identification) -> None:
     """Parameters, derived quantities and what was found about the record, as tables."""
     model = found.model
+    parameters = dict(model.parameters)
+    if not model.clock.offset_known:
+        parameters["delay less clock offset"] = parameters.pop("delay")
     print_table(
-        quantity_rows(model.parameters), columns=("model", "value ± 95 %", "unit"), title="Model from the frequency test"
+        quantity_rows(parameters), columns=("model", "value ± 95 %", "unit"), title="Model from the frequency test"
     )
     print_table(quantity_rows(model.derived), columns=("derived from it", "value ± 95 %", "unit"))
     print_table(_facts(found))

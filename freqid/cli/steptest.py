@@ -37,15 +37,18 @@ def command(folder: Path, run: str | None, as_json: bool) -> None:
 
 def print_step_result(result: StepResult) -> None:
     """Fitted parameters, and the read-offs beside what the fit implies."""
+    parameters = dict(result.parameters)
+    if not result.clock.offset_known:
+        parameters["delay less clock offset"] = parameters.pop("delay")
     print_table(
-        quantity_rows(result.parameters), columns=("model", "value ± 95 %", "unit"), title="Model from the step test"
+        quantity_rows(parameters), columns=("model", "value ± 95 %", "unit"), title="Model from the step test"
     )
     read, derived = dict(quantity_rows_by_name(result.quantities)), dict(quantity_rows_by_name(result.derived))
     rows = [(name, *read[name], derived.get(name, ("", ""))[0]) for name in read]
     up = sum(step.direction == "up" for step in result.steps)
     print_table(
         rows,
-        columns=(f"{len(result.steps)} steps ({up} up)", "read off ± 95 %", "unit", "fit implies"),
+        columns=(f"{len(result.steps)} step{'s' if len(result.steps) > 1 else ''}, {up} up", "read off ± 95 %", "unit", "fit implies"),
     )
 
 

@@ -89,7 +89,7 @@ def _parameter_row(name: str, model: IdentifiedModel, step: StepResult, relative
 
 def _delay_row(model: IdentifiedModel, step: StepResult) -> ComparedRow:
     first, second = model.parameters["delay"], step.parameters["delay"]
-    reason = "no tolerance in the rig sheet"
+    reason = "no tolerance in the rig sheet" if first is not None and second is not None else "undetermined by one test"
     if not (model.clock.offset_known and step.clock.offset_known):
         reason = "contains the unknown offset between the clocks"
         return ComparedRow(

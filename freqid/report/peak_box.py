@@ -1,8 +1,9 @@
 """Do both tests see the same resonance? The peak enlarged, one box of 95 % in frequency and height for each test.
 
-Both boxes come from the fitted models; the measured lines that fall into the window are drawn with their own
-intervals. A box is the 95 % interval of each coordinate by itself; the two are correlated, so the joint region is a
-tilted ellipse.
+The box of the frequency test is read off the measured curve itself where its lines allow that
+(`freqid.estimate.resonance`), else it is that of the fitted model; the box of the step test is what its model predicts.
+Measured lines that fall into the window have their own intervals. A box is the 95 % interval of each coordinate by
+itself; where the two are correlated the joint region is a tilted ellipse.
 """
 
 from __future__ import annotations
@@ -12,8 +13,10 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from freqid.estimate.frequency_response import FrequencyResponse
 from freqid.estimate.identification import Identification
 from freqid.estimate.model import IdentifiedModel
+from freqid.estimate.resonance import read_resonance
 from freqid.quantity import Quantity
 from freqid.report.figure_style import LIGHT, MARK, Palette, dress
 from freqid.report.quantity_words import with_uncertainty
@@ -33,6 +36,7 @@ _PART_OF_WIDTH = 0.3  # of the half-power half-width is always shown, so that th
 class _Peak:
     frequency: Quantity
     gain: Quantity
+    source: str
 
 
 def has_peak(model: IdentifiedModel | StepResult) -> bool:
@@ -45,10 +49,11 @@ def draw_peaks(
 ) -> None:
     """The peak of both tests into `axes`, enlarged; nothing where the frequency test has no resonance."""
     dress(axes, palette)
-    measured = _peak(identification.model)
+    modelled = _peak(identification.model)
     predicted = None if step_result is None else _peak(step_result)
-    if measured is None:
+    if modelled is None:
         return
+    measured = _measured_peak(identification.response) or modelled
     unit = identification.model.angle_unit
     peaks = [peak for peak in (measured, predicted) if peak is not None]
     band = _window(axes, identification.model, peaks)
@@ -72,7 +77,15 @@ def _peak(model: IdentifiedModel | StepResult) -> _Peak | None:
     frequency, gain = derived.get("resonance_frequency"), derived.get("resonance_gain")
     if frequency is None or gain is None or frequency.value <= 0:
         return None
-    return _Peak(frequency=frequency, gain=gain)
+    source = "step test predicts" if isinstance(model, StepResult) else "frequency test's model"
+    return _Peak(frequency=frequency, gain=gain, source=source)
+
+
+def _measured_peak(response: FrequencyResponse) -> _Peak | None:
+    reading = read_resonance(response)
+    if isinstance(reading, str):
+        return None
+    return _Peak(frequency=reading.resonance_frequency, gain=reading.resonance_gain, source="measured")
 
 
 def _window(axes: Axes, model: IdentifiedModel, peaks: list[_Peak]) -> tuple[float, float]:
@@ -85,7 +98,7 @@ def _window(axes: Axes, model: IdentifiedModel, peaks: list[_Peak]) -> tuple[flo
     bottom = min(peak.gain.interval_95[0] for peak in peaks)
     top = max(peak.gain.interval_95[1] for peak in peaks)
     ends = np.abs(model.model.response(np.array([centre - half, centre + half])))
-    bottom, top = min(bottom, float(ends.min())), max(top, peaks[0].gain.value)
+    bottom, top = min(bottom, float(ends.min())), max(top, float(np.abs(model.model.response(np.array([centre])))[0]))
     room = max(0.12 * (top - bottom), 1e-4 * abs(top))
     axes.set(xlim=(centre - half, centre + half), ylim=(bottom - room, top + 6 * room))
     return centre - half, centre + half
@@ -103,13 +116,13 @@ def _draw_box(axes: Axes, peak: _Peak, *, source: str, palette: Palette) -> None
 
 
 def _words(axes: Axes, measured: _Peak, predicted: _Peak | None, palette: Palette) -> None:
-    lines = [(f"● measured {_said(measured)}", palette.frequency_test)]
+    lines = [(f"● {_said(measured)}", palette.frequency_test)]
     if predicted is not None:
-        lines.append((f"◆ step test predicts {_said(predicted)}", palette.step_test))
+        lines.append((f"◆ {_said(predicted)}", palette.step_test))
     for number, (text, colour) in enumerate(lines):
         axes.annotate(text, (0, 1), xycoords="axes fraction", xytext=(5, -3 - 12 * number), textcoords="offset points",
                       va="top", color=colour, fontsize=8)  # fmt: skip
 
 
 def _said(peak: _Peak) -> str:
-    return f"{with_uncertainty(peak.gain)} at {with_uncertainty(peak.frequency)}"
+    return f"{peak.source} {with_uncertainty(peak.gain)} at {with_uncertainty(peak.frequency)}"

@@ -25,6 +25,7 @@ _WORDS = {
     "time_constant": "dominant time constant",
     "steady_state_error": "steady-state error",
     "resonance_gain": "gain at resonance",
+    "half_power_width": "half-power width",
 }
 
 

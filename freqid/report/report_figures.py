@@ -60,8 +60,8 @@ def _agreement(inputs: ReportInputs) -> ReportFigure | None:
     return ReportFigure(
         figure=agreement_figure(inputs.crosscheck),
         caption="Both tests with their 95 % intervals about their common mean, in units of what counts as agreement "
-        "(shaded). The thin bar beneath is their difference: the tests agree in a quantity where it lies within the "
-        "shade.",
+        "(shaded). The thin bar beneath is their difference: the tests agree in a quantity where it lies within "
+        "the shade.",
         alternative="Agreement strip. " + " ".join(
             f"{label_of(row.quantity)}: difference {with_uncertainty(row.difference)}, tolerance {row.tolerance:.3g}, "
             f"{row.verdict}."
