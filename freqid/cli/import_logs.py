@@ -33,6 +33,9 @@ _OPTIONS = (
     click.option("--angle-unit", type=click.Choice(["deg", "rad"]), help="Unit of the angle in the log."),
     click.option("--hold", type=click.Choice(["zero-order", "smooth"]),
                  help="How the voltage behaves between its samples; decided from the log unless given."),
+    click.option("--exposure", type=click.FloatRange(min=0), metavar="S",
+                 help="Time over which each angle sample is averaged; the rig sheet's unless given."),
+    click.option("--decimal", type=click.Choice([".", ","]), help="Decimal sign of a text log; found unless given."),
 )  # fmt: skip
 
 

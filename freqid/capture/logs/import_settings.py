@@ -21,7 +21,7 @@ class ImportSettings:
     """The user's choices for one import.
 
     The columns are header names or numbers counted from 1. `time_unit` is one of s, ms, us, min;
-    `sample_rate` (Hz) is for logs without times and for frame numbers; `angle_unit` is deg or rad. The
+    `exposure` (s) is that of the angle samples, the rig sheet's unless given; `sample_rate` (Hz) is for logs without times and for frame numbers; `angle_unit` is deg or rad. The
     three `input_...` choices are for an input log of its own that differs from the angle log.
     """
 
@@ -33,6 +33,7 @@ class ImportSettings:
     sample_rate: float | None = None
     angle_unit: str | None = None
     hold: Hold | None = None
+    exposure: float | None = None
     decimal: Decimal | None = None
     input_time_column: str | None = None
     input_time_unit: str | None = None
@@ -42,6 +43,8 @@ class ImportSettings:
         for option, rate in (("sample-rate", self.sample_rate), ("input-sample-rate", self.input_sample_rate)):
             if rate is not None and not 0 < rate < float("inf"):
                 raise LogError(f"--{option} {rate:g} is no rate; give samples per second, above zero")
+        if self.exposure is not None and not 0 <= self.exposure < float("inf"):
+            raise LogError(f"--exposure {self.exposure:g} is no exposure; give seconds, 0 for readings of an instant")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

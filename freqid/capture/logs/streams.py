@@ -28,6 +28,7 @@ from freqid.records import AngleStream, Hold, InputStream, Periodicity
 __all__ = ["LEAST_SAMPLES", "LogSeries", "angle_stream", "input_stream", "read_series"]
 
 LEAST_SAMPLES = 20
+SAME_RATE = 0.1  # relative: a log farther off the sensor's nominal rate comes from another sensor
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -113,14 +114,32 @@ def angle_stream(series: LogSeries, *, settings: ImportSettings, rig: RigFacts) 
         raw = raw * rig.angle_full_scale
         notes.append(f"{source}: digital full scale is {rig.angle_full_scale:g} {rig.angle_unit}, from the rig sheet")
     converted = angle_in_rig_unit(raw, column, asked_unit=settings.angle_unit, rig_unit=rig.angle_unit, source=source)
+    time = series.time[stamped]
+    exposure, why = _exposure(time, settings, rig)
+    if why:
+        notes.append(f"{source}: {why}")
     stream = AngleStream(
-        time=_read_only(series.time[stamped]),
+        time=_read_only(time),
         angle=converted.angle,
         angle_unit=rig.angle_unit,
-        exposure=rig.exposure,
+        exposure=exposure,
         stamp=rig.stamp,
     )
     return stream, (*notes, *converted.notes)
+
+
+def _exposure(time: NDArray[np.float64], settings: ImportSettings, rig: RigFacts) -> tuple[float, str]:
+    """Exposure of the angle samples: as asked, or the rig sheet's where the log is at the rate of its sensor."""
+    if settings.exposure is not None:
+        return settings.exposure, f"exposure {settings.exposure:g} s, as asked"
+    steps = np.diff(time)
+    rate = 1 / float(np.median(steps[steps > 0])) if np.any(steps > 0) else rig.angle_sample_rate
+    if rig.exposure == 0 or abs(rate / rig.angle_sample_rate - 1) <= SAME_RATE:
+        return rig.exposure, ""
+    return 0.0, (
+        f"logged at {rate:.4g} Hz, not at the {rig.angle_sample_rate:g} Hz of [angle_sensor]: taken as readings of an instant, "
+        f"its exposure of {rig.exposure:g} s left aside; give --exposure where the log averages"
+    )
 
 
 def _time_column(table: LogTable, request: str | None, settings: TimeSettings) -> ChosenColumn | None:
