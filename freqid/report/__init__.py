@@ -10,7 +10,7 @@ from importlib import import_module
 from typing import Any
 
 _WHERE = {
-    "ReportFigure": "freqid.report.report_figures",
+    "ReportFigure": "freqid.report.figure_set",
     "ReportInputs": "freqid.report.report_inputs",
     "agreement_figure": "freqid.report.agreement_strip",
     "agreement_text": "freqid.report.agreement_words",
@@ -18,11 +18,11 @@ _WHERE = {
     "draw_gain": "freqid.report.gain_and_phase",
     "draw_peaks": "freqid.report.peak_box",
     "draw_phase": "freqid.report.gain_and_phase",
+    "draw_report": "freqid.report.figure_set",
     "draw_residuals": "freqid.report.residual_ladder",
     "draw_step": "freqid.report.step_figure",
     "gain_and_phase_figure": "freqid.report.gain_and_phase",
     "profile_card_figure": "freqid.report.profile_card",
-    "report_figures": "freqid.report.report_figures",
     "residual_figure": "freqid.report.residual_ladder",
     "ribbon_figure": "freqid.report.data_ribbon",
     "save_figure": "freqid.report.figure_style",

@@ -154,10 +154,21 @@ def _rendered(figure: Figure, form: Literal["svg", "png"]) -> bytes:
 
 
 def _shorter(text: str) -> str:
-    """The same drawing in fewer letters: coordinates to a hundredth of a point, no comments, no indentation."""
+    """The same drawing in fewer letters: hundredths of a point, marks of one look described once, no comments."""
     text = re.sub(r"<!--.*?-->", "", text, flags=re.DOTALL)
     text = re.sub(r'\s(?:d|x|y)="[^"]*"', lambda found: re.sub(r"(\d+\.\d\d)\d+", r"\1", found[0]), text)
-    return re.sub(r"\n\s*", "\n", text)
+    text = re.sub(r"\n\s*", "\n", text)
+    return re.sub(r"<g( [^>]*)>\n((?:<use [^>]*/>\n)+)</g>", _with_one_style, text)
+
+
+def _with_one_style(group: re.Match[str]) -> str:
+    """A group of marks with their style on the group, where all have the same."""
+    attributes, marks = group[1], group[2]
+    styles = set(re.findall(r' style="[^"]*"', marks))
+    if len(styles) != 1 or "style=" in attributes:
+        return group[0]
+    style = styles.pop()
+    return f"<g{attributes}{style}>\n{marks.replace(style, '')}</g>"
 
 
 def _for_page(text: str, name: str) -> str:

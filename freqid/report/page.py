@@ -9,9 +9,9 @@ from __future__ import annotations
 from collections.abc import Mapping
 from importlib.resources import files
 
+from freqid.report.figure_set import ReportFigure, draw_report
 from freqid.report.figure_style import DARK, LIGHT, colour_variables, svg_text
 from freqid.report.page_content import page_content
-from freqid.report.report_figures import ReportFigure, report_figures
 from freqid.report.report_inputs import ReportInputs
 
 __all__ = ["write_report"]
@@ -20,13 +20,13 @@ __all__ = ["write_report"]
 def write_report(inputs: ReportInputs, *, figures: Mapping[str, ReportFigure] | None = None) -> str:
     """The report as the text of one self-contained HTML file (UTF-8).
 
-    `figures` are those of `report_figures(inputs)`, where they have been drawn already; None draws them.
+    `figures` are those of `draw_report(inputs)`, where they have been drawn already; None draws them.
     """
     from jinja2 import Environment, StrictUndefined
 
     environment = Environment(autoescape=True, undefined=StrictUndefined, trim_blocks=True, lstrip_blocks=True)
     source = files("freqid.report").joinpath("templates", "report.html.jinja").read_text(encoding="utf-8")
-    drawn = report_figures(inputs) if figures is None else figures
+    drawn = draw_report(inputs) if figures is None else figures
     page = environment.from_string(source).render(
         page_content(inputs),
         figures={name: _placed(name, figure) for name, figure in drawn.items()},

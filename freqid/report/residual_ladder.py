@@ -49,7 +49,7 @@ def draw_residuals(axes: Axes, identification: Identification, *, palette: Palet
     _shade(axes, frequency, coverage, (low, high), palette)
     colour = palette.frequency_test
     for part, face in ((residual.real, colour), (residual.imag, palette.paper)):
-        axes.plot(*thinned(frequency, part), MARK["frequency_test"], markersize=3.6, markerfacecolor=face,
+        axes.plot(*thinned(frequency, part, points=800), MARK["frequency_test"], markersize=3.6, markerfacecolor=face,
                   markeredgecolor=colour, markeredgewidth=0.8)  # fmt: skip
     axes.axhline(0, color=palette.model, linewidth=1.0)
     _heights(axes, residual, coverage)

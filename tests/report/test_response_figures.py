@@ -1,0 +1,152 @@
+"""Gain, phase, residuals and ribbon show what was measured, for every kind of model, and never a NaN."""
+
+from __future__ import annotations
+
+import re
+from dataclasses import replace
+
+import numpy as np
+import pytest
+from report_rig import OVERDAMPED, VANE, identification, response_run, step_result
+
+from excitation import Limits, MultisineSettings, StepSettings, design_multisine, design_step_sequence
+from freqid.estimate.identification import Identification
+from freqid.report import gain_and_phase_figure, profile_card_figure, residual_figure, ribbon_figure, svg_text
+from freqid.report.data_ribbon import ribbon_of
+from freqid.report.envelope import thinned
+from freqid.report.residual_ladder import scaled_residuals
+from freqid.report.response_display import model_curve, shown_response
+from freqid.second_order import SecondOrder
+
+LIMITS = Limits(voltage=5.0, slew_rate=500.0, angle=30.0)
+
+
+@pytest.mark.parametrize(
+    ("model", "offset_known", "n_lines"),
+    [
+        (VANE, False, 1), (VANE, True, 1), (VANE, False, 3000), (OVERDAMPED, False, 40), (OVERDAMPED, True, 1),
+        (replace(VANE, gain=-12.0), True, 40),
+    ],
+)  # fmt: skip
+def test_figures_of_every_kind_are_drawn_without_nan(model: SecondOrder, offset_known: bool, n_lines: int) -> None:
+    """One line, many lines, no resonance, a reversed sensor: SVG without NaN and below 300 kB."""
+    found = identification(model, offset_known=offset_known, n_lines=n_lines)
+    for figure in (gain_and_phase_figure(found, step_result=step_result()), residual_figure(found)):
+        text = svg_text(figure)
+        assert not re.search(r"\bnan\b", text, re.IGNORECASE)
+        assert len(text) < 300_000
+
+
+def test_resonance_panel_only_where_there_is_a_resonance() -> None:
+    """From a damping ratio of 1/sqrt(2) on the gain has no peak to enlarge."""
+    assert len(gain_and_phase_figure(identification(VANE)).axes) == 3
+    assert len(gain_and_phase_figure(identification(OVERDAMPED)).axes) == 2
+
+
+@pytest.mark.parametrize("model", [VANE, OVERDAMPED, replace(VANE, gain=-12.0)])
+def test_phase_shown_is_the_model_without_its_lag_where_the_clocks_differ(model: SecondOrder) -> None:
+    """With the lag taken out the phase of a second-order rig stays within half a turn of its start."""
+    found = identification(model, offset_known=False)
+    shown = shown_response(found.response, found.model)
+    start = 0.0 if model.gain > 0 else -180.0
+    assert np.all(shown.phase < start + 10) and np.all(shown.phase > start - 190)
+    truth = np.degrees(np.angle(replace(model, delay=0.0).response(shown.frequency)))
+    turns = (shown.phase - truth) / 360
+    # the noise is 0.03 deg/V beside a smallest gain of 12 / 16 = 0.75 deg/V (12 Hz, four times fn): 0.04 rad rms or
+    # less in either direction / sqrt(2); 40 lines at 4 sigma: 6.5 deg. Overdamped: gain 0.52 at 12 Hz, 9.4 deg.
+    assert np.max(np.abs(turns - np.round(turns))) * 360 < 9.4
+
+
+def test_phase_shown_keeps_a_delay_that_is_the_rigs_own() -> None:
+    """On a common clock the phase falls by 360 f tau more."""
+    without, own = identification(offset_known=False), identification(offset_known=True)
+    band = (0.3, 12.0)
+    fall = model_curve(own.model, band).phase - model_curve(without.model, band).phase
+    frequency = model_curve(own.model, band).frequency
+    # both phases are computed in double precision from numbers below 1000
+    np.testing.assert_allclose(fall, -360 * VANE.delay * frequency, atol=1e-9)
+
+
+def test_model_band_is_that_of_the_covariance() -> None:
+    """At the lowest frequency the gain is K and its band that of K alone."""
+    found = identification()
+    curve = model_curve(found.model, (0.001, 10.0))
+    half = found.model.parameters["gain"]
+    assert half is not None
+    # at x = f / fn = 3e-4 the gain and its derivatives differ from those at zero by x^2 = 1e-7, times 12 / 3 at most
+    assert curve.gain_half[0] == pytest.approx(half.expanded_uncertainty, rel=1e-5)
+
+
+def test_scaled_residuals_of_the_true_model_have_unit_scatter() -> None:
+    """Over 200 seeds and 40 lines both parts have mean square one."""
+    parts = []
+    for seed in range(200):
+        found = identification(seed=seed)
+        parts.append(scaled_residuals(found.response, found.model.model))
+    values = np.concatenate([[part.real, part.imag] for part in parts])
+    # mean square of 16000 unit normals scatters by sqrt(2 / 16000) = 0.011; 4 sigma 0.045
+    assert np.mean(values**2) == pytest.approx(1.0, abs=0.045)
+
+
+def ribbon_inputs() -> Identification:
+    """An identification whose residual holds one reading far from the model."""
+    found = identification()
+    residual = found.residual.copy()
+    residual[100] = 30.0
+    return replace(found, residual=residual)
+
+
+def test_ribbon_finds_every_planted_fault() -> None:
+    """One unreadable frame, five clipped readings, one outlier, one gap of three frames, one repeated stamp."""
+    run = response_run()
+    time = np.delete(run.angle.time, [200, 201, 202]).copy()
+    angle = np.delete(run.angle.angle, [200, 201, 202])
+    time[300] = time[299]
+    run = replace(run, angle=replace(run.angle, time=time, angle=angle))
+    ribbon = ribbon_of(run, ribbon_inputs())
+    counts = {name: len(times) for name, times in ribbon.events.items()}
+    assert counts == {
+        "gap, frames lost": 1, "unreadable": 1, "repeated stamp": 1, "far from model": 1, "clipped": 5,
+    }  # fmt: skip
+    assert ribbon.lost_frames == 3
+    assert ribbon.events["gap, frames lost"][0] == time[199]
+
+
+def test_ribbon_is_quiet_when_all_is_well() -> None:
+    """A clean run has no events, and the rms of each period is that of the residual."""
+    run = response_run()
+    clean = replace(run.angle, angle=np.sin(np.arange(len(run.angle.time))))
+    found = identification()
+    ribbon = ribbon_of(replace(run, angle=clean), found)
+    assert sum(len(times) for times in ribbon.events.values()) == 0
+    inside = (found.time >= 1.0) & (found.time < 7.0)
+    # three periods with 120 frames each: their mean square is that of all
+    assert np.mean(ribbon.period_rms**2) == pytest.approx(np.mean(found.residual[inside] ** 2), rel=1e-12)
+    assert len(svg_text(ribbon_figure(run, found))) < 300_000
+
+
+@pytest.mark.parametrize("kind", ["multisine", "step"])
+@pytest.mark.parametrize("known", [False, True])
+def test_profile_card_is_drawn_for_every_profile(kind: str, known: bool) -> None:
+    """With rigs there are three panels, the swing among them; without any there are two."""
+    rigs = (VANE, replace(VANE, gain=12.6, damping_ratio=0.1)) if known else ()
+    if kind == "step":
+        profile = design_step_sequence(StepSettings(sample_rate=500.0, limits=LIMITS, duration=12.0, amplitude=0.9))
+    else:
+        settings = MultisineSettings(
+            band=(0.5, 8.0), duration=12.0, sample_rate=500.0, limits=LIMITS, phases="schroeder", amplitude=0.9
+        )
+        profile = design_multisine(settings)
+    figure = profile_card_figure(profile, rigs, LIMITS)
+    assert len(figure.axes) == (3 if known else 2)
+    assert len(svg_text(figure)) < 300_000
+
+
+def test_thinning_keeps_every_extreme() -> None:
+    """Of 100000 points the largest and the smallest stay, in order, and the number falls to what was asked."""
+    rng = np.random.default_rng(3)
+    x, y = np.arange(100_000.0), rng.standard_normal(100_000)
+    y[77_777], y[5] = 50.0, np.nan
+    kept_x, kept_y = thinned(x, y, points=1000)
+    assert len(kept_x) <= 1000 and np.all(np.diff(kept_x) > 0)
+    assert kept_y.max() == 50.0 and kept_y.min() == np.nanmin(y)
