@@ -86,7 +86,7 @@ def _reasons(check: CrossCheck | None) -> list[str]:
     for row in () if check is None else check.compared:
         if row.reason:
             grouped.setdefault(row.reason, []).append(label_of(row.quantity))
-    return [f"{', '.join(labels)}: {reason}".rstrip(".") + "." for reason, labels in grouped.items()]
+    return [f"{', '.join(labels)}: {reason}".rstrip(".") for reason, labels in grouped.items()]
 
 
 def _joint(check: CrossCheck | None) -> str:

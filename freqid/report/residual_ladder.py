@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
+from freqid.errors import EstimationError
 from freqid.estimate.frequency_response import FrequencyResponse
 from freqid.estimate.identification import Identification
 from freqid.report.envelope import thinned
@@ -40,6 +41,8 @@ def draw_residuals(axes: Axes, identification: Identification, *, palette: Palet
     dress(axes, palette)
     response = identification.response
     usable = (response.frequency > 0) & (response.variance > 0) & (response.gain > 0)
+    if not usable.any():
+        raise EstimationError("no line of the frequency response has an uncertainty to measure residuals by")
     frequency = response.frequency[usable]
     residual = scaled_residuals(response, identification.model.model)[usable]
     coverage = response.coverage[usable]

@@ -12,6 +12,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from freqid.errors import EstimationError
 from freqid.estimate.frequency_response import FrequencyResponse
 from freqid.estimate.model import IdentifiedModel
 from freqid.quantity import coverage_factor
@@ -49,7 +50,10 @@ class ModelCurve:
 
 
 def shown_response(response: FrequencyResponse, model: IdentifiedModel) -> ShownResponse:
-    """The lines that can stand on a logarithmic axis (frequency above 0, finite)."""
+    """The lines that can stand on a logarithmic axis (frequency above 0, finite).
+
+    Raises EstimationError where there is none.
+    """
     shown_delay = shown_lag(model)
     expected = replace(model.model, delay=0.0).response(response.frequency)
     measured = response.without_delay(model.model.delay)
@@ -57,6 +61,8 @@ def shown_response(response: FrequencyResponse, model: IdentifiedModel) -> Shown
     phase = base_phase(model, response.frequency) + np.degrees(aside) - 360 * response.frequency * shown_delay
     usable = (response.frequency > 0) & np.isfinite(response.variance) & np.isfinite(response.gain)
     usable &= response.gain > 0
+    if not usable.any():
+        raise EstimationError("no line of the frequency response can be shown: none is finite and above 0 Hz")
     coverage = response.coverage
     noise = response.noise / np.maximum(response.input_amplitude, 1e-300)
     return ShownResponse(

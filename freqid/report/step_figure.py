@@ -11,6 +11,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 import numpy as np
+from numpy.typing import NDArray
 
 from freqid.estimate.identification import Identification
 from freqid.quantity import Quantity, coverage_factor
@@ -26,6 +27,11 @@ if TYPE_CHECKING:
 
 __all__ = ["draw_step", "draw_step_difference", "step_figure_of"]
 
+Floats = NDArray[np.float64]
+
+_MOST_MARKS = 500  # samples of one step drawn each by itself
+_STRETCHES = 40
+_WORDS = 0.22  # of the height of the motion
 _NEAR_STOP = 0.6  # of the way to a stop: from here on it is drawn
 
 
@@ -72,8 +78,7 @@ def draw_step(
     _levels(axes, view, palette)
     if identification is not None:
         _prediction(axes, view, result, identification, palette)
-    axes.plot(*thinned(view.time, view.angle), MARK["step_test"], color=palette.step_test, markersize=2.6,
-              markeredgewidth=0, zorder=3)  # fmt: skip
+    many = _samples(axes, view.time, view.angle, palette)
     _readings(axes, view, palette)
     axes.set(xlim=view.span, xlabel="time from the onset of the response (s)", ylabel=f"angle ({view.angle_unit})")
     _room(axes, view)
@@ -82,7 +87,7 @@ def draw_step(
     reading = view.reading
     title = f"step {reading.direction}, {reading.voltage_before:.3g} to {reading.voltage_after:.3g} V"
     axes.set_title(title.replace("-", "−"), loc="left", fontsize=9.5, color=palette.model)
-    words = [("◆ measured", palette.step_test)]
+    words = [("— measured, from least to most" if many else "◆ measured", palette.step_test)]
     if identification is not None:
         words.append(("— predicted by the frequency test, 95 %", palette.model))
         words.append(("and with the noise of one reading", palette.noise))
@@ -101,9 +106,30 @@ def draw_step_difference(
     axes.fill_between(times, -band, band, color=palette.frequency_test, alpha=0.5, linewidth=0)
     axes.axhline(0, color=palette.model, linewidth=0.8)
     left = view.angle - predicted_step(view, identification, result, view.time).angle
-    axes.plot(*thinned(view.time, left), MARK["step_test"], color=palette.step_test, markersize=2.4, markeredgewidth=0)
+    if _samples(axes, view.time, left, palette):
+        _means(axes, view.time, left, palette)
     axes.set(xlim=view.span, xlabel="time from the onset of the response (s)",
              ylabel=f"measured −\npredicted ({view.angle_unit})")  # fmt: skip
+
+
+def _samples(axes: Axes, time: Floats, values: Floats, palette: Palette) -> bool:
+    """Every sample as a mark; too many to be told apart as a line from least to most, and then True."""
+    if len(time) <= _MOST_MARKS:
+        axes.plot(time, values, MARK["step_test"], color=palette.step_test, markersize=2.6, markeredgewidth=0, zorder=3)
+        return False
+    axes.plot(*thinned(time, values), color=palette.step_test, linewidth=0.8, alpha=0.7, zorder=3)
+    return True
+
+
+def _means(axes: Axes, time: Floats, values: Floats, palette: Palette) -> None:
+    """Means of equal stretches with their 95 % intervals: what is systematic shows where single samples hide it."""
+    times, parts = np.array_split(time, _STRETCHES), np.array_split(values, _STRETCHES)
+    centre, mean = np.array([part.mean() for part in times]), np.array([part.mean() for part in parts])
+    half = coverage_factor() * np.array([part.std(ddof=1) / np.sqrt(len(part)) for part in parts])
+    axes.errorbar(centre, mean, yerr=half, fmt=MARK["step_test"], color=palette.model, markersize=3.2, elinewidth=0.8,
+                  markerfacecolor=palette.step_test, markeredgewidth=0.6, zorder=4)  # fmt: skip
+    axes.annotate(f"◇ means of {len(time) // _STRETCHES}", (1, 1), xycoords="axes fraction", xytext=(-2, 1), fontsize=8,
+                  textcoords="offset points", ha="right", va="bottom", color=palette.model)  # fmt: skip
 
 
 def _prediction(
@@ -144,7 +170,7 @@ def _readings(axes: Axes, view: StepView, palette: Palette) -> None:
     ):  # fmt: skip
         time = read.get(name)
         if time is not None and time.value <= view.span[1]:
-            base = view.final - 0.30 * size
+            base = view.final - 0.22 * size
             axes.plot([time.value] * 2, [base, view.final + share * size], color=palette.step_test, linewidth=0.9)
             axes.plot(time.interval_95, [base, base], color=palette.step_test, linewidth=2.2, solid_capstyle="butt")
             axes.annotate(text, (time.value, base), xytext=(3 if side == "right" else -3, -3 if size > 0 else 3),
@@ -162,11 +188,12 @@ def _mark(axes: Axes, time: Quantity | None, level: float, text: str, palette: P
 
 
 def _room(axes: Axes, view: StepView) -> None:
-    """Height for the motion and a margin."""
+    """Height for the motion, and on the side where the words stand a little more."""
     shown = view.angle if len(view.angle) else np.array([view.start, view.final])
     low, high = float(min(shown.min(), view.start, view.final)), float(max(shown.max(), view.start, view.final))
     height = max(high - low, 1e-9)
-    axes.set_ylim(low - height * 0.08, high + height * 0.08)
+    rising = view.final >= view.start
+    axes.set_ylim(low - height * (_WORDS if rising else 0.08), high + height * (0.08 if rising else _WORDS))
 
 
 def _stops(axes: Axes, view: StepView, stops: float, palette: Palette) -> None:

@@ -8,13 +8,14 @@ from html import unescape
 from html.parser import HTMLParser
 from pathlib import Path
 
+import numpy as np
 import pytest
 from report_rig import cross_check, full_inputs, identification, rig_called, row, step_run
 
 import freqid.report
 from freqid.quantity import Quantity
 from freqid.report import ReportInputs, draw_report, save_figure, svg_text, write_report
-from freqid.report.figure_style import DARK, LIGHT, Palette
+from freqid.report.figure_style import DARK, LIGHT, MARK, Palette
 from freqid.report.quantity_words import interval, label_of, minus, number, with_uncertainty, without_unit
 
 VOID = {"meta", "link", "br", "img", "hr", "input"}
@@ -249,6 +250,36 @@ def test_colours_stand_clear_of_the_paper(palette: Palette) -> None:
     for name in ("frequency_test", "step_test", "model", "noise", "distortion", "limit"):
         pair = sorted((paper, luminance(getattr(palette, name))))
         assert (pair[1] + 0.05) / (pair[0] + 0.05) >= 3.0, name
+
+
+@pytest.mark.parametrize("palette", [LIGHT, DARK])
+def test_both_tests_are_told_apart_without_full_colour_vision(palette: Palette) -> None:
+    """Marks differ in shape, and colours by 20 or more (CIE 1976) as seen with protanopia and deuteranopia.
+
+    Matrices for severity 1: Machado, Oliveira, Fernandes 2009, doi:10.1109/TVCG.2009.113, table 1. A difference of
+    2.3 is just noticeable; 20 is ten times that, rounded down.
+    """
+    seen = {
+        "protanopia": [
+            [0.152286, 1.052583, -0.204868], [0.114503, 0.786281, 0.099216], [-0.003882, -0.048116, 1.051998],
+        ],
+        "deuteranopia": [
+            [0.367322, 0.860646, -0.227968], [0.280085, 0.672501, 0.047413], [-0.01182, 0.04294, 0.968881],
+        ],
+    }  # fmt: skip
+    to_xyz = np.array([[0.4124, 0.3576, 0.1805], [0.2126, 0.7152, 0.0722], [0.0193, 0.1192, 0.9505]])
+
+    def lab(colour: str, matrix: list[list[float]]) -> np.ndarray:
+        parts = np.array([int(colour[n : n + 2], 16) / 255 for n in (1, 3, 5)])
+        linear = np.where(parts <= 0.04045, parts / 12.92, ((parts + 0.055) / 1.055) ** 2.4)
+        xyz = to_xyz @ np.clip(np.array(matrix) @ linear, 0, 1) / to_xyz.sum(axis=1)
+        f = np.where(xyz > (6 / 29) ** 3, np.cbrt(xyz), xyz / (3 * (6 / 29) ** 2) + 4 / 29)
+        return np.array([116 * f[1] - 16, 500 * (f[0] - f[1]), 200 * (f[1] - f[2])])
+
+    assert MARK["frequency_test"] != MARK["step_test"]
+    for name, matrix in seen.items():
+        difference = lab(palette.frequency_test, matrix) - lab(palette.step_test, matrix)
+        assert np.linalg.norm(difference) >= 20, name
 
 
 def test_numbers_are_rounded_by_the_one_rule() -> None:

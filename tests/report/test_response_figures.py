@@ -10,6 +10,7 @@ import pytest
 from report_rig import OVERDAMPED, VANE, identification, response_run, step_result
 
 from excitation import Limits, MultisineSettings, StepSettings, design_multisine, design_step_sequence
+from freqid.errors import EstimationError
 from freqid.estimate.identification import Identification
 from freqid.report import gain_and_phase_figure, profile_card_figure, residual_figure, ribbon_figure, svg_text
 from freqid.report.data_ribbon import ribbon_of
@@ -140,6 +141,16 @@ def test_profile_card_is_drawn_for_every_profile(kind: str, known: bool) -> None
     figure = profile_card_figure(profile, rigs, LIMITS)
     assert len(figure.axes) == (3 if known else 2)
     assert len(svg_text(figure)) < 300_000
+
+
+def test_response_without_a_usable_line_is_refused_in_words() -> None:
+    """Nothing finite to show is an error that the report turns into a sentence."""
+    found = identification()
+    empty = replace(found.response, variance=np.full(len(found.response.frequency), np.nan))
+    with pytest.raises(EstimationError, match="none is finite"):
+        gain_and_phase_figure(replace(found, response=empty))
+    with pytest.raises(EstimationError, match="has an uncertainty"):
+        residual_figure(replace(found, response=empty))
 
 
 def test_thinning_keeps_every_extreme() -> None:

@@ -9,6 +9,7 @@ import pytest
 from report_rig import STEP_TIMES, VANE, covariance, identification, step_result, step_run
 
 from freqid.quantity import coverage_factor
+from freqid.report.figure_style import svg_text
 from freqid.report.step_display import chosen_steps, curve_times, predicted_step, step_view
 from freqid.report.step_figure import step_figure_of
 from freqid.second_order import SecondOrder
@@ -97,6 +98,18 @@ def test_figure_draws_stops_only_where_the_motion_comes_near() -> None:
 
     assert "end stop" in names(25.0)
     assert "end stop" not in names(100.0)
+
+
+def test_many_samples_are_drawn_as_their_range_with_means() -> None:
+    """Twenty times the frames: one line from least to most, and means whose intervals mostly hold the truth."""
+    run, result = step_run(), step_result()
+    stamps = np.linspace(run.angle.time[0], run.angle.time[-1], 20 * len(run.angle.time))
+    noisy = np.interp(stamps, run.angle.time, run.angle.angle) + np.random.default_rng(4).normal(0, 0.3, len(stamps))
+    many = replace(run, angle=replace(run.angle, time=stamps, angle=noisy))
+    figure = step_figure_of(many, result, identification=identification())
+    words = [text.get_text() for axes in figure.axes for text in axes.texts]
+    assert "— measured, from least to most" in words and any(word.startswith("◇ means of") for word in words)
+    assert len(svg_text(figure)) < 300_000
 
 
 def test_figure_without_a_model_shows_the_measurement_alone() -> None:
