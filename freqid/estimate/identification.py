@@ -22,8 +22,8 @@ from freqid.estimate.frame_grid import FrameGrid
 from freqid.estimate.frequency_response import FrequencyResponse
 from freqid.estimate.local_polynomial import local_polynomial_response
 from freqid.estimate.model import Adequacy, IdentifiedModel
-from freqid.estimate.periodic import periodic_response, steady_noise
-from freqid.estimate.prediction import MotionParameters
+from freqid.estimate.periodic import LineRegression, periodic_response, steady_noise
+from freqid.estimate.prediction import MotionParameters, angle_only, predict
 from freqid.estimate.record import Record
 from freqid.estimate.record_fit import RecordFit, fit_record, refine
 from freqid.estimate.weighted_fit import WeightedFit, covariance_of, fit_weighted
@@ -63,7 +63,7 @@ def identify(run: Run, *, method: Method = "auto") -> Identification:
         record = replace(record, periodicity=None)
     motion = estimate_motion(record)
     record, weighted = motion.record, motion.weighted
-    response, adequacy = _response(record, weighted.fit)
+    response, adequacy = _response(motion)
     covariance = parameter_covariance(weighted)
     caveats = [*record.caveats, *motion.caveats, *response.caveats, *_sign_caveats(record, weighted.fit)]
     if np.isfinite(adequacy.p_value) and not adequacy.adequate:
@@ -107,6 +107,7 @@ class Motion:
 
     record: Record
     weighted: WeightedFit
+    lines: LineRegression | None
     caveats: tuple[Caveat, ...]
 
     @property
@@ -122,22 +123,25 @@ def estimate_motion(record: Record) -> Motion:
     delay cannot be told apart; a caveat says so.
     """
     fit = fit_record(record)
-    weighted = _with_covariance(record, fit)
-    reason = _why_hold(record, weighted)
+    motion = _weighted(record, fit)
+    reason = _why_hold(record, motion.weighted)
     if reason is None:
-        return Motion(record=record, weighted=weighted, caveats=())
+        return motion
     held = replace(record, held_delay=0.0)
     start = replace(fit.parameters, model=replace(fit.parameters.model, delay=0.0))
     starts = [trial for trial in (refine(held, start), refine(held, _sluggish(start))) if trial is not None]
     if not starts:
-        return Motion(record=record, weighted=weighted, caveats=())
+        return motion
     best = min(starts, key=lambda trial: trial.sum_of_squares)
-    return Motion(record=held, weighted=_with_covariance(held, best), caveats=(Caveat("delay_held_at_zero", reason),))
+    return replace(_weighted(held, best), caveats=(Caveat("delay_held_at_zero", reason),))
 
 
-def _with_covariance(record: Record, fit: RecordFit) -> WeightedFit:
-    noise = steady_noise(record, fit)
-    return covariance_of(record, fit) if noise is None else fit_weighted(record, fit, noise)
+def _weighted(record: Record, fit: RecordFit) -> Motion:
+    """Weighted with the noise between the harmonics where there is one, else as it is with a robust covariance."""
+    lines = None if record.periodicity is None else LineRegression.of(record, fit)
+    noise = None if lines is None else steady_noise(record, fit, lines)
+    weighted = covariance_of(record, fit) if noise is None else fit_weighted(record, fit, noise)
+    return Motion(record=record, weighted=weighted, lines=lines, caveats=())
 
 
 def _why_hold(record: Record, weighted: WeightedFit) -> str | None:
@@ -180,10 +184,11 @@ def parameter_covariance(weighted: WeightedFit) -> Floats:
     return covariance
 
 
-def _response(record: Record, fit: RecordFit) -> tuple[FrequencyResponse, Adequacy]:
+def _response(motion: Motion) -> tuple[FrequencyResponse, Adequacy]:
+    record, fit = motion.record, motion.weighted.fit
     model = fit.parameters.model
-    if record.periodicity is not None:
-        measured = periodic_response(record, fit)
+    if motion.lines is not None:
+        measured = periodic_response(record, fit, motion.lines)
         return measured, lack_of_fit(measured, model, noise_freedom=float(np.sum(measured.degrees_of_freedom)) / 4)
     measured, independent = local_polynomial_response(record, fit)
     pooled = _pool_noise(measured, independent)
@@ -220,9 +225,10 @@ def _sign_caveats(record: Record, fit: RecordFit) -> list[Caveat]:
     odd = np.all(np.round(periodicity.lines * periodicity.period) % 2 == 1)
     if odd:
         for shift in (-0.5, 0.5):
+            # the steady part is the same to the last bit, so the fit need not be repeated
             other = replace(m, gain=-m.gain, delay=m.delay + shift * periodicity.period)
-            trial = refine(record, replace(fit.parameters, model=other), evaluations=8)
-            if trial is not None and trial.sum_of_squares < fit.sum_of_squares * (1 + 10 / fit.degrees_of_freedom):
+            residual = record.angle - angle_only(record, replace(fit.parameters, model=other))
+            if residual @ residual < fit.sum_of_squares * (1 + 20 / fit.degrees_of_freedom):
                 return [
                     Caveat(
                         "sign_undetermined",

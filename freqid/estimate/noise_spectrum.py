@@ -20,6 +20,7 @@ __all__ = ["NoiseSpectrum", "noise_spectrum"]
 Floats = NDArray[np.float64]
 
 FEWEST_BINS = 20
+MOST_BINS = 60  # of a smoothing window: 120 degrees of freedom, yet narrow enough for coloured noise
 LARGEST_SHARE = 8  # a smoothing window holds at most an eighth of the bins
 
 
@@ -66,7 +67,7 @@ def noise_spectrum(
     index = np.flatnonzero(usable)
     if len(index) < FEWEST_BINS:
         raise ValueError(f"only {len(index)} bins free of the excitation; {FEWEST_BINS} are needed")
-    half = int(np.clip(len(index) // LARGEST_SHARE, FEWEST_BINS, 200)) // 2
+    half = int(np.clip(len(index) // LARGEST_SHARE, FEWEST_BINS, MOST_BINS)) // 2
     total = np.concatenate([[0.0], np.cumsum(power[index])])
     centre = np.searchsorted(index, np.arange(len(frequency)))
     low = np.clip(centre - half, 0, max(len(index) - 2 * half, 0))

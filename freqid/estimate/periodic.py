@@ -10,6 +10,8 @@ Source: Pintelon & Schoukens, *System Identification*, 2nd ed. 2012, ch. 2 and 4
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -23,10 +25,11 @@ from freqid.held_response import Drive, free_decay
 from freqid.quantity import Caveat
 from freqid.records import Periodicity
 
-__all__ = ["line_amplitudes", "periodic_response", "steady_noise"]
+__all__ = ["LineRegression", "line_amplitudes", "periodic_response", "steady_noise"]
 
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
+FULLEST = 0.8  # of the frames: more columns than this leave no noise to judge by
 
 
 def line_amplitudes(drive: Drive, periodicity: Periodicity) -> Complexes:
@@ -56,8 +59,67 @@ def line_amplitudes(drive: Drive, periodicity: Periodicity) -> Complexes:
     )
 
 
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class LineRegression:
+    """The steady frames and the basis they are regressed on, ready for any residual of the same record.
+
+    `inside` (N,) marks the steady frames, `basis` (S, P) has a cosine and a minus sine column for each of the F lines, then the
+    nuisances; `inverse` (P, P) is the inverse of basis' basis; `lag` the lag (s) that the basis' time was shifted by;
+    `periods` whole periods are covered.
+    """
+
+    periodicity: Periodicity
+    inside: NDArray[np.bool_]
+    basis: Floats
+    inverse: Floats
+    lag: float
+    clock_ratio: float
+    periods: int
+
+    @classmethod
+    def of(cls, record: Record, fit: RecordFit) -> LineRegression:
+        """Set up from a fit; raises EstimationError where the frames are too few or cover less than one period."""
+        periodicity = record.periodicity
+        if periodicity is None:
+            raise EstimationError("the excitation is not known to be periodic: use --method local-polynomial")
+        inside, time, periods = _steady(record, fit, periodicity)
+        basis = _basis(fit, periodicity, inside, time)
+        count, width = basis.shape
+        if width > FULLEST * count:
+            raise EstimationError(
+                f"{count} frames cannot carry {len(periodicity.lines)} lines: fewer lines (narrower band, odd grid) or a "
+                "longer record"
+            )
+        scale = np.sqrt(np.sum(basis**2, axis=0))
+        gram = basis.T @ basis / np.outer(scale, scale)
+        inverse = np.linalg.inv(gram + 1e-12 * np.eye(width)) / np.outer(scale, scale)
+        return cls(
+            periodicity=periodicity,
+            inside=inside,
+            basis=basis,
+            inverse=inverse,
+            lag=fit.parameters.model.delay,
+            clock_ratio=fit.parameters.clock_ratio,
+            periods=periods,
+        )
+
+    def coefficients(self, residual: Floats) -> Floats:
+        """Least-squares coefficients (P,) of a residual (N,) of the whole record."""
+        return np.asarray(self.inverse @ (self.basis.T @ residual[self.inside]))
+
+    def rest(self, residual: Floats) -> Floats:
+        """What the basis leaves of a residual, at the steady frames (S,)."""
+        return np.asarray(residual[self.inside] - self.basis @ self.coefficients(residual))
+
+    @property
+    def spread(self) -> Floats:
+        """Variance of each complex line amplitude (F,) for noise of variance one."""
+        n, diagonal = len(self.periodicity.lines), np.diag(self.inverse)
+        return np.asarray(diagonal[:n] + diagonal[n : 2 * n])
+
+
 def _steady(record: Record, fit: RecordFit, periodicity: Periodicity) -> tuple[NDArray[np.bool_], Floats, int]:
-    """Frames of the steady part, their time on the input's clock, and the number of whole periods they cover."""
+    """Frames of the steady part, the time of all frames on the input's clock, and the whole periods they cover."""
     p = fit.parameters
     time = p.clock_ratio * record.stamp - p.model.delay
     first = max(periodicity.start, float(time[0]) - record.frame_interval)
@@ -72,64 +134,40 @@ def _steady(record: Record, fit: RecordFit, periodicity: Periodicity) -> tuple[N
     return inside, time, periods
 
 
-def steady_noise(record: Record, fit: RecordFit) -> NoiseSpectrum | None:
+def steady_noise(record: Record, fit: RecordFit, lines: LineRegression) -> NoiseSpectrum | None:
     """Noise level between the harmonics of a periodic excitation, independent of any model; None if there is none."""
-    periodicity = record.periodicity
-    if periodicity is None:
-        return None
-    inside, time, periods = _steady(record, fit, periodicity)
-    basis, _ = _basis(record, fit, periodicity, inside, time)
-    if basis.shape[1] > 0.8 * inside.sum():
-        return None
-    residual = fit.residual[inside]
-    rest = residual - basis @ np.linalg.lstsq(basis, residual, rcond=None)[0]
-    grid = FrameGrid.from_stamps(record.stamp[inside])
+    period, periods = lines.periodicity.period, lines.periods
+    grid = FrameGrid.from_stamps(record.stamp[lines.inside])
     top = 0.5 / record.frame_interval
     if periods >= 2:
         # every harmonic of the period is left out, excited or not: distortion sits there
-        known = np.arange(1, int(top * periodicity.period) + 2) / periodicity.period
+        known = np.arange(1, int(top * period) + 2) / period
     else:
-        known = periodicity.lines
-    folded = np.abs((known + top) % (2 * top) - top)
+        known = lines.periodicity.lines
+    folded = np.abs((known * lines.clock_ratio + top) % (2 * top) - top)
     try:
         return noise_spectrum(
-            rest,
+            lines.rest(fit.residual),
             grid,
-            parameters=basis.shape[1],
-            harmonic=(fit.parameters.clock_ratio / (periods * periodicity.period), folded),
+            parameters=lines.basis.shape[1],
+            harmonic=(lines.clock_ratio / (periods * period), folded),
         )
     except ValueError:
         return None
 
 
-def periodic_response(record: Record, fit: RecordFit) -> FrequencyResponse:
-    """Response at the excited lines with its variance.
-
-    Raises EstimationError where the frames are too few for the lines or cover less than one period.
-    """
-    periodicity = record.periodicity
-    if periodicity is None:
-        raise EstimationError("the excitation is not known to be periodic: use --method local-polynomial")
-    inside, time, periods = _steady(record, fit, periodicity)
-    basis, n_lines = _basis(record, fit, periodicity, inside, time)
-    count = int(inside.sum())
-    if basis.shape[1] > 0.8 * count:
-        raise EstimationError(
-            f"{count} frames cannot carry {n_lines} lines: fewer lines (narrower band, odd grid) or a longer record"
-        )
-    scale = np.sqrt(np.sum(basis**2, axis=0))
-    coefficient, *_ = np.linalg.lstsq(basis / scale, fit.residual[inside], rcond=None)
-    coefficient = coefficient / scale
-    inverse = np.diag(np.linalg.pinv((basis / scale).T @ (basis / scale))) / scale**2
-    amplitude = coefficient[:n_lines] + 1j * coefficient[n_lines : 2 * n_lines]
-    spread = inverse[:n_lines] + inverse[n_lines : 2 * n_lines]
-    f = periodicity.lines
-    noise = steady_noise(record, fit)
+def periodic_response(record: Record, fit: RecordFit, lines: LineRegression) -> FrequencyResponse:
+    """Response at the excited lines with its variance, from what `fit` left over."""
+    f = lines.periodicity.lines
+    n = len(f)
+    coefficient = lines.coefficients(fit.residual)
+    amplitude = coefficient[:n] + 1j * coefficient[n : 2 * n]
+    noise = steady_noise(record, fit, lines)
     caveats: tuple[Caveat, ...] = ()
     if noise is None:
-        rest = fit.residual[inside] - basis @ coefficient
-        degrees = count - basis.shape[1]
-        level, freedom = np.full(n_lines, rest @ rest / degrees), np.full(n_lines, float(degrees))
+        rest = lines.rest(fit.residual)
+        degrees = lines.basis.shape[0] - lines.basis.shape[1]
+        level, freedom = np.full(n, rest @ rest / degrees), np.full(n, float(degrees))
         caveats = (
             Caveat(
                 "noise_assumed_white",
@@ -137,19 +175,18 @@ def periodic_response(record: Record, fit: RecordFit) -> FrequencyResponse:
             ),
         )
     else:
-        level, freedom = noise.at(f)
-    p = fit.parameters
+        level, freedom = noise.at(f * lines.clock_ratio)
     exposure = np.sinc(f * record.exposure) * np.exp(-1j * np.pi * f * record.exposure)
-    drive = line_amplitudes(record.drive, periodicity)
+    drive = line_amplitudes(record.drive, lines.periodicity)
     transfer = drive * exposure
-    variance_of_line = level * spread
-    response = p.model.response(f) + amplitude / transfer * np.exp(-2j * np.pi * f * p.model.delay)
+    variance_of_line = level * lines.spread
+    response = fit.parameters.model.response(f) + amplitude / transfer * np.exp(-2j * np.pi * f * lines.lag)
     signal = np.abs(response * transfer)
     return FrequencyResponse(
         frequency=f,
         response=response,
         variance=variance_of_line / np.abs(transfer) ** 2,
-        coherence=signal**2 / (signal**2 + periods * variance_of_line),
+        coherence=signal**2 / (signal**2 + lines.periods * variance_of_line),
         noise=np.sqrt(variance_of_line),
         input_amplitude=np.abs(drive),
         degrees_of_freedom=freedom,
@@ -159,17 +196,15 @@ def periodic_response(record: Record, fit: RecordFit) -> FrequencyResponse:
     )
 
 
-def _basis(
-    record: Record, fit: RecordFit, periodicity: Periodicity, inside: NDArray[np.bool_], time: Floats
-) -> tuple[Floats, int]:
+def _basis(fit: RecordFit, periodicity: Periodicity, inside: NDArray[np.bool_], time: Floats) -> Floats:
     """Columns: cosine and minus sine of every line, rest, drift, two free decays, clock ratio."""
     t = time[inside]
     m = fit.parameters.model
-    argument = 2 * np.pi * np.outer(t, periodicity.lines)
+    turning = np.exp(2j * np.pi * np.outer(t, periodicity.lines))
     span = t[-1] - t[0]
     decay = free_decay(2 * np.pi * m.natural_frequency, m.damping_ratio, t - t[0])
-    columns = [np.cos(argument), -np.sin(argument), np.ones((len(t), 1)), ((t - t.mean()) / span)[:, None], decay]
+    columns = [turning.real, -turning.imag, np.ones((len(t), 1)), ((t - t.mean()) / span)[:, None], decay]
     if 4 in fit.prediction.free:
         ratio = fit.prediction.jacobian[inside][:, fit.prediction.free.index(4)]
         columns.append(ratio[:, None])
-    return np.concatenate(columns, axis=1), len(periodicity.lines)
+    return np.concatenate(columns, axis=1)

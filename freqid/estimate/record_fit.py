@@ -25,6 +25,7 @@ from freqid.second_order import SecondOrder
 __all__ = ["RecordFit", "fit_record", "refine"]
 
 Floats = NDArray[np.float64]
+WELL_EXPLAINED = 0.98  # no other basin can be better than this by more than noise
 TRIAL_EVALUATIONS = 12  # enough to tell the basins of several starts apart
 
 
@@ -67,6 +68,8 @@ def fit_record(record: Record, *, starts: list[Candidate] | None = None) -> Reco
         trial = refine(record, start, evaluations=TRIAL_EVALUATIONS)
         if trial is not None:
             trials.append(trial)
+            if trial.explained > WELL_EXPLAINED:
+                break
     trials.sort(key=lambda fit: fit.sum_of_squares)
     best = refine(record, trials[0].parameters) if trials else None
     if best is None:

@@ -10,13 +10,13 @@ Source: matched filter (North 1943), the maximum-likelihood lag of a known wavef
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.fft import next_fast_len
 
 from freqid.estimate.record import Record
-from freqid.held_response import Drive, HeldResponse
 from freqid.second_order import SecondOrder
 
 __all__ = ["Candidate", "starting_values"]
@@ -85,18 +85,27 @@ def _distinct(found: list[Candidate], count: int) -> list[Candidate]:
 
 
 class _Bank:
-    """The record on a uniform grid and its spectrum, ready to be correlated with many rigs."""
+    """The record on a uniform grid and its spectrum, ready to be correlated with many rigs.
+
+    Shapes are made in the frequency domain: the drive, averaged over the steps of the grid, times the rig's response. The
+    averaging is divided out again; the drive is taken as returning to rest after its end (far enough off by zero padding).
+    """
 
     def __init__(self, record: Record, highest: float) -> None:
         self._record = record
         self._step = max(record.frame_interval, 1 / (POINTS_PER_PERIOD * highest))
-        self._drive = _coarse(record.drive, self._step)
         self._angle = record.angle - np.mean(record.angle)
         self._span = float(record.stamp[-1] - record.stamp[0])
         begin = float(record.stamp[0]) if record.common_clock else record.drive.start
         end = float(record.stamp[-1]) if record.common_clock else record.drive.stop + min(self._span, 5.0)
         self._grid = begin + self._step * np.arange(int((end - begin) / self._step) + 1)
-        self._spectra: dict[float, Floats] = {}
+        longest = int(self._span * (1 + LARGEST_RATIO_ERROR) / self._step) + 1
+        self._size = next_fast_len(len(self._grid) + longest, real=True)
+        averaged = record.drive.mean(self._grid, self._step)
+        self._frequency = np.fft.rfftfreq(self._size, self._step)
+        average = np.sinc(self._frequency * self._step) * np.exp(-1j * np.pi * self._frequency * self._step)
+        self._drive = np.fft.rfft(averaged, self._size) / average
+        self._spectra: dict[float, NDArray[np.complex128]] = {}
         self._energy = float(np.sum(self._resampled(1.0) ** 2))
 
     def _resampled(self, ratio: float) -> Floats:
@@ -106,42 +115,39 @@ class _Bank:
 
     def match(self, frequency: float, damping: float, ratio: float) -> list[Candidate]:
         """The two best lags of one rig."""
-        shape = HeldResponse(self._drive, frequency, damping).at(self._grid)
+        unit = SecondOrder(gain=1.0, natural_frequency=frequency, damping_ratio=damping)
+        shape = np.fft.irfft(self._drive * unit.response(self._frequency), self._size)[: len(self._grid)]
         shape = shape - np.mean(shape)
         own = float(np.sum(shape**2))
-        angle = self._resampled(ratio)
-        n = len(shape) + len(angle)
-        size = 1 << (n - 1).bit_length()
         if ratio not in self._spectra:
-            self._spectra[ratio] = np.fft.rfft(angle, size)
-        correlation = np.fft.irfft(self._spectra[ratio] * np.conj(np.fft.rfft(shape, size)), size)
-        # index j >= 0: the shape moved j steps later on the angle's grid; negative ones wrap around
-        lags = np.concatenate([np.arange(len(angle)), np.arange(size - len(shape) + 1, size)])
-        if self._record.common_clock:
-            longest = max(int(0.25 * len(angle)), 1)
-            lags = np.concatenate([np.arange(longest), [size - 2, size - 1]])
+            self._spectra[ratio] = np.fft.rfft(self._resampled(ratio), self._size)
+        correlation = np.fft.irfft(self._spectra[ratio] * np.conj(np.fft.rfft(shape, self._size)), self._size)
+        lags = self._lags(int(self._span * ratio / self._step) + 1)
         strength = np.abs(correlation[lags])
         results = []
         for _ in range(2):
             best = int(lags[np.argmax(strength)])
-            moved = (best if best < size // 2 else best - size) * self._step
-            # the shape's grid begins at grid[0] of the drive's clock, the angle's at ratio * stamp[0]
-            lag = moved + ratio * self._record.stamp[0] - self._grid[0]
-            gain = correlation[best] / own
-            explained = correlation[best] ** 2 / (own * self._energy)
-            results.append(
-                Candidate(
-                    model=SecondOrder(
-                        gain=float(gain), natural_frequency=frequency, damping_ratio=damping, delay=float(lag)
-                    ),
-                    clock_ratio=ratio,
-                    explained=float(explained),
-                )
-            )
+            results.append(self._candidate(unit, ratio, best, correlation[best] / own, own))
             exclude = max(int(0.1 / frequency / self._step), 1)
             distance = np.abs(lags - best)
-            strength = np.where(np.minimum(distance, size - distance) <= exclude, 0.0, strength)
+            strength = np.where(np.minimum(distance, self._size - distance) <= exclude, 0.0, strength)
         return results
+
+    def _lags(self, n_angle: int) -> NDArray[np.intp]:
+        """Lags in steps to look at; j means the shape moved j steps later on the angle's grid, negative ones wrap."""
+        if self._record.common_clock:
+            return np.concatenate([np.arange(max(n_angle // 4, 1)), [self._size - 2, self._size - 1]])
+        return np.concatenate([np.arange(n_angle), np.arange(self._size - len(self._grid) + 1, self._size)])
+
+    def _candidate(self, unit: SecondOrder, ratio: float, best: int, gain: float, own: float) -> Candidate:
+        moved = (best if best < self._size // 2 else best - self._size) * self._step
+        # the shape's grid begins at grid[0] of the drive's clock, the angle's at ratio * stamp[0]
+        lag = moved + ratio * self._record.stamp[0] - self._grid[0]
+        return Candidate(
+            model=replace(unit, gain=float(gain), delay=float(lag)),
+            clock_ratio=ratio,
+            explained=float(gain**2 * own / self._energy),
+        )
 
     def match_ratios(self, candidate: Candidate) -> list[Candidate]:
         """The same rig at clock ratios so spaced that a tenth of its cycle slips between them over the record."""
@@ -150,20 +156,7 @@ class _Bank:
         if spacing > LARGEST_RATIO_ERROR:
             return []
         steps = int(LARGEST_RATIO_ERROR / spacing) + 1
+        ratios = (1 + k * spacing for k in range(-steps, steps + 1) if k)
         return [
-            self.match(m.natural_frequency, m.damping_ratio, 1 + k * spacing)[0]
-            for k in range(-steps, steps + 1)
-            if k
+            self.match(m.natural_frequency, m.damping_ratio, r)[0] for r in ratios if abs(r - 1) <= LARGEST_RATIO_ERROR
         ]
-
-
-def _coarse(drive: Drive, step: float) -> Drive:
-    """The drive averaged to some four points a step of the grid; enough for a start."""
-    factor = int(step / drive.interval / 4)
-    if factor < 2:
-        return drive
-    n = len(drive.value) // factor
-    value = drive.value[: n * factor].reshape(n, factor).mean(axis=1)
-    return Drive.from_samples(
-        np.concatenate([[0.0], value[1:]]), start=drive.start, interval=drive.interval * factor, smooth=False
-    )
