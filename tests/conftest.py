@@ -1,7 +1,7 @@
 """Where do the tests find the open data, and what do the estimators' tests drive the vane with?
 
-Open data: in `FREQID_OPEN_DATA`, else in `../shared/open_data` beside the checkout. The excitations are short, so that a
-whole estimate takes a fraction of a second.
+Open data: in `FREQID_OPEN_DATA`, else in `../shared/open_data` beside the checkout. The excitations are short, so
+that a whole estimate takes a fraction of a second.
 """
 
 from __future__ import annotations
@@ -48,7 +48,13 @@ def short_multisine(vane_model: SecondOrder) -> InputStream:
     """Three periods of 4 s, odd lines from 0.75 to 7.75 Hz, rests at both ends: 16 s of staircase at 500 Hz."""
     limits = Limits(voltage=5.0, slew_rate=500.0, angle=30.0)
     settings = MultisineSettings(
-        band=(0.5, 8.0), duration=17.0, sample_rate=500.0, limits=limits, rigs=(vane_model,), phases="schroeder", period=4.0
+        band=(0.5, 8.0),
+        duration=17.0,
+        sample_rate=500.0,
+        limits=limits,
+        rigs=(vane_model,),
+        phases="schroeder",
+        period=4.0,
     )
     return input_from_profile(design_multisine(settings))
 
@@ -74,7 +80,9 @@ def short_steps(vane_model: SecondOrder) -> InputStream:
 def recorded() -> Callable[..., Run]:
     """A function that drives a model and records it: 60 frames/s on a common clock, without noise, unless told."""
 
-    def record(drive: InputStream, model: SecondOrder, *, seed: int = 0, rest_angle: float = 0.0, **sensor: object) -> Run:
+    def record(
+        drive: InputStream, model: SecondOrder, *, seed: int = 0, rest_angle: float = 0.0, **sensor: object
+    ) -> Run:
         facts: dict[str, object] = {"sample_rate": 60.0, "exposure": 0.0, "common_clock": True, **sensor}
         rig = SimulatedRig(model=model, sensor=SimulatedSensor(**facts), rest_angle=rest_angle)  # type: ignore[arg-type]
         return rig.run(drive, kind="response", name=f"seed {seed}", rng=np.random.default_rng(seed))
