@@ -6,7 +6,7 @@ When nothing common to both logs was recorded, the offset cannot be told from th
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
@@ -23,7 +23,7 @@ class ClockMap:
 
     `ratio_ppm` is (ratio - 1) in parts per million. `lag` is what the records themselves show: delay - offset.
     `lost_at` (L,) are the stamps just before each gap, `lost_frames` how many frames fell into the gaps;
-    `jitter` is the rms deviation of the stamps from a uniform grid in s; `repeated_stamps` counts stamps equal to the one before.
+    `outlier_at` are the stamps of the samples left out, `silently_lost_at` those after losses without a gap. `jitter` is the rms deviation of the stamps from a uniform grid in s; `repeated_stamps` counts stamps equal to the one before.
     """
 
     ratio_ppm: Quantity
@@ -35,6 +35,8 @@ class ClockMap:
     jitter: float = in_unit("s")
     repeated_stamps: int = 0
     frames: int = 0
+    outlier_at: NDArray[np.float64] = field(default_factory=lambda: np.empty(0), metadata={"unit": "s"})
+    silently_lost_at: NDArray[np.float64] = field(default_factory=lambda: np.empty(0), metadata={"unit": "s"})
 
     def as_json(self) -> dict[str, Any]:
         """The form of "clock" in results/model.json."""
@@ -47,8 +49,11 @@ class ClockMap:
             "frame_interval": self.frame_interval,
             "stamp_jitter": self.jitter,
             "repeated_stamps": self.repeated_stamps,
-            "lost_at": [float(v) for v in self.lost_at],
+            "lost_at": self.lost_at.tolist(),
+            "outlier_at": self.outlier_at.tolist(),
+            "silently_lost_at": self.silently_lost_at.tolist(),
         }
+
     @classmethod
     def from_json(cls, data: dict[str, Any]) -> ClockMap:
         """Back from the form of results/model.json."""
@@ -64,4 +69,6 @@ class ClockMap:
             jitter=data["stamp_jitter"],
             repeated_stamps=data["repeated_stamps"],
             frames=data["frames"],
+            outlier_at=np.array(data["outlier_at"]),
+            silently_lost_at=np.array(data["silently_lost_at"]),
         )

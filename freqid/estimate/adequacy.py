@@ -2,8 +2,9 @@
 
     statistic = min over d of  sum 2 |G_measured - G_model - S d|^2 / variance,     S the model's sensitivity
 
-is chi-square with 2 F - 4 degrees of freedom where the model is true (F complex points, four parameters). As the variances are
-themselves estimates, its mean square is referred to Fisher's F with the degrees of freedom of the noise.
+is chi-square with 2 F - 4 degrees of freedom where the model is true (F complex points, four parameters). As each variance is
+itself an estimate with v degrees of freedom, each term is (v - 2) / v smaller than it looks (E[1 / chi-square] of v), and the mean
+square is referred to Fisher's F with all degrees of freedom of the noise.
 Source: N. Draper & H. Smith, *Applied Regression Analysis*, 3rd ed. 1998, ch. 2; Pintelon & Schoukens 2012, ch. 11.
 """
 
@@ -37,7 +38,10 @@ def lack_of_fit(
 
     use = np.ones(len(measured.frequency), dtype=bool) if use is None else use
     misfit = whitened_misfit(measured, model)[use]
-    weight = 1 / np.sqrt(measured.variance[use] / 2)
+    freedom = np.maximum(measured.degrees_of_freedom[use], 3.0)
+    shrink = np.sqrt((freedom - 2) / freedom)
+    misfit = misfit * shrink
+    weight = shrink / np.sqrt(measured.variance[use] / 2)
     slope = model.sensitivity(measured.frequency[use]) * weight[:, None] * np.maximum(np.abs(model.vector), 1e-9)
     design = np.concatenate([slope.real, slope.imag])
     target = np.concatenate([misfit.real, misfit.imag])

@@ -9,7 +9,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from typing import Literal
 
 import numpy as np
@@ -22,10 +22,12 @@ from freqid.estimate.frame_grid import FrameGrid
 from freqid.estimate.frequency_response import FrequencyResponse
 from freqid.estimate.local_polynomial import local_polynomial_response
 from freqid.estimate.model import Adequacy, IdentifiedModel
+from freqid.estimate.outliers import without_outliers
 from freqid.estimate.periodic import LineRegression, periodic_response, steady_noise
 from freqid.estimate.prediction import MotionParameters, angle_only, predict
 from freqid.estimate.record import Record
 from freqid.estimate.record_fit import RecordFit, fit_record, refine
+from freqid.estimate.silent_losses import with_silent_losses
 from freqid.estimate.weighted_fit import WeightedFit, covariance_of, fit_weighted
 from freqid.quantity import Caveat, Quantity
 from freqid.records import Run
@@ -36,6 +38,7 @@ Floats = NDArray[np.float64]
 Method = Literal["auto", "periodic", "local-polynomial"]
 
 POORLY_EXPLAINED = 0.5
+POOLED = 4  # independent points on either side that share their noise estimate
 RIDGE = 0.5  # relative uncertainty of the natural frequency beyond which it is not determined
 
 
@@ -84,7 +87,7 @@ def identify(run: Run, *, method: Method = "auto") -> Identification:
         degrees_of_freedom=weighted.degrees_of_freedom,
         angle_unit=record.angle_unit,
         adequacy=adequacy,
-        clock=clock_map(record, run, weighted),
+        clock=clock_map(run, motion),
         explained=weighted.fit.explained,
         caveats=(*caveats, *clock_caveats(record)),
         undetermined=motion.undetermined,
@@ -108,7 +111,9 @@ class Motion:
     record: Record
     weighted: WeightedFit
     lines: LineRegression | None
-    caveats: tuple[Caveat, ...]
+    caveats: tuple[Caveat, ...] = ()
+    outlier_at: Floats = field(default_factory=lambda: np.empty(0))
+    silently_lost_at: Floats = field(default_factory=lambda: np.empty(0))
 
     @property
     def undetermined(self) -> tuple[str, ...]:
@@ -122,8 +127,10 @@ def estimate_motion(record: Record) -> Motion:
     On a common clock the delay is held at zero where the best one would be negative, or where a fast pole and the
     delay cannot be told apart; a caveat says so.
     """
-    fit = fit_record(record)
-    motion = _weighted(record, fit)
+    record, fit, outlier_at, lost_at = _cleaned(record, fit_record(record))
+    cleaned = {"outlier_at": outlier_at, "silently_lost_at": lost_at}
+    told = _cleaning_caveats(outlier_at, lost_at)
+    motion = replace(_weighted(record, fit), caveats=told, **cleaned)
     reason = _why_hold(record, motion.weighted)
     if reason is None:
         return motion
@@ -133,7 +140,46 @@ def estimate_motion(record: Record) -> Motion:
     if not starts:
         return motion
     best = min(starts, key=lambda trial: trial.sum_of_squares)
-    return replace(_weighted(held, best), caveats=(Caveat("delay_held_at_zero", reason),))
+    return replace(_weighted(held, best), caveats=(*told, Caveat("delay_held_at_zero", reason)), **cleaned)
+
+
+def _cleaned(record: Record, fit: RecordFit) -> tuple[Record, RecordFit, Floats, Floats]:
+    """Outliers left out, silently lost frames put back into the stamps; the instants of both."""
+    if record.same_rows:
+        return *without_outliers(record, fit), np.empty(0)
+    timed, timed_fit, lost_at = with_silent_losses(record, fit)
+    timed, timed_fit, outlier_at = without_outliers(timed, timed_fit)
+    if len(outlier_at):
+        # without the outliers a loss shows more sharply
+        timed, timed_fit, more = with_silent_losses(timed, timed_fit)
+        lost_at = np.sort(np.concatenate([lost_at, more]))
+    return timed, timed_fit, outlier_at, lost_at
+
+
+def _cleaning_caveats(outlier_at: Floats, lost_at: Floats) -> tuple[Caveat, ...]:
+    found = []
+    if len(outlier_at):
+        found.append(
+            Caveat(
+                "outliers_left_out",
+                f"{len(outlier_at)} angle samples stand more than six standard deviations off and were left out, at stamps "
+                f"{_instants(outlier_at)}.",
+            )
+        )
+    if len(lost_at):
+        found.append(
+            Caveat(
+                "frames_silently_lost",
+                f"{len(lost_at)} times frames were lost without a gap in the stamps; the later stamps were moved, from "
+                f"{_instants(lost_at)} on.",
+            )
+        )
+    return tuple(found)
+
+
+def _instants(times: Floats) -> str:
+    shown = ", ".join(f"{t:.2f}" for t in times[:6])
+    return f"{shown}{', ...' if len(times) > 6 else ''} s"
 
 
 def _weighted(record: Record, fit: RecordFit) -> Motion:
@@ -188,8 +234,8 @@ def _response(motion: Motion) -> tuple[FrequencyResponse, Adequacy]:
     record, fit = motion.record, motion.weighted.fit
     model = fit.parameters.model
     if motion.lines is not None:
-        measured = periodic_response(record, fit, motion.lines)
-        return measured, lack_of_fit(measured, model, noise_freedom=float(np.sum(measured.degrees_of_freedom)) / 4)
+        measured, freedom = periodic_response(record, fit, motion.lines)
+        return measured, lack_of_fit(measured, model, noise_freedom=freedom)
     measured, independent = local_polynomial_response(record, fit)
     pooled = _pool_noise(measured, independent)
     freedom = float(np.sum(measured.degrees_of_freedom[independent]))
@@ -197,13 +243,16 @@ def _response(motion: Motion) -> tuple[FrequencyResponse, Adequacy]:
 
 
 def _pool_noise(measured: FrequencyResponse, independent: NDArray[np.bool_]) -> FrequencyResponse:
-    """Noise of each point averaged with two independent neighbours on either side: nine degrees of freedom are few."""
+    """Noise of each point averaged with its independent neighbours: nine complex degrees of freedom are few."""
     power = measured.noise[independent] ** 2
-    padded = np.pad(power, 2, mode="reflect") if len(power) > 2 else np.pad(power, 2, mode="edge")
-    smooth = np.convolve(padded, np.full(5, 0.2), mode="valid")
-    variance = measured.variance.copy()
+    total = np.concatenate([[0.0], np.cumsum(power)])
+    order = np.arange(len(power))
+    low, high = np.maximum(order - POOLED, 0), np.minimum(order + POOLED + 1, len(power))
+    smooth = (total[high] - total[low]) / (high - low)
+    variance, freedom = measured.variance.copy(), measured.degrees_of_freedom.copy()
     variance[independent] *= smooth / power
-    return replace(measured, variance=variance)
+    freedom[independent] *= high - low
+    return replace(measured, variance=variance, degrees_of_freedom=freedom)
 
 
 def _inadequate(adequacy: Adequacy) -> Caveat:
@@ -241,8 +290,9 @@ def _sign_caveats(record: Record, fit: RecordFit) -> list[Caveat]:
     return []
 
 
-def clock_map(record: Record, run: Run, weighted: WeightedFit) -> ClockMap:
+def clock_map(run: Run, motion: Motion) -> ClockMap:
     """What the fit and the stamps say about the two clocks."""
+    record, weighted = motion.record, motion.weighted
     grid = FrameGrid.from_stamps(run.angle.time[np.isfinite(run.angle.time)])
     free = weighted.fit.prediction.free
     p = weighted.fit.parameters
@@ -263,6 +313,8 @@ def clock_map(record: Record, run: Run, weighted: WeightedFit) -> ClockMap:
         jitter=grid.jitter,
         repeated_stamps=int(np.sum(np.diff(stamps) == 0)),
         frames=len(stamps),
+        outlier_at=motion.outlier_at,
+        silently_lost_at=motion.silently_lost_at,
     )
 
 

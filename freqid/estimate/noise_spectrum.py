@@ -31,6 +31,13 @@ class NoiseSpectrum:
     frequency: Floats
     level: Floats
     degrees_of_freedom: Floats
+    usable: NDArray[np.bool_]
+
+    def freedom_between(self, low: float, high: float) -> float:
+        """Real degrees of freedom of all used bins that levels between two frequencies rest on."""
+        half = self.degrees_of_freedom[0] / 4 * self.frequency[1]
+        within = (self.frequency >= low - half) & (self.frequency <= high + half)
+        return 2.0 * max(int(np.sum(self.usable & within)), FEWEST_BINS)
 
     def at(self, frequency: Floats) -> tuple[Floats, Floats]:
         """Level and degrees of freedom at other frequencies; those above half the frame rate fold back."""
@@ -43,21 +50,19 @@ class NoiseSpectrum:
 
 
 def noise_spectrum(
-    residual: Floats, grid: FrameGrid, *, parameters: int, harmonic: tuple[float, Floats] | None = None
+    residual: Floats, grid: FrameGrid, *, fitted: Floats, harmonic: tuple[float, Floats] | None = None
 ) -> NoiseSpectrum:
     """Smoothed noise level of `residual` (N,) on `grid`.
 
-    `parameters` is how many were fitted. `harmonic` is (resolution in Hz, frequencies (H,) Hz to leave out): bins closer than half
+    `fitted` (N, P) are the columns that were fitted: what they took out of each bin is put back. `harmonic` is (resolution in Hz, frequencies (H,) Hz to leave out): bins closer than half
     the resolution to one of them are not used. Raises ValueError where fewer than `FEWEST_BINS` bins are left.
     """
     power = np.abs(grid.spectrum(residual)) ** 2 * grid.size / len(residual)
+    left = 1 - _leverage(fitted, grid)
     frequency = grid.frequency
     usable = np.ones(len(frequency), dtype=bool)
     usable[0] = False
-    scale = 1.0
-    if harmonic is None:
-        scale = len(residual) / max(len(residual) - parameters, 1)
-    else:
+    if harmonic is not None:
         resolution, lines = harmonic
         order = np.sort(lines)
         above = np.clip(np.searchsorted(order, frequency), 0, len(order) - 1)
@@ -68,11 +73,21 @@ def noise_spectrum(
     if len(index) < FEWEST_BINS:
         raise ValueError(f"only {len(index)} bins free of the excitation; {FEWEST_BINS} are needed")
     half = int(np.clip(len(index) // LARGEST_SHARE, FEWEST_BINS, MOST_BINS)) // 2
-    total = np.concatenate([[0.0], np.cumsum(power[index])])
+    total, share = (np.concatenate([[0.0], np.cumsum(v[index])]) for v in (power, left))
     centre = np.searchsorted(index, np.arange(len(frequency)))
     low = np.clip(centre - half, 0, max(len(index) - 2 * half, 0))
     high = np.minimum(low + 2 * half, len(index))
-    level = scale * (total[high] - total[low]) / (high - low)
+    level = (total[high] - total[low]) / np.maximum(share[high] - share[low], 0.1 * (high - low))
     return NoiseSpectrum(
-        frequency=frequency, level=np.maximum(level, 1e-300), degrees_of_freedom=2.0 * (high - low)
+        frequency=frequency,
+        level=np.maximum(level, 1e-300),
+        degrees_of_freedom=2.0 * (high - low),
+        usable=usable,
     )
+
+
+def _leverage(fitted: Floats, grid: FrameGrid) -> Floats:
+    """Share of each bin's power that least squares on the columns `fitted` takes out of white noise (0 to 1)."""
+    orthonormal, _ = np.linalg.qr(fitted / np.linalg.norm(fitted, axis=0))
+    spectrum = grid.spectrum(orthonormal)
+    return np.asarray(np.minimum(np.sum(np.abs(spectrum) ** 2, axis=1) * grid.size / len(fitted), 1.0))

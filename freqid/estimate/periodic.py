@@ -149,15 +149,20 @@ def steady_noise(record: Record, fit: RecordFit, lines: LineRegression) -> Noise
         return noise_spectrum(
             lines.rest(fit.residual),
             grid,
-            parameters=lines.basis.shape[1],
+            fitted=lines.basis,
             harmonic=(lines.clock_ratio / (periods * period), folded),
         )
     except ValueError:
         return None
 
 
-def periodic_response(record: Record, fit: RecordFit, lines: LineRegression) -> FrequencyResponse:
-    """Response at the excited lines with its variance, from what `fit` left over."""
+def periodic_response(
+    record: Record, fit: RecordFit, lines: LineRegression
+) -> tuple[FrequencyResponse, float]:
+    """Response at the excited lines with its variance, from what `fit` left over.
+
+    Also how many real degrees of freedom the noise of all lines together rests on.
+    """
     f = lines.periodicity.lines
     n = len(f)
     coefficient = lines.coefficients(fit.residual)
@@ -168,6 +173,7 @@ def periodic_response(record: Record, fit: RecordFit, lines: LineRegression) -> 
         rest = lines.rest(fit.residual)
         degrees = lines.basis.shape[0] - lines.basis.shape[1]
         level, freedom = np.full(n, rest @ rest / degrees), np.full(n, float(degrees))
+        in_all = float(degrees)
         caveats = (
             Caveat(
                 "noise_assumed_white",
@@ -176,13 +182,14 @@ def periodic_response(record: Record, fit: RecordFit, lines: LineRegression) -> 
         )
     else:
         level, freedom = noise.at(f * lines.clock_ratio)
+        in_all = noise.freedom_between(float(f[0]), float(f[-1]))
     exposure = np.sinc(f * record.exposure) * np.exp(-1j * np.pi * f * record.exposure)
     drive = line_amplitudes(record.drive, lines.periodicity)
     transfer = drive * exposure
     variance_of_line = level * lines.spread
     response = fit.parameters.model.response(f) + amplitude / transfer * np.exp(-2j * np.pi * f * lines.lag)
     signal = np.abs(response * transfer)
-    return FrequencyResponse(
+    measured = FrequencyResponse(
         frequency=f,
         response=response,
         variance=variance_of_line / np.abs(transfer) ** 2,
@@ -194,6 +201,7 @@ def periodic_response(record: Record, fit: RecordFit, lines: LineRegression) -> 
         method="periodic",
         caveats=caveats,
     )
+    return measured, in_all
 
 
 def _basis(fit: RecordFit, periodicity: Periodicity, inside: NDArray[np.bool_], time: Floats) -> Floats:

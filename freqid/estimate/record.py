@@ -6,7 +6,7 @@ its exposure. A smooth voltage is refined by a cubic spline so that straight lin
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -32,7 +32,8 @@ class Record:
 
     `free_start` is true where the rig may have been moving when the record began; then the estimators
     add its free decay. `held_delay` is set where the delay is not to be
-    fitted. `frame_interval` is the spacing the sensor meant to keep, s.
+    fitted. `same_rows` is true where voltage and angle stand in the same rows of one log. `frame_interval` is the spacing the
+    sensor meant to keep, s.
     """
 
     drive: Drive
@@ -46,6 +47,15 @@ class Record:
     held_delay: float | None
     periodicity: Periodicity | None
     caveats: tuple[Caveat, ...]
+    same_rows: bool = False
+
+    def keep(self, chosen: NDArray[np.bool_]) -> Record:
+        """The record with the chosen frames (N,) only."""
+        return replace(self, stamp=self.stamp[chosen], angle=self.angle[chosen])
+
+    def with_stamps(self, stamp: Floats) -> Record:
+        """The record with other stamps (N,) for the same frames."""
+        return replace(self, stamp=stamp)
 
     @classmethod
     def from_run(cls, run: Run) -> Record:
@@ -83,6 +93,7 @@ class Record:
             free_start=not run.input.commanded,
             periodicity=run.input.periodicity,
             caveats=(*caveats, *remarks),
+            same_rows=run.common_clock and not run.input.commanded,
         )
 
 

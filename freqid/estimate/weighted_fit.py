@@ -69,7 +69,7 @@ def fit_weighted(record: Record, fit: RecordFit, noise: NoiseSpectrum) -> Weight
 def covariance_of(record: Record, fit: RecordFit) -> WeightedFit:
     """Covariance of the unweighted fit with the spectrum of its own residual, misfit of the model included."""
     grid = FrameGrid.from_stamps(record.stamp)
-    noise = noise_spectrum(fit.residual, grid, parameters=fit.prediction.jacobian.shape[1])
+    noise = noise_spectrum(fit.residual, grid, fitted=fit.prediction.jacobian)
     level, freedom = noise.at(grid.frequency)
     return WeightedFit(
         fit=fit,

@@ -57,7 +57,7 @@ def evaluate_steps(run: Run) -> StepResult:
         covariance=parameter_covariance(weighted),
         degrees_of_freedom=weighted.degrees_of_freedom,
         angle_unit=record.angle_unit,
-        clock=clock_map(record, run, weighted),
+        clock=clock_map(run, motion),
         explained=weighted.fit.explained,
         undetermined=motion.undetermined,
         caveats=(*caveats, *more, *clock_caveats(record)),
