@@ -72,8 +72,11 @@ def test_jacobian_equals_numerical_differences(
     """
     model = SecondOrder(gain=12.0, natural_frequency=3.0, damping_ratio=damping, delay=0.02)
     run = recorded(replace(short_multisine, commanded=False), model, exposure=exposure, common_clock=False)
-    record = Record.from_run(run)
-    at = MotionParameters(model=model, clock_ratio=1.0003, rest_angle=1.0, start_angle=2.0, start_rate=-1.0)
+    # a clock that begins at 5 s: the lag then is 5 s more, and the zero of the stamps is not their beginning
+    record = Record.from_run(replace(run, angle=replace(run.angle, time=run.angle.time + 5.0)))
+    at = MotionParameters(
+        model=replace(model, delay=5.02), clock_ratio=1.0003, rest_angle=1.0, start_angle=2.0, start_rate=-1.0
+    )
     got = predict(record, at)
     steps = [1e-3, 3e-5, damping * 1e-5, 1e-6, 1e-7, 1e-3, 1e-3, 1e-3]
     for column, number in enumerate(got.free):
