@@ -185,7 +185,6 @@ def test_the_sheet_decides_what_is_simulated() -> None:
     assert np.median(np.diff(run.angle.time)) == pytest.approx(1 / rig.angle_sensor.sample_rate, rel=0.05)
 
 
-@pytest.mark.xfail(strict=True, reason="the simulated rig joins the samples of a smooth voltage by straight lines")
 def test_a_smooth_voltage_is_smooth_between_its_samples(vane_model: SecondOrder, recorded: Recorder) -> None:
     """The same band-limited voltage given at 500 Hz and at 32 kHz drives the rig alike.
 

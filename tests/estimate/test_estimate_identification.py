@@ -164,15 +164,15 @@ def test_any_excitation_with_and_without_lost_frames(
     """The truth lies within five standard uncertainties; losing 30 % of the frames costs a factor near 1 / sqrt(0.7)
     = 1.2.
 
-    The noise level is known to 2 / f of its variance, f at least 40: five times 11 %.
+    An uncertainty whose noise rests on f degrees of freedom is itself known to 1 / sqrt(2 f): five of the two together.
     """
     drive = request.getfixturevalue(kind)
     whole = identify(recorded(drive, vane_model, noise=0.3, exposure=0.008, seed=3))
     found = identify(recorded(drive, vane_model, noise=0.3, exposure=0.008, seed=3, lost_frames=lost))
     assert within(found, vane_model.vector)
-    wider = np.sqrt(np.diag(found.model.covariance) / np.diag(whole.model.covariance))
-    assert np.all(wider < np.sqrt(1 / (1 - lost)) * 1.56)
-    assert np.all(wider > np.sqrt(1 / (1 - lost)) / 1.56)
+    wider = np.sqrt(np.diag(found.model.covariance) / np.diag(whole.model.covariance) * (1 - lost))
+    known = 5 * np.sqrt(1 / (2 * found.model.degrees_of_freedom) + 1 / (2 * whole.model.degrees_of_freedom))
+    assert np.all(np.abs(np.log(wider)) < known)
 
 
 def test_no_delay_is_no_fault(short_sweep: InputStream, recorded: Recorder) -> None:
@@ -187,10 +187,11 @@ def test_no_delay_is_no_fault(short_sweep: InputStream, recorded: Recorder) -> N
 def test_an_impossible_delay_is_held_and_told(
     short_sweep: InputStream, vane_model: SecondOrder, recorded: Recorder
 ) -> None:
-    """An angle that comes 0.1 s before its voltage on a common clock: the delay is not reported, the reason is."""
+    """An angle 30 ms before its voltage, nearly two frames, on a common clock: the delay is not reported, the reason
+    is.
+    """
     run = recorded(short_sweep, vane_model, noise=0.3)
-    early = replace(run, angle=replace(run.angle, time=run.angle.time - 0.12))
-    found = identify(early)
+    found = identify(replace(run, angle=replace(run.angle, time=run.angle.time - 0.05)))
     assert found.model.parameters["delay"] is None
     assert found.model.undetermined == ("delay",)
     assert "delay_held_at_zero" in codes_of(found)
@@ -224,7 +225,6 @@ def test_a_reversed_sensor_on_two_clocks_is_told(
     assert "sensor_reversed" in codes_of(found)
 
 
-@pytest.mark.xfail(strict=True, reason="a negative gain is told for odd multisines on two clocks only")
 @pytest.mark.parametrize(
     ("kind", "common"),
     [("short_multisine", True), ("short_sweep", True), ("short_sweep", False), ("short_steps", True)],
@@ -272,7 +272,6 @@ def test_noise_alone_is_called_poorly_explained(short_multisine: InputStream) ->
     assert found.model.explained < 0.5
 
 
-@pytest.mark.xfail(strict=True, reason="a fit that runs away to no damping, or to 1e26 Hz, is not caught")
 def test_noise_alone_never_ends_in_a_fault_of_the_program(short_multisine: InputStream) -> None:
     """Twelve unrelated angles: each is refused in one line, or answered with a doubt and a natural frequency below 1
     kHz.
@@ -333,14 +332,7 @@ def between(run: Run, start: float, stop: float) -> Run:
     [
         (2.0, 2.3, "at least 20 are needed: record longer"),
         (2.0, 5.0, r"of the steady excitation, less than one period \(4 s\): record longer"),
-        pytest.param(
-            0.0,
-            0.4,
-            "check that input and angle belong together",
-            marks=pytest.mark.xfail(
-                strict=True, raises=RuntimeWarning, reason="refused, but with a warning of a division by zero before it"
-            ),
-        ),
+        (0.0, 0.4, "check that input and angle belong together"),
     ],
 )
 def test_records_that_say_too_little_are_refused(

@@ -27,25 +27,25 @@ def constant(n: int) -> np.ndarray:
 
 @pytest.mark.parametrize("lost", [0.0, 0.3])
 def test_white_noise_has_its_variance_everywhere(lost: float) -> None:
-    """Over 60 seeds the mean level of every bin is the variance, within five of the standard deviations that the
-    level claims.
+    """Over 60 seeds the mean level at each of 100 frequencies is the variance, and each level as uncertain as it says.
 
-    A level of f degrees of freedom has the relative variance 2 / f; the chance that one of 300 bins misses by five is
-    2e-4.
+    A level of f degrees of freedom has the relative variance 2 / f. Five deviations of the mean are missed by one of
+    100 with a chance of 6e-5. All levels together: some eight windows are independent.
     """
-    rng = np.random.default_rng(1)
-    levels = []
+    rng, wanted = np.random.default_rng(1), np.linspace(0.5, 29.5, 100)
+    levels, claimed = [], []
     for _ in range(SEEDS):
         kept = np.flatnonzero(rng.random(720) >= lost)
         grid = FrameGrid.from_stamps(kept / 60)
-        found = noise_spectrum(0.3 * rng.standard_normal(len(kept)), grid, fitted=constant(len(kept)))
-        levels.append(np.interp(np.linspace(0.5, 29.5, 100), found.frequency, found.level))
-    deviation = 0.09 * np.sqrt(2 / found.degrees_of_freedom.min() / SEEDS)
-    assert np.max(np.abs(np.mean(levels, axis=0) - 0.09)) < 5 * deviation
-    # the scatter of one level is the claimed one: the mean of 100 correlated variances, about 8 of them independent
-    spread = np.var(levels, axis=0, ddof=1).mean()
-    expected = 0.09**2 * 2 / found.degrees_of_freedom.min()
-    assert spread == pytest.approx(expected, rel=5 * np.sqrt(2 / (SEEDS - 1) / 8))
+        level, freedom = noise_spectrum(0.3 * rng.standard_normal(len(kept)), grid, fitted=constant(len(kept))).at(
+            wanted
+        )
+        levels.append(level / 0.09)
+        claimed.append(2 / freedom)
+    variance = np.mean(claimed, axis=0)
+    assert np.max(np.abs(np.mean(levels, axis=0) - 1) / np.sqrt(variance / SEEDS)) < 5
+    share = np.mean((np.array(levels) - 1) ** 2 / np.array(claimed))
+    assert share == pytest.approx(1.0, rel=5 * np.sqrt(2 / (SEEDS - 1) / 8))
 
 
 def test_fitted_parameters_are_paid_for() -> None:

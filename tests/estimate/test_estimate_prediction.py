@@ -112,9 +112,6 @@ def test_vector_keeps_all_eight() -> None:
     np.testing.assert_array_equal(MotionParameters.from_vector(vector).vector, vector)
 
 
-@pytest.mark.xfail(
-    strict=True, reason="on a finely sampled voltage the rounding of a step of 1e-6 outweighs its truncation"
-)
 @pytest.mark.parametrize("damping", [0.02, 0.12])
 def test_derivatives_hold_on_a_finely_sampled_voltage(
     damping: float, short_multisine: InputStream, recorded: Recorder
