@@ -1,0 +1,106 @@
+"""Why do the tests differ, and what to run next: each cause only where the data speak for it."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+import pytest
+from two_tests import NO_PEAK, TOLERANCE, VANE, checked, frequency_test, moved, step_test
+
+from freqid.crosscheck.comparison import cross_check
+from freqid.crosscheck.comparison_result import CrossCheck
+from freqid.quantity import Quantity
+from freqid.step_test.step_result import STEP_QUANTITIES, StepReading
+
+
+def causes(check: CrossCheck) -> list[str]:
+    """The codes, strongest first."""
+    return [c.cause for c in check.causes]
+
+
+def test_a_scale_error_is_named() -> None:
+    """The gain alone differs: voltage or angle is scaled otherwise."""
+    check = checked(frequency_test(moved("gain", 0.1), (1e-3,) * 4), step_test(VANE, (1e-3,) * 4))
+    assert "scale_error" in causes(check)
+    assert "+10 %" in next(c for c in check.causes if c.cause == "scale_error").evidence
+
+
+def test_a_wrong_time_scale_is_named() -> None:
+    """The natural frequency differs at equal damping."""
+    check = checked(frequency_test(moved("natural_frequency", 0.05), (1e-3,) * 4), step_test(VANE, (1e-3,) * 4))
+    assert "time_scale" in causes(check)
+    assert "scale_error" not in causes(check)
+
+
+def test_everything_different_is_neither() -> None:
+    """Where all three differ no single scale explains it."""
+    vector = VANE * [1.3, 0.8, 1.5, 1]
+    check = checked(frequency_test(vector, (1e-3,) * 4), step_test(VANE, (1e-3,) * 4))
+    assert check.verdict == "disagree"
+    assert causes(check) == []
+
+
+def test_an_inadequate_model_is_evidence() -> None:
+    """Misfit twice the noise: strength 1 - 1/2."""
+    check = checked(frequency_test(moved("gain", 0.1), p_value=1e-9), step_test())
+    (cause,) = [c for c in check.causes if c.cause == "model_inadequate"]
+    assert cause.strength == pytest.approx(0.5)
+
+
+def test_unequal_steps_are_evidence() -> None:
+    """Gains of 12 up and 11 down, three of each, known to 0.01: friction or an operating point that matters."""
+
+    def one(up: bool, gain: float) -> StepReading:
+        readings: dict[str, Quantity | None] = dict.fromkeys(STEP_QUANTITIES)
+        readings["static_gain"] = Quantity.normal(gain, "deg/V", 0.01)
+        low, high = (0.0, 1.0) if up else (1.0, 0.0)
+        return StepReading(time=0.0, voltage_before=low, voltage_after=high, quantities=readings)
+
+    steps = tuple(one(up, g) for up, g in [(True, 12.0), (False, 11.0), (True, 12.01), (False, 11.01)])
+    check = checked(frequency_test(moved("gain", 0.1)), replace(step_test(), steps=steps))
+    assert "unequal_directions" in causes(check)
+    same = tuple(one(up, 12.0 + 0.01 * up) for up in (True, False, True, False))
+    assert "unequal_directions" not in causes(
+        checked(frequency_test(moved("gain", 0.1)), replace(step_test(), steps=same))
+    )
+
+
+def test_too_little_data_names_the_test_that_settles_it() -> None:
+    """Damping known to 10 % by the step test and 1 % by the other, tolerance 10 %: the step test must be longer.
+
+    Expanded uncertainty of the difference 19.7 % (k = 1.96) of 0.12 against the 10 % left of the tolerance: 1.97
+    times less needs 3.88 times the 60 s.
+    """
+    check = checked(frequency_test(relative=(1e-4, 1e-4, 0.01, 1e-4)), step_test(relative=(1e-4, 1e-4, 0.1, 1e-4)))
+    assert check.verdict == "unresolved"
+    assert causes(check) == ["too_little_data"]
+    assert check.next_test is not None
+    assert check.next_test.command == "freqid excite my folder --kind step --duration 240"
+    assert "The damping ratio decides it, and the step test is the less certain of it" in check.next_test.reason
+
+
+def test_the_less_certain_frequency_test_is_the_one_to_repeat() -> None:
+    """The other way round."""
+    check = checked(frequency_test(relative=(1e-4, 1e-4, 0.1, 1e-4)), step_test(relative=(1e-4, 1e-4, 0.01, 1e-4)))
+    assert check.next_test is not None
+    assert "--kind multisine --duration 240" in check.next_test.command
+
+
+def test_the_proposed_duration_settles_it() -> None:
+    """Uncertainties scaled as the proposal says (root of the duration), the same difference agrees."""
+    relative = np.array([1e-4, 1e-4, 0.1, 1e-4])
+    check = checked(frequency_test(moved("damping_ratio", 0.02)), step_test(relative=tuple(relative)))
+    assert check.next_test is not None
+    duration = float(check.next_test.command.rsplit(" ", 1)[1])
+    longer = step_test(relative=tuple(relative / np.sqrt(duration / 60)))
+    assert checked(frequency_test(moved("damping_ratio", 0.02)), longer).verdict == "agree"
+
+
+def test_a_folder_with_a_space_is_quoted_in_the_command() -> None:
+    """The command is there to be copied: the caller hands over the folder as the shell wants it."""
+    check = cross_check(
+        frequency_test(moved("gain", 0.2)), step_test(), tolerance=TOLERANCE, resonance=NO_PEAK, folder='"my folder"'
+    )
+    assert check.next_test is not None
+    assert check.next_test.command == 'freqid excite "my folder" --kind multisine --seed 2'
