@@ -28,6 +28,7 @@ if TYPE_CHECKING:
 
 __all__ = ["SimulatedRig", "SimulatedSensor", "input_from_profile", "simulate_run"]
 
+SMOOTH_REFINEMENT = 8
 STAMP_TO_EXPOSURE_END = {"start": 1.0, "middle": 0.5, "end": 0.0}
 
 
@@ -114,12 +115,11 @@ class SimulatedRig:
 
     def angle(self, drive: InputStream, exposure_end: np.ndarray, *, exposure: float) -> np.ndarray:
         """Noise-free angle (N,) averaged over exposures that end at the true instants `exposure_end` (N,) s."""
-        held = Drive.from_samples(
-            drive.voltage,
-            start=float(drive.time[0]),
-            interval=float(drive.time[1] - drive.time[0]),
-            smooth=drive.hold == "smooth",
-        )
+        start, interval = float(drive.time[0]), float(drive.time[1] - drive.time[0])
+        if drive.hold == "smooth":
+            held = Drive.through_smooth_samples(drive.voltage, start=start, interval=interval, refine=SMOOTH_REFINEMENT)
+        else:
+            held = Drive.from_samples(drive.voltage, start=start, interval=interval, smooth=False)
         m = self.model
         response = HeldResponse(held, m.natural_frequency, m.damping_ratio)
         return self.rest_angle + m.gain * response.mean(exposure_end - m.delay, exposure)

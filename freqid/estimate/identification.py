@@ -9,7 +9,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
@@ -22,13 +22,11 @@ from freqid.estimate.frame_grid import FrameGrid
 from freqid.estimate.frequency_response import FrequencyResponse
 from freqid.estimate.local_polynomial import local_polynomial_response
 from freqid.estimate.model import Adequacy, IdentifiedModel
-from freqid.estimate.outliers import without_outliers
-from freqid.estimate.periodic import LineRegression, periodic_response, steady_noise
-from freqid.estimate.prediction import MotionParameters, angle_only, predict
+from freqid.estimate.motion import Motion, estimate_motion, parameter_covariance
+from freqid.estimate.periodic import periodic_response
+from freqid.estimate.prediction import angle_only
 from freqid.estimate.record import Record
-from freqid.estimate.record_fit import RecordFit, fit_record, refine
-from freqid.estimate.silent_losses import with_silent_losses
-from freqid.estimate.weighted_fit import WeightedFit, covariance_of, fit_weighted
+from freqid.estimate.record_fit import RecordFit
 from freqid.quantity import Caveat, Quantity
 from freqid.records import Run
 
@@ -39,7 +37,6 @@ Method = Literal["auto", "periodic", "local-polynomial"]
 
 POORLY_EXPLAINED = 0.5
 POOLED = 4  # independent points on either side that share their noise estimate
-RIDGE = 0.5  # relative uncertainty of the natural frequency beyond which it is not determined
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -104,132 +101,6 @@ def identify(run: Run, *, method: Method = "auto") -> Identification:
     )
 
 
-@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
-class Motion:
-    """Steps 1 to 3: the record as fitted, the fit with its covariance, and what had to be held."""
-
-    record: Record
-    weighted: WeightedFit
-    lines: LineRegression | None
-    caveats: tuple[Caveat, ...] = ()
-    outlier_at: Floats = field(default_factory=lambda: np.empty(0))
-    silently_lost_at: Floats = field(default_factory=lambda: np.empty(0))
-
-    @property
-    def undetermined(self) -> tuple[str, ...]:
-        """Parameters that the record does not determine."""
-        return () if self.record.held_delay is None else ("delay",)
-
-
-def estimate_motion(record: Record) -> Motion:
-    """Fit the motion with the covariance of its free parameters.
-
-    On a common clock the delay is held at zero where the best one would be negative, or where a fast pole and the
-    delay cannot be told apart; a caveat says so.
-    """
-    record, fit, outlier_at, lost_at = _cleaned(record, fit_record(record))
-    cleaned = {"outlier_at": outlier_at, "silently_lost_at": lost_at}
-    told = _cleaning_caveats(outlier_at, lost_at)
-    motion = replace(_weighted(record, fit), caveats=told, **cleaned)
-    reason = _why_hold(record, motion.weighted)
-    if reason is None:
-        return motion
-    held = replace(record, held_delay=0.0)
-    start = replace(fit.parameters, model=replace(fit.parameters.model, delay=0.0))
-    starts = [trial for trial in (refine(held, start), refine(held, _sluggish(start))) if trial is not None]
-    if not starts:
-        return motion
-    best = min(starts, key=lambda trial: trial.sum_of_squares)
-    return replace(_weighted(held, best), caveats=(*told, Caveat("delay_held_at_zero", reason)), **cleaned)
-
-
-def _cleaned(record: Record, fit: RecordFit) -> tuple[Record, RecordFit, Floats, Floats]:
-    """Outliers left out, silently lost frames put back into the stamps; the instants of both."""
-    if record.same_rows:
-        return *without_outliers(record, fit), np.empty(0)
-    timed, timed_fit, lost_at = with_silent_losses(record, fit)
-    timed, timed_fit, outlier_at = without_outliers(timed, timed_fit)
-    if len(outlier_at):
-        # without the outliers a loss shows more sharply
-        timed, timed_fit, more = with_silent_losses(timed, timed_fit)
-        lost_at = np.sort(np.concatenate([lost_at, more]))
-    return timed, timed_fit, outlier_at, lost_at
-
-
-def _cleaning_caveats(outlier_at: Floats, lost_at: Floats) -> tuple[Caveat, ...]:
-    found = []
-    if len(outlier_at):
-        found.append(
-            Caveat(
-                "outliers_left_out",
-                f"{len(outlier_at)} angle samples stand more than six standard deviations off and were left out, at stamps "
-                f"{_instants(outlier_at)}.",
-            )
-        )
-    if len(lost_at):
-        found.append(
-            Caveat(
-                "frames_silently_lost",
-                f"{len(lost_at)} times frames were lost without a gap in the stamps; the later stamps were moved, from "
-                f"{_instants(lost_at)} on.",
-            )
-        )
-    return tuple(found)
-
-
-def _instants(times: Floats) -> str:
-    shown = ", ".join(f"{t:.2f}" for t in times[:6])
-    return f"{shown}{', ...' if len(times) > 6 else ''} s"
-
-
-def _weighted(record: Record, fit: RecordFit) -> Motion:
-    """Weighted with the noise between the harmonics where there is one, else as it is with a robust covariance."""
-    lines = None if record.periodicity is None else LineRegression.of(record, fit)
-    noise = None if lines is None else steady_noise(record, fit, lines)
-    weighted = covariance_of(record, fit) if noise is None else fit_weighted(record, fit, noise)
-    return Motion(record=record, weighted=weighted, lines=lines, caveats=())
-
-
-def _why_hold(record: Record, weighted: WeightedFit) -> str | None:
-    model = weighted.fit.parameters.model
-    if not record.common_clock:
-        return None
-    if model.delay < -max(record.frame_interval, record.drive.interval):
-        return (
-            f"The best fit would put the angle {-model.delay:.3g} s before the voltage, which cannot be: the delay was held "
-            "at 0 (noise, drift or further dynamics take its place)."
-        )
-    variance = parameter_covariance(weighted)[1, 1]
-    relative = np.sqrt(variance) / model.natural_frequency if variance > 0 else np.inf
-    if model.damping_ratio > 1 and relative > RIDGE:
-        return (
-            "The fast pole and a delay look alike in this record: the delay was held at 0, so that the fast pole carries "
-            "the whole lag."
-        )
-    return None
-
-
-def _sluggish(start: MotionParameters) -> MotionParameters:
-    """The same slowest pole with a second one ten times faster: a start on the ridge of overdamped rigs."""
-    slow = 1 / start.model.slowest_decay
-    fast = 10 * slow
-    wn = np.sqrt(slow * fast)
-    model = replace(
-        start.model, natural_frequency=float(wn / (2 * np.pi)), damping_ratio=float((slow + fast) / (2 * wn))
-    )
-    return replace(start, model=model)
-
-
-def parameter_covariance(weighted: WeightedFit) -> Floats:
-    """Covariance (4, 4) of the model's parameters; a held delay has no variance of its own."""
-    free = weighted.fit.prediction.free
-    covariance = np.zeros((4, 4))
-    rows = [free.index(i) for i in range(4) if i in free]
-    kept = [i for i in range(4) if i in free]
-    covariance[np.ix_(kept, kept)] = weighted.covariance[np.ix_(rows, rows)]
-    return covariance
-
-
 def _response(motion: Motion) -> tuple[FrequencyResponse, Adequacy]:
     record, fit = motion.record, motion.weighted.fit
     model = fit.parameters.model
@@ -269,10 +140,8 @@ def _inadequate(adequacy: Adequacy) -> Caveat:
 def _sign_caveats(record: Record, fit: RecordFit) -> list[Caveat]:
     """With odd lines only and an unknown offset, a reversed sensor looks like a shift of half a period."""
     m, periodicity = fit.parameters.model, record.periodicity
-    if record.common_clock or periodicity is None:
-        return []
-    odd = np.all(np.round(periodicity.lines * periodicity.period) % 2 == 1)
-    if odd:
+    half_wave = periodicity is not None and bool(np.all(np.round(periodicity.lines * periodicity.period) % 2 == 1))
+    if half_wave and periodicity is not None and not record.common_clock:
         for shift in (-0.5, 0.5):
             # the steady part is the same to the last bit, so the fit need not be repeated
             other = replace(m, gain=-m.gain, delay=m.delay + shift * periodicity.period)

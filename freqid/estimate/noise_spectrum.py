@@ -2,7 +2,8 @@
 
 Frames keep their slot number; lost ones are empty. `level` is the noise variance that white noise of the same loudness would
 have, so white noise of variance s^2 has the level s^2 everywhere. Bins at the harmonics of a periodic excitation are left
-out: they hold the signal's own misfit. Between whole periods the remaining bins carry the same information
+out: they hold the signal's own misfit. Windows are wide; towards low frequencies, where slow noise rises steeply, a narrow one is
+taken where it differs from the wide one beyond chance. Between whole periods the remaining bins carry the same information
 as the scatter from period to period (Parseval).
 """
 
@@ -20,6 +21,7 @@ __all__ = ["NoiseSpectrum", "noise_spectrum"]
 Floats = NDArray[np.float64]
 
 FEWEST_BINS = 20
+NARROWEST = 8  # bins of the lowest window
 MOST_BINS = 60  # of a smoothing window: 120 degrees of freedom, yet narrow enough for coloured noise
 LARGEST_SHARE = 8  # a smoothing window holds at most an eighth of the bins
 
@@ -35,7 +37,7 @@ class NoiseSpectrum:
 
     def freedom_between(self, low: float, high: float) -> float:
         """Real degrees of freedom of all used bins that levels between two frequencies rest on."""
-        half = self.degrees_of_freedom[0] / 4 * self.frequency[1]
+        half = self.degrees_of_freedom[-1] / 4 * self.frequency[1]
         within = (self.frequency >= low - half) & (self.frequency <= high + half)
         return 2.0 * max(int(np.sum(self.usable & within)), FEWEST_BINS)
 
@@ -72,22 +74,38 @@ def noise_spectrum(
     index = np.flatnonzero(usable)
     if len(index) < FEWEST_BINS:
         raise ValueError(f"only {len(index)} bins free of the excitation; {FEWEST_BINS} are needed")
-    half = int(np.clip(len(index) // LARGEST_SHARE, FEWEST_BINS, MOST_BINS)) // 2
-    total, share = (np.concatenate([[0.0], np.cumsum(v[index])]) for v in (power, left))
+    widest = int(np.clip(len(index) // LARGEST_SHARE, FEWEST_BINS, MOST_BINS)) // 2
+    totals = [np.concatenate([[0.0], np.cumsum(v[index])]) for v in (power, left)]
     centre = np.searchsorted(index, np.arange(len(frequency)))
-    low = np.clip(centre - half, 0, max(len(index) - 2 * half, 0))
-    high = np.minimum(low + 2 * half, len(index))
-    level = (total[high] - total[low]) / np.maximum(share[high] - share[low], 0.1 * (high - low))
+    wide, wide_freedom = _window_means(totals, centre, np.full(len(frequency), widest))
+    narrow, narrow_freedom = _window_means(totals, centre, np.clip(centre // 3, NARROWEST // 2, widest))
+    coloured = _differ(narrow / wide, narrow_freedom, wide_freedom)
     return NoiseSpectrum(
         frequency=frequency,
-        level=np.maximum(level, 1e-300),
-        degrees_of_freedom=2.0 * (high - low),
+        level=np.maximum(np.where(coloured, narrow, wide), 1e-300),
+        degrees_of_freedom=np.where(coloured, narrow_freedom, wide_freedom),
         usable=usable,
     )
 
 
+def _window_means(totals: list[Floats], centre: NDArray[np.intp], half: NDArray[np.intp]) -> tuple[Floats, Floats]:
+    """Mean power of the bins within `half` of each centre, and its real degrees of freedom; ends use the nearest full window."""
+    last = len(totals[0]) - 1
+    low = np.clip(centre - half, 0, np.maximum(last - 2 * half, 0))
+    high = np.minimum(low + 2 * half, last)
+    power, share = (total[high] - total[low] for total in totals)
+    return power / np.maximum(share, 0.1 * (high - low)), 2.0 * (high - low)
+
+
+def _differ(ratio: Floats, first: Floats, second: Floats) -> NDArray[np.bool_]:
+    """Whether two mean powers differ beyond chance (1 % by Fisher's F; the windows overlap, which makes it rarer)."""
+    from scipy.stats import f as fisher
+
+    return np.asarray((ratio > fisher.ppf(0.995, first, second)) | (ratio < fisher.ppf(0.005, first, second)))
+
+
 def _leverage(fitted: Floats, grid: FrameGrid) -> Floats:
     """Share of each bin's power that least squares on the columns `fitted` takes out of white noise (0 to 1)."""
-    orthonormal, _ = np.linalg.qr(fitted / np.linalg.norm(fitted, axis=0))
+    orthonormal, _ = np.linalg.qr(fitted / np.maximum(np.linalg.norm(fitted, axis=0), 1e-300))
     spectrum = grid.spectrum(orthonormal)
     return np.asarray(np.minimum(np.sum(np.abs(spectrum) ** 2, axis=1) * grid.size / len(fitted), 1.0))

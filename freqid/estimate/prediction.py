@@ -5,8 +5,9 @@ The angle recorded at stamp s (end of exposure) is
     y(s) = rest + K * mean over exposure of unit_response(ratio * s - lag) + free decay of the start
 
 with lag = delay - clock offset. On a common clock the ratio is 1 and the lag is the delay. Derivatives by K,
-lag, ratio, rest and start are exact; those by natural frequency and damping ratio are forward differences of the
-exact response (relative step 1e-6: truncation about 1e-6 Q of the derivative, rounding about 1e-5 of it at worst).
+lag, ratio, rest and start are exact; those by natural frequency and damping ratio are differences of the exact
+response: forward with a relative step of 1e-6 (truncation about 1e-6 Q), central with 1e-4 (truncation about 2e-9 Q^2) where the voltage is
+sampled so finely that rounding would show.
 """
 
 from __future__ import annotations
@@ -23,7 +24,8 @@ from freqid.second_order import SecondOrder
 __all__ = ["NUISANCE", "MotionParameters", "Prediction", "predict"]
 
 Floats = NDArray[np.float64]
-STEP = 1e-6
+FORWARD_STEP, CENTRAL_STEP = 1e-6, 1e-4
+FINE = 3e-3  # rad of the natural frequency per sample: below, rounding (1e-16 / FINE^2) needs the larger step
 NUISANCE = ("clock_ratio", "rest_angle", "start_angle", "start_rate")
 
 
@@ -85,10 +87,13 @@ def predict(record: Record, p: MotionParameters) -> Prediction:
     m = p.model
     angle, unit, rate, decay = _motion(record, p)
     columns = [unit]
+    fine = 2 * np.pi * m.natural_frequency * record.drive.interval < FINE
     for name in ("natural_frequency", "damping_ratio"):
         value = getattr(m, name)
-        high = _motion(record, replace(p, model=replace(m, **{name: value * (1 + STEP)})))[0]
-        columns.append((high - angle) / (STEP * value))
+        step = value * (CENTRAL_STEP if fine else FORWARD_STEP)
+        high = _motion(record, replace(p, model=replace(m, **{name: value + step})))[0]
+        low = _motion(record, replace(p, model=replace(m, **{name: value - step})))[0] if fine else angle
+        columns.append((high - low) / (2 * step if fine else step))
     if 3 in free:
         columns.append(-m.gain * rate)
     if 4 in free:

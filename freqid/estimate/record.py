@@ -69,18 +69,21 @@ class Record:
         stamp, angle = a.time[usable], a.angle[usable]
         if np.ptp(angle) == 0:
             raise EstimationError(f"{run.name}: the angle is constant ({angle[0]:g} {a.angle_unit}): check the sensor")
-        if np.ptp(run.input.voltage) == 0:
-            raise EstimationError(
-                f"{run.name}: the input is constant ({run.input.voltage[0]:g} V): check the input column or channel"
-            )
+        if np.ptp(stamp) == 0:
+            raise EstimationError(f"{run.name}: all angle stamps are {stamp[0]:g} s: check the time column")
         caveats: list[Caveat] = []
         if not usable.all():
             caveats.append(Caveat("unreadable_frames", f"{int((~usable).sum())} frames without a readable angle were left out."))
-        drive, remarks = _drive(run.input)
+        drive, remarks = _drive(run.input, run.name)
         stamp = stamp + STAMP_TO_EXPOSURE_END[a.stamp] * a.exposure
         if run.common_clock and not run.input.commanded:
             covered = (stamp >= drive.start) & (stamp <= drive.stop + drive.interval)
             stamp, angle = stamp[covered], angle[covered]
+            if len(stamp) < MINIMUM_FRAMES:
+                raise EstimationError(
+                    f"{run.name}: {len(stamp)} angle samples lie within the {drive.start:g} to {drive.stop:g} s of the input; at "
+                    f"least {MINIMUM_FRAMES} are needed: give logs that overlap in time"
+                )
         return cls(
             drive=drive,
             stamp=stamp,
@@ -97,42 +100,47 @@ class Record:
         )
 
 
-def _drive(source: InputStream) -> tuple[Drive, list[Caveat]]:
+def _drive(source: InputStream, name: str) -> tuple[Drive, list[Caveat]]:
     good = np.isfinite(source.voltage) & np.isfinite(source.time)
     time, voltage = source.time[good], source.voltage[good]
+    if len(voltage) < 2 or np.ptp(voltage) == 0:
+        shown = f"{voltage[0]:g} V" if len(voltage) else "not a single readable sample"
+        raise EstimationError(f"{name}: the input is constant ({shown}): check the input column or channel")
+    if np.ptp(time) == 0:
+        raise EstimationError(f"{name}: all input stamps are {time[0]:g} s: check the time column")
     order = np.arange(len(time))
-    interval = (time[-1] - time[0]) / (len(time) - 1)
-    deviation = float(np.max(np.abs(time - time[0] - order * interval)))
+    interval, start = (float(v) for v in np.polyfit(order, time, 1))
+    if abs(start - time[0]) < 1e-6 * interval:
+        start = float(time[0])  # rounding only: the first sample is the start
+    deviation = float(np.max(np.abs(time - start - order * interval)))
     smooth = source.hold == "smooth"
-    caveats: list[Caveat] = []
     if deviation > max(UNIFORM_WITHIN * interval, 0.6 * _resolution(time)):
-        fine = float(np.median(np.diff(time)[np.diff(time) > 0])) / 4
-        grid = time[0] + fine * np.arange(int((time[-1] - time[0]) / fine) + 1)
-        if smooth:
-            voltage = np.interp(grid, time, voltage)
-        else:
-            voltage = voltage[np.searchsorted(time, grid + 1e-12, side="right") - 1]
-        caveats.append(
-            Caveat(
-                "input_stamps_irregular",
-                f"The input stamps are irregular (up to {deviation:.2g} s off a uniform grid); "
-                f"the voltage was placed on a grid of {fine:.2g} s.",
-            )
-        )
-        return Drive.from_samples(voltage, start=float(time[0]), interval=fine, smooth=smooth), caveats
-    if smooth and source.periodicity is not None and abs(time[-1] + interval - source.periodicity.stop) < 0.1 * interval:
+        return _from_irregular(time, voltage, deviation, smooth=smooth)
+    periodicity = source.periodicity
+    if smooth and periodicity is not None and abs(time[-1] + interval - periodicity.stop) < 0.1 * interval:
         # the last interval of a whole number of periods leads back to where the first period began
-        wrapped = round((source.periodicity.start - time[0]) / interval)
-        voltage, order = np.append(voltage, voltage[wrapped]), np.arange(len(time) + 1)
+        voltage = np.append(voltage, voltage[round((periodicity.start - start) / interval)])
+    refine = 8 if len(voltage) < 20_000 else (4 if len(voltage) < 500_000 else 1)
     if smooth:
-        factor = 8 if len(voltage) < 20_000 else (4 if len(voltage) < 500_000 else 1)
-        if factor > 1:
-            from scipy.interpolate import CubicSpline
+        return Drive.through_smooth_samples(voltage, start=start, interval=interval, refine=refine), []
+    return Drive.from_samples(voltage, start=start, interval=interval, smooth=False), []
 
-            fine_grid = np.arange((len(voltage) - 1) * factor + 1) / factor
-            voltage = CubicSpline(order, voltage)(fine_grid)
-            interval = interval / factor
-    return Drive.from_samples(voltage, start=float(time[0]), interval=float(interval), smooth=smooth), caveats
+
+def _from_irregular(time: Floats, voltage: Floats, deviation: float, *, smooth: bool) -> tuple[Drive, list[Caveat]]:
+    """Irregular input stamps: the voltage on a grid four times as fine as their usual spacing."""
+    gaps = np.diff(time)
+    fine = float(np.median(gaps[gaps > 0])) / 4
+    grid = time[0] + fine * np.arange(int((time[-1] - time[0]) / fine) + 1)
+    if smooth:
+        voltage = np.interp(grid, time, voltage)
+    else:
+        voltage = voltage[np.searchsorted(time, grid + 1e-12, side="right") - 1]
+    caveat = Caveat(
+        "input_stamps_irregular",
+        f"The input stamps are irregular (up to {deviation:.2g} s off a uniform grid); the voltage was placed on a grid of "
+        f"{fine:.2g} s.",
+    )
+    return Drive.from_samples(voltage, start=float(time[0]), interval=fine, smooth=smooth), [caveat]
 
 
 def _resolution(time: Floats) -> float:

@@ -23,6 +23,7 @@ __all__ = ["ResonanceReading", "read_resonance"]
 Floats = NDArray[np.float64]
 
 AROUND_PEAK = 0.55  # points at least this share of the highest gain take part (half power is 0.707)
+FLATTEST = 0.97  # of the peak: an end of the band higher than this leaves no peak to read
 FEWEST_POINTS = 5
 
 
@@ -42,12 +43,15 @@ def read_resonance(measured: FrequencyResponse) -> ResonanceReading | str:
     if clear.sum() < FEWEST_POINTS:
         return "too few lines stand clear of the noise"
     top = int(np.argmax(np.where(clear, gain, 0)))
+    # a low peak: stay above the gain at both ends of the band
+    edge = max(float(gain[0]), float(gain[-1])) / float(gain[top])
+    least = max(AROUND_PEAK, 1.01 * edge)
     low, high = top, top
-    while low > 0 and gain[low - 1] > AROUND_PEAK * gain[top]:
+    while low > 0 and gain[low - 1] > least * gain[top]:
         low -= 1
-    while high < len(gain) - 1 and gain[high + 1] > AROUND_PEAK * gain[top]:
+    while high < len(gain) - 1 and gain[high + 1] > least * gain[top]:
         high += 1
-    if low == 0 or high == len(gain) - 1:
+    if low == 0 or high == len(gain) - 1 or least > FLATTEST:
         return "the gain has no peak inside the measured band"
     if high - low + 1 < FEWEST_POINTS:
         return (

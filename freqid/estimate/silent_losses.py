@@ -90,7 +90,7 @@ def _best_jump(record: Record, fit: RecordFit, *, least: float) -> int | None:
         return None
     # the derivative by the lag is -K rate
     later = -jacobian[:, free.index(3)] * fit.parameters.clock_ratio * record.frame_interval
-    basis, _ = np.linalg.qr(jacobian / np.linalg.norm(jacobian, axis=0))
+    basis, _ = np.linalg.qr(jacobian / np.maximum(np.linalg.norm(jacobian, axis=0), 1e-300))
     residual = _without_spikes(fit.residual)
     residual = residual - basis @ (basis.T @ residual)
 

@@ -119,6 +119,8 @@ class _Bank:
         shape = np.fft.irfft(self._drive * unit.response(self._frequency), self._size)[: len(self._grid)]
         shape = shape - np.mean(shape)
         own = float(np.sum(shape**2))
+        if not (own > 0 and self._energy > 0):
+            return []
         if ratio not in self._spectra:
             self._spectra[ratio] = np.fft.rfft(self._resampled(ratio), self._size)
         correlation = np.fft.irfft(self._spectra[ratio] * np.conj(np.fft.rfft(shape, self._size)), self._size)
@@ -158,5 +160,8 @@ class _Bank:
         steps = int(LARGEST_RATIO_ERROR / spacing) + 1
         ratios = (1 + k * spacing for k in range(-steps, steps + 1) if k)
         return [
-            self.match(m.natural_frequency, m.damping_ratio, r)[0] for r in ratios if abs(r - 1) <= LARGEST_RATIO_ERROR
+            c
+            for r in ratios
+            if abs(r - 1) <= LARGEST_RATIO_ERROR
+            for c in self.match(m.natural_frequency, m.damping_ratio, r)[:1]
         ]

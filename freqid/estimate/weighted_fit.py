@@ -59,11 +59,8 @@ def fit_weighted(record: Record, fit: RecordFit, noise: NoiseSpectrum) -> Weight
         if np.all(np.abs(step) <= 1e-4 * np.sqrt(np.diag(_inverse(normal)))):
             break
     weighted = _weigh(grid, current.prediction.jacobian, level)
-    return WeightedFit(
-        fit=current,
-        covariance=_sandwich(grid, current.prediction.jacobian, weighted, level),
-        degrees_of_freedom=float(min(freedom.sum() / 8, current.degrees_of_freedom)),
-    )
+    covariance, degrees = _sandwich(grid, current.prediction.jacobian, weighted, (level, freedom))
+    return WeightedFit(fit=current, covariance=covariance, degrees_of_freedom=degrees)
 
 
 def covariance_of(record: Record, fit: RecordFit) -> WeightedFit:
@@ -71,23 +68,34 @@ def covariance_of(record: Record, fit: RecordFit) -> WeightedFit:
     grid = FrameGrid.from_stamps(record.stamp)
     noise = noise_spectrum(fit.residual, grid, fitted=fit.prediction.jacobian)
     level, freedom = noise.at(grid.frequency)
-    return WeightedFit(
-        fit=fit,
-        covariance=_sandwich(grid, fit.prediction.jacobian, fit.prediction.jacobian, level),
-        degrees_of_freedom=float(min(np.median(freedom), fit.degrees_of_freedom)),
-    )
+    jacobian = fit.prediction.jacobian
+    covariance, degrees = _sandwich(grid, jacobian, jacobian, (level, freedom))
+    return WeightedFit(fit=fit, covariance=covariance, degrees_of_freedom=degrees)
 
 
 def _weigh(grid: FrameGrid, jacobian: Floats, level: Floats) -> Floats:
     return grid.back(grid.spectrum(jacobian) / level[:, None])
 
 
-def _sandwich(grid: FrameGrid, jacobian: Floats, weighted: Floats, level: Floats) -> Floats:
+def _sandwich(
+    grid: FrameGrid, jacobian: Floats, weighted: Floats, noise: tuple[Floats, Floats]
+) -> tuple[Floats, float]:
+    """Covariance of the parameters and the degrees of freedom of the least certain of its four first variances.
+
+    `noise` is the level and its degrees of freedom at every bin. Each variance is a weighted sum of levels; its degrees of
+    freedom follow from theirs (Welch-Satterthwaite, JCGM 100 G.4), neighbours that share a window counted as one.
+    """
+    level, freedom = noise
     outer = _inverse(jacobian.T @ weighted)
-    spectrum = grid.spectrum(weighted)
+    spectrum = grid.spectrum(weighted) @ outer
     power = (level * grid.multiplicity)[:, None]
-    inner = np.real(np.conj(spectrum).T @ (power * spectrum))
-    return np.asarray(outer @ inner @ outer)
+    covariance = np.real(np.conj(spectrum).T @ (power * spectrum))
+    share = power * np.abs(spectrum[:, :4]) ** 2
+    width = max(int(np.median(freedom)) // 2, 1)
+    pooled = np.add.reduceat(share, np.arange(0, len(share), width), axis=0)
+    weakest = np.minimum.reduceat(freedom, np.arange(0, len(freedom), width))
+    degrees = np.sum(pooled, axis=0) ** 2 / np.sum(pooled**2 / weakest[:, None], axis=0)
+    return np.asarray(covariance), float(np.clip(np.min(degrees), 2.0, len(weighted) - jacobian.shape[1]))
 
 
 def _solve(normal: Floats, right: Floats) -> Floats:

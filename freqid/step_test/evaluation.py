@@ -10,12 +10,15 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from freqid.derived import derived_quantities
 from freqid.errors import StepTestError
-from freqid.estimate.identification import Motion, clock_caveats, clock_map, estimate_motion, parameter_covariance
+from freqid.estimate.identification import clock_caveats, clock_map
+from freqid.estimate.motion import Motion, estimate_motion, parameter_covariance
 from freqid.estimate.record import Record
 from freqid.quantity import Caveat, Quantity, coverage_factor
 from freqid.records import Run
 from freqid.second_order import SecondOrder
+from freqid.step_relations import logarithmic_decrement
 from freqid.step_test.reading import StepFrames, read_step
 from freqid.step_test.smooth_curve import HALF_WIDTH_IN_PERIODS
 from freqid.step_test.step_result import STEP_QUANTITIES, StepReading, StepResult
@@ -40,10 +43,12 @@ def evaluate_steps(run: Run) -> StepResult:
     model = weighted.fit.parameters.model
     noise = float(np.sqrt(weighted.fit.sum_of_squares / weighted.fit.degrees_of_freedom))
     readings, caveats = [], [*record.caveats, *motion.caveats]
+    exact = _exact(motion, record.angle_unit)
     for step in steps:
-        frames = _frames(record, motion, step, steps, noise)
-        if frames is not None:
-            readings.append(_reading(frames, step, model, motion))
+        frames = _frames(record, motion, step, record.angle, noise)
+        smooth = _frames(record, motion, step, weighted.fit.prediction.angle, noise)
+        if frames is not None and smooth is not None:
+            readings.append(_reading(frames, smooth, step, exact, motion))
     if not readings:
         raise StepTestError(
             f"{run.name}: {len(steps)} steps, but none is held for {FEWEST_FRAMES_IN_A_HOLD} frames and "
@@ -66,9 +71,9 @@ def evaluate_steps(run: Run) -> StepResult:
 
 
 def _frames(
-    record: Record, motion: Motion, step: VoltageStep, steps: list[VoltageStep], noise: float
+    record: Record, motion: Motion, step: VoltageStep, angle: Floats, noise: float
 ) -> StepFrames | None:
-    """Frames of the hold after `step`, or None where it is too short to be read."""
+    """Frames of the hold after `step` with the angles `angle` (N,), or None where it is too short to be read."""
     p = motion.weighted.fit.parameters
     m = p.model
     # the exposure mean belongs to the middle of the exposure
@@ -85,9 +90,9 @@ def _frames(
         return None
     return StepFrames(
         time=time[hold] - onset,
-        angle=record.angle[hold],
-        before=_level(record.angle[before], noise),
-        after=_level(record.angle[after], noise),
+        angle=angle[hold],
+        before=_level(angle[before], noise),
+        after=_level(angle[after], noise),
         voltage_change=step.change,
         noise=noise,
         period=_period(m),
@@ -105,8 +110,34 @@ def _period(m: SecondOrder) -> float:
     return float(1 / (m.natural_frequency * damped))
 
 
-def _reading(frames: StepFrames, step: VoltageStep, model: SecondOrder, motion: Motion) -> StepReading:
-    quantities = read_step(frames, half_width=HALF_WIDTH_IN_PERIODS * frames.period)
+def _exact(motion: Motion, angle_unit: str) -> dict[str, float]:
+    """What the fitted model shows exactly, by the names of the read-offs."""
+    model = motion.weighted.fit.parameters.model
+    derived = derived_quantities(model.vector, parameter_covariance(motion.weighted), angle_unit=angle_unit)
+    exact = {name: q.value for name, q in derived.items() if q is not None and name in STEP_QUANTITIES}
+    if model.damping_ratio < 1:
+        exact["log_decrement"] = float(logarithmic_decrement(model.damping_ratio))
+    exact["static_gain"] = model.gain
+    return exact
+
+
+def _reading(
+    frames: StepFrames, smooth: StepFrames, step: VoltageStep, exact: dict[str, float], motion: Motion
+) -> StepReading:
+    """Read a step, and correct what the same reading of the noise-free model at the same frames gets wrong.
+
+    A quarter of the correction goes into the uncertainty: it rests on the model.
+    """
+    half_width = HALF_WIDTH_IN_PERIODS * frames.period
+    quantities = read_step(frames, half_width=half_width)
+    for name, ideal in read_step(smooth, half_width=half_width).items():
+        found = quantities[name]
+        if found is not None and ideal is not None and name in exact:
+            bias = ideal.value - exact[name]
+            u = float(np.hypot(found.standard_uncertainty, bias / 4))
+            if abs(bias) < 0.5 * abs(exact[name]) and (found.value - bias) * found.value > 0:
+                quantities[name] = Quantity.normal(found.value - bias, found.unit, u)
+    model = motion.weighted.fit.parameters.model
     p = motion.weighted.fit.parameters
     rest_voltage = motion.record.drive.rest
     predicted = p.rest_angle + model.gain * (step.after - rest_voltage)

@@ -43,11 +43,6 @@ def test_parameter_intervals_hold_the_truth(campaign: list[StepResult], vane_mod
     assert min(counts) >= binom.ppf(1e-4, SEEDS, 0.95)
 
 
-BIASED = pytest.mark.xfail(
-    strict=True, reason="the bias of the smoothing window and of the grid is not in the uncertainty, and is larger"
-)
-
-
 @pytest.mark.parametrize(
     "name",
     [
@@ -57,9 +52,9 @@ BIASED = pytest.mark.xfail(
         "log_decrement",
         "time_constant",
         "steady_state_error",
-        pytest.param("rise_time_10_90", marks=BIASED),
-        pytest.param("peak_time", marks=BIASED),
-        pytest.param("percent_overshoot", marks=BIASED),
+        "rise_time_10_90",
+        "peak_time",
+        "percent_overshoot",
     ],
 )
 def test_pooled_readings_hold_what_the_true_rig_shows(name: str, campaign: list[StepResult]) -> None:
