@@ -13,7 +13,12 @@ from freqid.errors import StepTestError
 from freqid.quantity import Quantity
 from freqid.records import InputStream, Run
 from freqid.second_order import PARAMETER_ORDER, SecondOrder
-from freqid.step_relations import normalised_crossing_time, normalised_peak_time, percent_overshoot
+from freqid.step_relations import (
+    normalised_crossing_time,
+    normalised_peak_time,
+    normalised_settling_time,
+    percent_overshoot,
+)
 from freqid.step_test.evaluation import evaluate_steps
 from freqid.step_test.step_result import STEP_QUANTITIES, StepResult
 
@@ -73,6 +78,24 @@ def test_pooled_readings_hold_what_the_true_rig_shows(name: str, campaign: list[
         "steady_state_error": 0.0,
     }
     assert held([one.quantities[name] for one in campaign], truth[name]) >= binom.ppf(1e-4, SEEDS, 0.95)
+
+
+@pytest.mark.xfail(
+    strict=True,
+    reason="where a swing grazes the band the last exit jumps by half a period, and the uncertainty does not say so",
+)
+def test_settling_time_holds_the_truth_where_a_swing_grazes_the_band(
+    short_steps: InputStream, recorded: Recorder
+) -> None:
+    """At a damping ratio of 0.3 the third extreme reaches 5.2 % of the step: noise decides whether it counts."""
+    rig = SecondOrder(gain=12.0, natural_frequency=3.0, damping_ratio=0.3, delay=0.02)
+    truth = float(normalised_settling_time(0.3, 0.05)) / (2 * np.pi * 3)
+    found = [
+        evaluate_steps(recorded(short_steps, rig, noise=0.05, seed=seed)).quantities["settling_time_5"]
+        for seed in range(12)
+    ]
+    read = [q for q in found if q is not None]
+    assert held([*read], truth) >= binom.ppf(1e-4, len(read), 0.95)
 
 
 def test_every_step_is_there_with_every_name(campaign: list[StepResult], short_steps: InputStream) -> None:
