@@ -31,18 +31,18 @@ def report_folder(folder: TestFolder, *, progress: Progress = silent) -> Path:
 
     Raises TestFolderError where there is nothing to report, or where results were computed from files that have changed since.
     """
-    from freqid.report import write_report
+    from freqid.report import draw_report, write_report
     from freqid.report.figure_style import save_figure
-    from freqid.report.report_figures import report_figures
 
     progress("reading the results")
     inputs = gather(folder)
     progress("drawing the figures", 0.2)
-    for name, made in report_figures(inputs).items():
+    figures = draw_report(inputs)
+    for name, made in figures.items():
         if made.figure is not None:
             save_figure(made.figure, folder.figures / f"{name}.svg")
     progress("writing the page", 0.7)
-    write_text(folder.report, write_report(inputs))
+    write_text(folder.report, write_report(inputs, figures=figures))
     return folder.report
 
 
@@ -76,7 +76,7 @@ def gather(folder: TestFolder) -> Any:
         crosscheck=check,
         files=_hashes(folder, [response_run, step_run]),
         versions=_versions(),
-        created=datetime.now(UTC).isoformat(sep=" ", timespec="seconds"),
+        created=f"{datetime.now(UTC):%Y-%m-%d %H:%M:%S} UTC",
         folder=folder.quoted,
     )
 

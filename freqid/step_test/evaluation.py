@@ -164,7 +164,7 @@ def _pooled(
             caveats.append(
                 Caveat(
                     "too_few_frames",
-                    f"{name} was not read off: {_period(model) / record.frame_interval:.1f} frames per period, "
+                    f"The {_words(name)} was not read off: {_period(model) / record.frame_interval:.1f} frames per period, "
                     f"{FRAMES_PER_PERIOD} are needed; take the value of the fitted model.",
                 )
             )
@@ -176,11 +176,20 @@ def _pooled(
 
 
 def _why_missing(name: str, model: SecondOrder) -> str:
+    missing = f"The {_words(name)} was not read off"
     if name in ("peak_time", "log_decrement", "time_constant") and model.damping_ratio > 0.4:
-        return f"{name} was not read off: too few swings stand clear of the noise (damping ratio {model.damping_ratio:.2g})."
+        return f"{missing}: too few swings stand clear of the noise (damping ratio {model.damping_ratio:.2g})."
     if name.startswith("settling"):
-        return f"{name} was not read off: the noise is as wide as the band, or the angle had not settled; see the fitted model."
-    return f"{name} was not read off: no step shows it clearly; see the fitted model."
+        return f"{missing}: the noise is as wide as the band, or the angle had not settled; see the fitted model."
+    return f"{missing}: no step shows it clearly; see the fitted model."
+
+
+def _words(name: str) -> str:
+    """ "settling_time_5" as "settling time (5 %)", "rise_time_10_90" as "rise time (10-90 %)"."""
+    head, _, figures = name.partition("_time_")
+    if not figures or head not in ("settling", "rise", "delay"):
+        return name.replace("_", " ")
+    return f"{head} time ({figures.replace('_', '-')} %)"
 
 
 def pool(values: list[Quantity]) -> Quantity | None:
