@@ -90,10 +90,12 @@ def test_silverbox_frequency_and_damping(silverbox: Identification) -> None:
 
 
 @pytest.mark.xfail(
-    strict=True, reason="the largest swings, which a stiffening spring bends most, are taken for outliers"
+    strict=True, reason="the largest swings, bent most by a stiffening spring, are taken for outliers"
 )
 def test_silverbox_swings_are_no_outliers(realisation: Run) -> None:
-    """A tracker's nonsense comes frame by frame; a misfit that follows the motion is the rig's, and nothing is left out."""
+    """A tracker's nonsense comes frame by frame; a misfit that follows the motion is the rig's, and nothing is left
+    out.
+    """
     record = Record.from_run(realisation)
     *_, left_out = without_outliers(record, fit_record(record))
     assert len(left_out) == 0
