@@ -21,6 +21,7 @@ __all__ = ["NoiseSpectrum", "noise_spectrum"]
 Floats = NDArray[np.float64]
 
 FEWEST_BINS = 20
+MOST_COLUMNS = 400  # for the exact account of what they took from each bin
 NARROWEST = 8  # bins of the lowest window
 MOST_BINS = 60  # of a smoothing window: 120 degrees of freedom, yet narrow enough for coloured noise
 LARGEST_SHARE = 8  # a smoothing window holds at most an eighth of the bins
@@ -60,7 +61,6 @@ def noise_spectrum(
     the resolution to one of them are not used. Raises ValueError where fewer than `FEWEST_BINS` bins are left.
     """
     power = np.abs(grid.spectrum(residual)) ** 2 * grid.size / len(residual)
-    left = 1 - _leverage(fitted, grid)
     frequency = grid.frequency
     usable = np.ones(len(frequency), dtype=bool)
     usable[0] = False
@@ -74,6 +74,13 @@ def noise_spectrum(
     index = np.flatnonzero(usable)
     if len(index) < FEWEST_BINS:
         raise ValueError(f"only {len(index)} bins free of the excitation; {FEWEST_BINS} are needed")
+    if fitted.shape[1] <= MOST_COLUMNS:
+        left = 1 - _leverage(fitted, grid)
+    else:
+        # the fitted lines emptied the bins left out; what they took elsewhere is the rest of the balance
+        n, columns = fitted.shape
+        count = float(np.sum(grid.multiplicity[index]))
+        left = np.full(len(frequency), min(1.0, (n - columns) * grid.size / (n * count)))
     widest = int(np.clip(len(index) // LARGEST_SHARE, FEWEST_BINS, MOST_BINS)) // 2
     totals = [np.concatenate([[0.0], np.cumsum(v[index])]) for v in (power, left)]
     centre = np.searchsorted(index, np.arange(len(frequency)))
@@ -106,6 +113,8 @@ def _differ(ratio: Floats, first: Floats, second: Floats) -> NDArray[np.bool_]:
 
 def _leverage(fitted: Floats, grid: FrameGrid) -> Floats:
     """Share of each bin's power that least squares on the columns `fitted` takes out of white noise (0 to 1)."""
-    orthonormal, _ = np.linalg.qr(fitted / np.maximum(np.linalg.norm(fitted, axis=0), 1e-300))
+    scaled = fitted / np.maximum(np.linalg.norm(fitted, axis=0), 1e-300)
+    gram = scaled.T @ scaled + 1e-10 * np.eye(scaled.shape[1])
+    orthonormal = np.linalg.solve(np.linalg.cholesky(gram), scaled.T).T
     spectrum = grid.spectrum(orthonormal)
     return np.asarray(np.minimum(np.sum(np.abs(spectrum) ** 2, axis=1) * grid.size / len(fitted), 1.0))

@@ -97,7 +97,8 @@ def predict(record: Record, p: MotionParameters) -> Prediction:
     if 3 in free:
         columns.append(-m.gain * rate)
     if 4 in free:
-        columns.append(m.gain * rate * record.stamp)
+        # the exposure scales along, so the mean belongs to its middle
+        columns.append(m.gain * rate * (record.stamp - record.exposure / 2))
     columns.append(np.ones_like(angle))
     if 6 in free:
         columns.extend([decay[:, 0], decay[:, 1]])
@@ -107,7 +108,9 @@ def predict(record: Record, p: MotionParameters) -> Prediction:
 def _motion(record: Record, p: MotionParameters) -> tuple[Floats, Floats, Floats, Floats]:
     m = p.model
     response = HeldResponse(record.drive, m.natural_frequency, m.damping_ratio)
-    unit, rate = response.mean_and_rate(p.clock_ratio * record.stamp - m.delay, record.exposure)
+    unit, rate = response.mean_and_rate(
+        p.clock_ratio * record.stamp - m.delay, record.exposure * p.clock_ratio
+    )
     if not record.free_start:
         return p.rest_angle + m.gain * unit, unit, rate, np.empty((0, 2))
     decay = free_decay(2 * np.pi * m.natural_frequency, m.damping_ratio, record.stamp - record.stamp[0])

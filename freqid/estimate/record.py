@@ -66,7 +66,8 @@ class Record:
             raise EstimationError(
                 f"{run.name}: {int(usable.sum())} readable angle samples; at least {MINIMUM_FRAMES} are needed: record longer"
             )
-        stamp, angle = a.time[usable], a.angle[usable]
+        order = np.argsort(a.time[usable], kind="stable")
+        stamp, angle = a.time[usable][order], a.angle[usable][order]
         if np.ptp(angle) == 0:
             raise EstimationError(f"{run.name}: the angle is constant ({angle[0]:g} {a.angle_unit}): check the sensor")
         if np.ptp(stamp) == 0:

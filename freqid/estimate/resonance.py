@@ -55,7 +55,7 @@ def read_resonance(measured: FrequencyResponse) -> ResonanceReading | str:
         return "the gain has no peak inside the measured band"
     if high - low + 1 < FEWEST_POINTS:
         return (
-            f"{high - low + 1} lines lie on the peak, {FEWEST_POINTS} are needed: choose a longer period, or a longer record"
+            f"only {high - low + 1} of the {FEWEST_POINTS} lines needed lie on the peak: choose a longer period, or a longer record"
         )
     return _parabola(measured, slice(low, high + 1))
 

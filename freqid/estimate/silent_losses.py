@@ -16,6 +16,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from freqid.estimate.outliers import spikes
 from freqid.estimate.record import Record
 from freqid.estimate.record_fit import RecordFit, refine
 
@@ -28,7 +29,7 @@ CLEAR = 30.0
 WHOLE_WITHIN = 0.4  # frames
 MOST_LOSSES = 12
 PASSES = 6
-SPIKE = 5.0  # a single mis-tracked frame must not look like a loss
+SPIKE = 5.0  # robust standard deviations
 
 
 def with_silent_losses(record: Record, fit: RecordFit) -> tuple[Record, RecordFit, Floats]:
@@ -91,7 +92,8 @@ def _best_jump(record: Record, fit: RecordFit, *, least: float) -> int | None:
     # the derivative by the lag is -K rate
     later = -jacobian[:, free.index(3)] * fit.parameters.clock_ratio * record.frame_interval
     basis, _ = np.linalg.qr(jacobian / np.maximum(np.linalg.norm(jacobian, axis=0), 1e-300))
-    residual = _without_spikes(fit.residual)
+    # a single mis-tracked frame must not look like a loss
+    residual = np.where(spikes(fit.residual, farthest=SPIKE), 0.0, fit.residual)
     residual = residual - basis @ (basis.T @ residual)
 
     def from_here_on(values: Floats) -> Floats:
@@ -106,11 +108,3 @@ def _best_jump(record: Record, fit: RecordFit, *, least: float) -> int | None:
     k = int(np.argmax(gained))
     rest = (float(residual @ residual) - gained[k]) / max(len(residual) - basis.shape[1] - 1, 1)
     return k if k > 0 and gained[k] >= CLEAR * rest else None
-
-
-def _without_spikes(residual: Floats) -> Floats:
-    """Single mis-tracked frames set to zero: far off on the whole, and far off their neighbours."""
-    size = np.abs(residual - np.median(residual))
-    far = size > SPIKE * 1.4826 * float(np.median(size))
-    around = np.lib.stride_tricks.sliding_window_view(np.pad(size, 4, mode="reflect"), 9)
-    return np.where(far & (size > SPIKE * np.median(around, axis=1)), 0.0, residual)

@@ -132,6 +132,7 @@ def _multisine(settings: ExciteSettings, rig: Rig, amplitude: float | None) -> P
             sample_rate=rig.output.sample_rate,
             limits=limits_of(rig),
             hold=rig.output.hold,
+            power="informative",
             rigs=rigs_of_the_box(rig),
             margin=SWING_MARGIN,
             amplitude=amplitude,

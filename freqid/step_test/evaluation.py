@@ -7,6 +7,8 @@ its own uncertainty; the pooled uncertainty is the larger of what the weights sa
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -169,10 +171,17 @@ def _pooled(
                 )
             )
             continue
-        pooled[name] = pool(values)
+        pooled[name] = _possible(name, pool(values))
         if pooled[name] is None:
             caveats.append(Caveat(f"no_{name}", _why_missing(name, model)))
     return pooled, caveats
+
+
+def _possible(name: str, quantity: Quantity | None) -> Quantity | None:
+    """An overshoot is not negative, and neither is its interval."""
+    if name != "percent_overshoot" or quantity is None or quantity.interval_95[0] >= 0:
+        return quantity
+    return replace(quantity, value=max(quantity.value, 0.0), interval_95=(0.0, max(quantity.interval_95[1], 0.0)))
 
 
 def _why_missing(name: str, model: SecondOrder) -> str:

@@ -101,14 +101,23 @@ class _Trace:
             good = np.isfinite(self.level)
             if not good.any() or BAND_OVER_NOISE * np.hypot(np.nanmedian(self.noise), self.ends) > band:
                 continue
-            outside = np.flatnonzero(good & (np.abs(self.level - 1) > band))
-            if len(outside) == 0 or outside[-1] + 1 >= len(self.level):
+            noise = float(np.hypot(np.nanmedian(self.noise), self.ends))
+            # an extreme that grazes the band makes the time jump: the noise moves the band's edge
+            times = [self._last_exit(good, band + shift * noise) for shift in (0.0, 1.96, -1.96)]
+            if any(t is None for t in times):
                 continue
-            j = outside[-1] + 1
-            steepness = max(abs(self.slope[j]), abs(self.slope[j - 1]))
-            u = np.hypot(self.noise[j], self.ends) / max(steepness, 1e-12)
-            found[name] = Quantity.finite_or_none(float(self.time[j]), "s", float(u))
+            last, early, late = (float(t) for t in times if t is not None)
+            low, high = min(last, early, late), max(last, early, late)
+            found[name] = Quantity(
+                value=last, unit="s", standard_uncertainty=max((high - low) / 3.92, 1e-9), interval_95=(low, high)
+            )
         return found
+
+    def _last_exit(self, good: NDArray[np.bool_], band: float) -> float | None:
+        outside = np.flatnonzero(good & (np.abs(self.level - 1) > band))
+        if len(outside) == 0 or outside[-1] + 1 >= len(self.level):
+            return None
+        return float(self.time[outside[-1] + 1])
 
     def extremes(self, period: float) -> dict[str, Quantity | None]:
         """Overshoot, peak time, decrement and time constant from the peaks and troughs about the settled level."""

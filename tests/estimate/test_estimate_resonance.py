@@ -94,7 +94,7 @@ def test_intervals_hold_the_truth() -> None:
         (curve(0.12, lines=np.linspace(0.5, 2.8, 60)), "the gain has no peak inside the measured band"),
         (
             curve(0.08, lines=np.arange(0.5, 8.0, 0.25)),
-            "3 lines lie on the peak, 5 are needed: choose a longer period, or a longer record",
+            "only 3 of the 5 lines needed lie on the peak: choose a longer period, or a longer record",
         ),
     ],
 )
