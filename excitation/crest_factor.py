@@ -26,7 +26,9 @@ __all__ = ["crest_factor_of", "lower_peak", "multisine_waveform", "random_phases
 
 _POWERS = (4, 16, 64, 256)
 _OVERSAMPLING = 6  # points per period of the highest line while descending
-_WORK = 2e7  # points times iterations: about a second, however many lines
+_WORK = 6e7  # points times iterations: some seconds, however many lines
+_MOST_ITERATIONS = 100  # with each power
+_NEGLIGIBLE = 1e-15  # a power of the waveform below this is nothing, and may be slow to compute
 
 
 def crest_factor_of(voltage: ArrayLike) -> float:
@@ -86,7 +88,7 @@ def lower_peak(phases: Floats, *, harmonics: NDArray[np.int64], signals: Complex
     from scipy.optimize import minimize
 
     n_samples = 1 << math.ceil(math.log2(_OVERSAMPLING * int(harmonics.max())))
-    iterations = int(np.clip(_WORK / (n_samples * len(signals) * len(_POWERS)), 3, 100))
+    iterations = int(np.clip(_WORK / (n_samples * len(signals) * len(_POWERS)), 3, _MOST_ITERATIONS))
     best = np.asarray(phases, dtype=np.float64)
     best_peak = _peak(best, harmonics, signals, n_samples)
     current = best
@@ -123,9 +125,19 @@ def _log_norm(
     waveform = _waveforms(phases, harmonics, signals, n_samples)
     peak = np.max(np.abs(waveform))
     relative = waveform / peak
-    odd_power = relative ** (power - 1)  # p is even: the sign survives
+    odd_power = _odd_power(relative, power)
     total = float(np.sum(odd_power * relative))
     # d x[i] / d phi_k = Re(j c_k exp(j(2 pi n_k i / N + phi_k))): one transform for all lines
     transform = np.fft.rfft(odd_power, axis=1)[:, harmonics]
     slope = np.sum(np.real(1j * signals * np.exp(1j * phases) * np.conj(transform)), axis=0)
     return math.log(peak) + math.log(total) / power, slope / (peak * total)
+
+
+def _odd_power(relative: Floats, power: int) -> Floats:
+    """To the power p - 1, for p a power of two: the product of the repeated squares below p; its sign survives."""
+    square = np.where(np.abs(relative) < _NEGLIGIBLE ** (1 / power), 0.0, relative)
+    product = square.copy()
+    for _ in range(power.bit_length() - 2):
+        square = square * square
+        product *= square
+    return product

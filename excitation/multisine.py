@@ -12,19 +12,24 @@ chapters 2 and 5.
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 
 from excitation.amplitude import scaled_to_limits
 from excitation.crest_factor import lower_peak, multisine_waveform, random_phases, schroeder_phases
 from excitation.errors import ExcitationError
 from excitation.multisine_layout import MultisineLayout, MultisineSettings, lay_out_multisine
+from excitation.power_allocation import informative_amplitudes, logarithmic_variance
 from excitation.profile import Floats, Profile
 from excitation.rig_model import Complexes, response_of
-from excitation.swing import hold_response
+from excitation.swing import hold_response, worst_swing
 from excitation.timing import fade_in
 
 __all__ = ["design_multisine"]
 
+_ROUNDS = (6, 20)  # of the allocation: smooth, and close to what smooth phases still allow
+_ONSETS = 16  # places of the period tried to begin with
 _RIGS_WEIGHED = 9  # whose angle the phases take into account
 
 
@@ -39,11 +44,20 @@ def design_multisine(settings: MultisineSettings) -> Profile:
         The amplitude asked for passes a limit.
     """
     layout = lay_out_multisine(settings)
-    amplitudes = _line_amplitudes(settings, layout)
+    designs = [_with_amplitudes(settings, layout, amplitudes) for amplitudes in _amplitudes_to_try(settings, layout)]
+    if len(designs) == 1:
+        return designs[0]
+    return min(designs, key=lambda profile: _uncertainty(profile, layout, settings))
+
+
+def _with_amplitudes(settings: MultisineSettings, layout: MultisineLayout, amplitudes: Floats) -> Profile:
+    """The multisine with the given relative amplitudes (F,), as large as allowed."""
     phases = _choose_phases(settings, layout, amplitudes)
     period = multisine_waveform(
         amplitudes * np.exp(1j * phases), harmonics=layout.harmonics, n_samples=layout.period_samples
     )
+    if settings.phases == "low-peak" and settings.rigs:
+        period = np.roll(period, -_quietest_onset(period, layout, settings))
     unscaled = Profile(
         voltage=settings.limits.bias + _with_ramps(period, layout) / np.max(np.abs(period)),
         sample_rate=settings.sample_rate,
@@ -56,17 +70,33 @@ def design_multisine(settings: MultisineSettings) -> Profile:
         steady_stop=layout.steady_stop,
         seed=settings.seed,
         band=settings.band,
-        settings={"grid": settings.grid, "phases": settings.phases, "margin": settings.margin},
+        settings={"grid": settings.grid, "phases": settings.phases, "power": settings.power, "margin": settings.margin},
     )
     return scaled_to_limits(
         unscaled, settings.limits, settings.rigs, margin=settings.margin, amplitude=settings.amplitude
     )
 
 
-def _line_amplitudes(settings: MultisineSettings, layout: MultisineLayout) -> Floats:
+def _amplitudes_to_try(settings: MultisineSettings, layout: MultisineLayout) -> list[Floats]:
+    """Relative amplitudes of the lines, (F,) each: which is best shows once they have phases."""
     n_lines = layout.lines.size
-    if settings.line_amplitudes is None:
-        return np.ones(n_lines)
+    if settings.line_amplitudes is not None:
+        return [_given_amplitudes(settings, n_lines)]
+    if settings.power == "flat" or not settings.rigs:
+        return [np.ones(n_lines)]
+    costs = np.abs(_limited_signals(settings, layout, np.ones(n_lines))) ** 2
+    rigs = settings.rigs[:_RIGS_WEIGHED]
+    return [informative_amplitudes(layout.lines, rigs, costs=costs, rounds=rounds) for rounds in _ROUNDS]
+
+
+def _uncertainty(profile: Profile, layout: MultisineLayout, settings: MultisineSettings) -> float:
+    """What the allocation minimises, at the amplitudes that the limits let through."""
+    period = profile.voltage[profile.steady_start : profile.steady_start + layout.period_samples] - profile.bias
+    amplitudes = np.abs(np.fft.rfft(period))[layout.harmonics] * (2 / period.size)
+    return logarithmic_variance(amplitudes, layout.lines, settings.rigs[:_RIGS_WEIGHED])
+
+
+def _given_amplitudes(settings: MultisineSettings, n_lines: int) -> Floats:
     amplitudes = np.asarray(settings.line_amplitudes, dtype=np.float64)
     if amplitudes.shape != (n_lines,):
         raise ExcitationError(
@@ -96,6 +126,21 @@ def _limited_signals(settings: MultisineSettings, layout: MultisineLayout, ampli
     voltage = np.full(lines.size, 1 / (limits.voltage - abs(limits.bias)))
     slope = 2j * np.pi * lines / limits.slew_rate
     return np.asarray(amplitudes * np.array([voltage, slope, *angles]), dtype=np.complex128)
+
+
+def _quietest_onset(period: Floats, layout: MultisineLayout, settings: MultisineSettings) -> int:
+    """Sample of the period to begin with, so that onset and end swing the rigs least beyond the steady swing."""
+    short = replace(layout, n_periods=1, n_samples=layout.n_samples - (layout.n_periods - 1) * layout.period_samples)
+    starts = [layout.period_samples * n // _ONSETS for n in range(_ONSETS)]
+
+    def swing(start: int) -> float:
+        departure = _with_ramps(np.roll(period, -start), short)
+        profile = Profile(
+            voltage=departure, sample_rate=settings.sample_rate, hold=settings.hold, bias=0.0, kind="multisine"
+        )
+        return worst_swing(profile, settings.rigs[:_RIGS_WEIGHED])
+
+    return min(starts, key=swing)
 
 
 def _with_ramps(period: Floats, layout: MultisineLayout) -> Floats:

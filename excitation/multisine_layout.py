@@ -24,13 +24,16 @@ from excitation.profile import Floats, Hold
 from excitation.rig_model import RigModel, find_resonance
 from excitation.timing import check_timing, lead_in_samples, ring_down_time
 
-__all__ = ["Grid", "MultisineLayout", "MultisineSettings", "Phases", "lay_out_multisine"]
+__all__ = ["Grid", "MultisineLayout", "MultisineSettings", "Phases", "Power", "lay_out_multisine"]
 
 Grid = Literal["full", "odd", "odd-gapped"]
 Phases = Literal["low-peak", "random", "schroeder"]
+Power = Literal["flat", "informative"]
 
-_RAMP = 0.25  # of a period, each way
+_RAMP = 0.25  # of a period, each way, at most
+_RAMP_WIDTHS = 1.0  # over the half-power width of the resonance: about 3 of its time constants, at most
 _MOST_PERIODS, _FEWEST_PERIODS, _PERIODS_WITHOUT_RIG = 6, 3, 4
+_LONGEST_PERIOD = 3  # times the one that resolves the resonance: a longer one only holds more lines, and more work
 _LINES_PER_WIDTH = 4.0  # lines within the half-power width of the resonance, where the duration allows
 _FEWEST_LINES = 3
 _GAP_GROUP = 4  # one of so many odd lines is left out
@@ -56,6 +59,8 @@ class MultisineSettings:
         Which multiples of 1/period are excited.
     phases : "low-peak", "random" or "schroeder"
         "low-peak" starts from random phases and lowers the peak of whatever limits the amplitude.
+    power : "flat" or "informative"
+        "informative" gives the lines the power that tells most of damping ratio and natural frequency; flat without rigs.
     rigs : sequence of RigModel
         All that the true rig may be, the likeliest first; without any the swing is not limited.
     margin : float
@@ -65,7 +70,7 @@ class MultisineSettings:
     period : float or None
         s; None to choose it from the duration and the width of the resonance.
     line_amplitudes : (F,) array or None
-        Relative amplitude of each line of `lay_out_multisine`; None for a flat spectrum.
+        Relative amplitude of each line of `lay_out_multisine`; None for what `power` says.
     seed : int
         Of the random phases and gaps.
     """
@@ -77,6 +82,7 @@ class MultisineSettings:
     hold: Hold = "zero-order"
     grid: Grid = "odd"
     phases: Phases = "low-peak"
+    power: Power = "flat"
     rigs: Sequence[RigModel] = ()
     margin: float = 0.9
     amplitude: float | None = field(default=None, metadata={"unit": "V"})
@@ -106,7 +112,7 @@ class MultisineLayout:
 def lay_out_multisine(settings: MultisineSettings) -> MultisineLayout:
     """Choose period, number of periods and lines.
 
-    With a rig, as many periods (6 to 3) as leave 4 excited lines within the half-power width of its
+    With a rig, as many periods (3 to 6, more in a long test) as leave 4 excited lines within the half-power width of its
     resonance; without one, 4.
 
     Raises
@@ -122,7 +128,7 @@ def lay_out_multisine(settings: MultisineSettings) -> MultisineLayout:
     rest = round(ring_down_time(settings.rigs, band=settings.band, duration=settings.duration) * rate)
     period, n_periods = _choose_period(settings, available=n_samples - lead - rest)
     harmonics = _choose_harmonics(settings, period)
-    ramp = round(_RAMP * period)
+    ramp = min(round(_RAMP * period), _longest_ramp(settings))
     return MultisineLayout(
         n_samples=n_samples,
         period_samples=period,
@@ -138,6 +144,7 @@ def _check_choices(settings: MultisineSettings) -> None:
     for name, value, allowed in (
         ("grid", settings.grid, get_args(Grid)),
         ("phases", settings.phases, get_args(Phases)),
+        ("power", settings.power, get_args(Power)),
     ):
         if value not in allowed:
             raise ExcitationError(f"{name}: {value!r} is none of {', '.join(allowed)}")
@@ -160,8 +167,19 @@ def _choose_period(settings: MultisineSettings, *, available: int) -> tuple[int,
     wanted = _wanted_period(settings)
     if wanted is not None:
         fitting = math.floor(available / (wanted * settings.sample_rate) - ramps)
-        n_periods = min(_MOST_PERIODS, max(_FEWEST_PERIODS, fitting))
-    return math.floor(available / (n_periods + ramps)), n_periods
+        most = max(_MOST_PERIODS, fitting // _LONGEST_PERIOD)
+        n_periods = min(most, max(_FEWEST_PERIODS, fitting))
+    quarters = math.floor(available / (n_periods + ramps))
+    return max(quarters, math.floor((available - 2 * _longest_ramp(settings)) / n_periods)), n_periods
+
+
+def _longest_ramp(settings: MultisineSettings) -> int:
+    """Samples of the longest ramp worth its time: until the resonance has followed, any where none is known."""
+    low, high = settings.band
+    resonance = find_resonance(settings.rigs[0], band=(low / 4, high * 4)) if settings.rigs else None
+    if resonance is None:
+        return round(settings.duration * settings.sample_rate)
+    return max(2, round(_RAMP_WIDTHS / resonance.half_power_width * settings.sample_rate))
 
 
 def _wanted_period(settings: MultisineSettings) -> float | None:

@@ -103,5 +103,5 @@ def test_bad_settings_are_refused(limits: Limits, vane: Vane) -> None:
         design_swept_sine(_settings(limits, course="cubic"))
     with pytest.raises(ExcitationError, match="half the sample rate"):
         design_swept_sine(_settings(limits, band=(1.0, 300.0)))
-    with pytest.raises(LimitExceeded, match=r"2 V asked for, .* the most the limit on the swing allows"):
+    with pytest.raises(LimitExceeded, match=r"2 V asked for, but the predicted swing would be .* of 27 allowed"):
         design_swept_sine(_settings(limits, amplitude=2.0, rigs=[vane]))
