@@ -27,6 +27,7 @@ from freqid.estimate.periodic import periodic_response
 from freqid.estimate.prediction import angle_only
 from freqid.estimate.record import Record
 from freqid.estimate.record_fit import RecordFit
+from freqid.estimate.structures import BetterStructure, find_better_structure
 from freqid.quantity import Caveat, Quantity
 from freqid.records import Run
 
@@ -63,13 +64,15 @@ def identify(run: Run, *, method: Method = "auto") -> Identification:
         record = replace(record, periodicity=None)
     motion = estimate_motion(record)
     record, weighted = motion.record, motion.weighted
-    response, adequacy = _response(motion)
+    response, adequacy, independent = _response(motion)
     covariance = parameter_covariance(weighted)
     caveats = [*record.caveats, *motion.caveats, *response.caveats, *_sign_caveats(record, weighted.fit)]
     if np.isfinite(adequacy.p_value) and not adequacy.adequate:
+        better = find_better_structure(response, weighted.fit.parameters.model, use=independent)
+        adequacy = replace(adequacy, better_structure=None if better is None else better.name)
         if response.method == "periodic":
             covariance = covariance * max(1.0, adequacy.statistic / adequacy.degrees_of_freedom)
-        caveats.append(_inadequate(adequacy))
+        caveats.append(_inadequate(adequacy, better))
     if weighted.fit.explained < POORLY_EXPLAINED:
         caveats.append(
             Caveat(
@@ -101,16 +104,18 @@ def identify(run: Run, *, method: Method = "auto") -> Identification:
     )
 
 
-def _response(motion: Motion) -> tuple[FrequencyResponse, Adequacy]:
+def _response(motion: Motion) -> tuple[FrequencyResponse, Adequacy, NDArray[np.bool_]]:
+    """The response, the test of the model against it, and which of its points are independent of each other."""
     record, fit = motion.record, motion.weighted.fit
     model = fit.parameters.model
     if motion.lines is not None:
         measured, freedom = periodic_response(record, fit, motion.lines)
-        return measured, lack_of_fit(measured, model, noise_freedom=freedom)
+        every = np.ones(len(measured.frequency), dtype=bool)
+        return measured, lack_of_fit(measured, model, noise_freedom=freedom), every
     measured, independent = local_polynomial_response(record, fit)
     pooled = _pool_noise(measured, independent)
     freedom = float(np.sum(measured.degrees_of_freedom[independent]))
-    return measured, lack_of_fit(pooled, model, noise_freedom=freedom, use=independent)
+    return measured, lack_of_fit(pooled, model, noise_freedom=freedom, use=independent), independent
 
 
 def _pool_noise(measured: FrequencyResponse, independent: NDArray[np.bool_]) -> FrequencyResponse:
@@ -126,14 +131,19 @@ def _pool_noise(measured: FrequencyResponse, independent: NDArray[np.bool_]) -> 
     return replace(measured, variance=variance, degrees_of_freedom=freedom)
 
 
-def _inadequate(adequacy: Adequacy) -> Caveat:
+def _inadequate(adequacy: Adequacy, better: BetterStructure | None) -> Caveat:
     excess = np.sqrt(adequacy.statistic / adequacy.degrees_of_freedom)
     chance = f"= {adequacy.p_value:.2g}" if adequacy.p_value > 1e-6 else "< 1e-6"
+    hint = "look at the residuals for nonlinearity or further dynamics."
+    if better is not None:
+        hint = (
+            f"a model with {'an' if better.name[0] in 'ae' else 'a'} {better.name} (at {better.frequency:.3g} Hz) does better "
+            f"(information criterion smaller by {better.gained:.3g})."
+        )
     return Caveat(
         "model_inadequate",
         f"A second-order model does not describe the response within its noise: the misfit is {excess:.3g} times what noise "
-        f"alone would give (p {chance}). The intervals contain the misfit; look at the residuals for nonlinearity or "
-        "further dynamics.",
+        f"alone would give (p {chance}). The intervals contain the misfit; {hint}",
     )
 
 
