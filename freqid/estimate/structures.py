@@ -7,7 +7,8 @@
 
 each with its own delay, by weighted least squares on the response with its measured variances. The one with the smallest Bayesian information
 criterion  chi-square + (number of parameters) ln(2 F)  is named, if it is smaller by more than 10 than that of the second-order model
-("very strong" evidence by Kass & Raftery) and the structure itself is not much worse than its noise.
+("very strong" evidence by Kass & Raftery) and the structure itself comes near the noise: a nonlinear rig is not talked into a
+second mode.
 
 Source: G. Schwarz, Ann. Statist. 6 (1978) 461-464; R. Kass & A. Raftery, JASA 90 (1995) 773-795.
 """
@@ -28,6 +29,7 @@ __all__ = ["BetterStructure", "find_better_structure"]
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
 CLEARLY = 10.0
+DESCRIBES = 2.0  # mean squared misfit in units of the noise: above it the structure only covers up something else
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -67,6 +69,9 @@ def find_better_structure(
         if found is None:
             continue
         criterion, vector = found
+        points = 2 * len(f)
+        if criterion - len(vector) * np.log(points) > DESCRIBES * max(points - len(vector), 1):
+            continue
         gained = second[0] - criterion
         if gained > CLEARLY and (best is None or gained > best.gained):
             best = BetterStructure(name=structure.name, frequency=structure.adds(vector), gained=gained)
