@@ -16,6 +16,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from freqid import resonance_relations, step_relations
+from freqid.published_measurements import MEASUREMENT_QUANTITIES
 from freqid.second_order import SecondOrder
 
 __all__ = ["QUANTITIES"]
@@ -224,4 +225,5 @@ QUANTITIES: Mapping[str, Callable[..., float]] = {
     "harmonic_advance": _harmonic_advance,
     **_gain_and_delay("exposure", _exposure_response),
     **_gain_and_delay("hold", _hold_response),
+    **MEASUREMENT_QUANTITIES,
 }

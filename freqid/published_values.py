@@ -18,7 +18,14 @@ from typing import Any
 from freqid.errors import FreqidError
 from freqid.published_quantities import QUANTITIES
 
-__all__ = ["STATUSES", "PublishedValue", "ValueCheck", "check_published_values", "read_published_values"]
+__all__ = [
+    "STATUSES",
+    "PublishedValue",
+    "ValueCheck",
+    "check_published_values",
+    "read_published_values",
+    "reference_folder",
+]
 
 STATUSES = ("confirmed", "from memory", "common practice", "derived identity")
 NEEDED = ("row", "quantity", "published", "unit", "rounding", "tolerance", "tolerance_reason", "status", "source")
@@ -57,16 +64,22 @@ class PublishedValue:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class ValueCheck:
-    """A published value beside the value computed here, in the same unit."""
+    """A published value beside the value computed here, in the same unit.
+
+    Where the computation failed `computed` is NaN, which passes nowhere, and `fault` says why.
+    """
 
     entry: PublishedValue
     computed: float
+    fault: str = ""
 
     @property
     def deviation(self) -> float:
         """Published minus computed, in the unit of the entry; for a rule of thumb in percent of the computed value."""
         difference = self.entry.published - self.computed
-        return difference if self.entry.rule_error_percent is None else 100 * difference / self.computed
+        if self.entry.rule_error_percent is None:
+            return difference
+        return 100 * difference / self.computed if self.computed else math.inf
 
     @property
     def passed(self) -> bool:
@@ -77,7 +90,14 @@ class ValueCheck:
 def check_published_values(entries: Iterable[PublishedValue] | None = None) -> Iterator[ValueCheck]:
     """Compute each entry's quantity, one at a time; all entries of `reference_data` unless told."""
     for entry in read_published_values() if entries is None else entries:
-        yield ValueCheck(entry=entry, computed=float(QUANTITIES[entry.quantity](**entry.inputs)))
+        yield _check(entry)
+
+
+def _check(entry: PublishedValue) -> ValueCheck:
+    try:
+        return ValueCheck(entry=entry, computed=float(QUANTITIES[entry.quantity](**entry.inputs)))
+    except Exception as fault:  # whatever keeps a value from being computed is a value missed, not the end of the check
+        return ValueCheck(entry=entry, computed=math.nan, fault=f"{type(fault).__name__}: {fault}")
 
 
 def read_published_values(folder: Path | None = None) -> tuple[PublishedValue, ...]:
@@ -90,15 +110,15 @@ def read_published_values(folder: Path | None = None) -> tuple[PublishedValue, .
     FreqidError
         The folder or its files are missing, or an entry is not as the format asks.
     """
-    folder = _reference_folder() if folder is None else folder
+    folder = reference_folder() if folder is None else folder
     files = sorted(folder.glob("*.toml"))
     if not files:
         raise FreqidError(f"{folder}: no reference values (*.toml) there; install the program anew")
     return tuple(value for file in files for value in _read_file(file))
 
 
-def _reference_folder() -> Path:
-    """Within the installed package; beside it in a checkout."""
+def reference_folder() -> Path:
+    """Where the reference data lie: within the installed package; beside it in a checkout."""
     package = Path(__file__).parent
     inside = package / "reference_data"
     return inside if inside.is_dir() else package.parent / "reference_data"

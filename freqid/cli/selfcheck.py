@@ -2,34 +2,74 @@
 
 from __future__ import annotations
 
+import math
+import time
 from collections.abc import Sequence
 from itertools import groupby
+from pathlib import Path
 
 import click
 
 from freqid.cli.options import json_option
-from freqid.cli.output import print_json, print_table
-from freqid.published_values import ValueCheck, check_published_values
+from freqid.cli.output import print_json, print_table, say
+from freqid.published_values import ValueCheck, check_published_values, reference_folder
 
 __all__ = ["command"]
+
+COLUMNS = ("row", "quantity", "published", "computed", "deviation", "allowed", "")
 
 
 @click.command("selfcheck")
 @json_option
-def command(as_json: bool) -> int:
+@click.option(
+    "--report",
+    type=click.Path(path_type=Path, dir_okay=False),
+    help="Also write a page to sign: machine, versions, date, values and the SHA-256 of every file (HTML).",
+)
+def command(as_json: bool, report: Path | None) -> int:
     """Recompute the published values in reference_data with this installation and print both.
 
-    Exit status 1 where one is missed. Example: freqid selfcheck
+    Exit status 1 where one is missed. Example: freqid selfcheck --report selfcheck.html
     """
+    begun = time.perf_counter()
     checks = list(check_published_values())
-    failed = sum(not check.passed for check in checks)
+    seconds = time.perf_counter() - begun
     if as_json:
-        print_json({"format": "freqid selfcheck", "format_version": 1, "failed": failed, "values": _as_json(checks)})
+        print_json(_as_json(checks, seconds))
     else:
-        for source, group in groupby(checks, key=lambda check: check.entry.file):
-            print_table([_row(c) for c in group], columns=("row", "quantity", "published", "computed", "deviation", "allowed", ""), title=source)  # noqa: E501
-        click.echo(f"{len(checks)} published values, {failed} missed")
-    return 1 if failed else 0
+        _print_groups(checks)
+        click.echo(_summary(checks, seconds))
+    if report is not None:
+        _write_report(report, checks)
+        say(f"wrote {report}")
+    return 0 if all(check.passed for check in checks) else 1
+
+
+def _print_groups(checks: Sequence[ValueCheck]) -> None:
+    for file, group in groupby(checks, key=lambda check: check.entry.file):
+        print_table([_row(check) for check in group], columns=COLUMNS, title=file)
+
+
+def _summary(checks: Sequence[ValueCheck], seconds: float) -> str:
+    missed = sum(not check.passed for check in checks)
+    sources, groups = _counts(checks)
+    return (
+        f"{len(checks)} published values from {sources} sources in {groups} groups, {missed} missed "
+        f"({seconds:.1f} s)"
+    )
+
+
+def _counts(checks: Sequence[ValueCheck]) -> tuple[int, int]:
+    """Different sources, and groups (one for each file)."""
+    return len({check.entry.source for check in checks}), len({check.entry.file for check in checks})
+
+
+def _write_report(report: Path, checks: Sequence[ValueCheck]) -> None:
+    from freqid.installation import inspect_installation
+    from freqid.selfcheck_page import selfcheck_page
+    from freqid.test_folder import write_text
+
+    write_text(report, selfcheck_page(checks, inspect_installation(reference_folder())))
 
 
 def _row(check: ValueCheck) -> tuple[str, ...]:
@@ -38,26 +78,41 @@ def _row(check: ValueCheck) -> tuple[str, ...]:
         entry.row,
         entry.quantity,
         f"{entry.published:g} {entry.unit}",
-        f"{check.computed:.7g}",
+        check.fault or f"{check.computed:.7g}",
         f"{check.deviation:+.2g}",
         f"±{entry.tolerance:g}",
         "pass" if check.passed else "MISSED",
     )
 
 
-def _as_json(checks: Sequence[ValueCheck]) -> list[dict[str, object]]:
-    return [
-        {
-            "file": c.entry.file,
-            "row": c.entry.row,
-            "quantity": c.entry.quantity,
-            "published": c.entry.published,
-            "computed": c.computed,
-            "deviation": c.deviation,
-            "tolerance": c.entry.tolerance,
-            "status": c.entry.status,
-            "source": c.entry.source,
-            "passed": c.passed,
-        }
-        for c in checks
-    ]
+def _as_json(checks: Sequence[ValueCheck], seconds: float) -> dict[str, object]:
+    sources, groups = _counts(checks)
+    return {
+        "format": "freqid selfcheck",
+        "format_version": 1,
+        "failed": sum(not check.passed for check in checks),
+        "sources": sources,
+        "groups": groups,
+        "seconds": seconds,
+        "values": [_value_as_json(check) for check in checks],
+    }
+
+
+def _value_as_json(check: ValueCheck) -> dict[str, object]:
+    entry = check.entry
+    return {
+        "file": entry.file,
+        "row": entry.row,
+        "quantity": entry.quantity,
+        "inputs": dict(entry.inputs),
+        "published": entry.published,
+        "unit": entry.unit,
+        "computed": check.computed if math.isfinite(check.computed) else None,
+        "deviation": check.deviation if math.isfinite(check.deviation) else None,
+        "fault": check.fault or None,
+        "tolerance": entry.tolerance,
+        "rule_error_percent": entry.rule_error_percent,
+        "status": entry.status,
+        "source": entry.source,
+        "passed": check.passed,
+    }
