@@ -21,7 +21,7 @@ __all__ = ["NoiseSpectrum", "noise_spectrum"]
 Floats = NDArray[np.float64]
 
 FEWEST_BINS = 20
-MOST_COLUMNS = 400  # for the exact account of what they took from each bin
+MOST_ELEMENTS = 1_000_000  # of the fitted columns, for the exact account of what they took from each bin
 NARROWEST = 8  # bins of the lowest window
 MOST_BINS = 60  # of a smoothing window: 120 degrees of freedom, yet narrow enough for coloured noise
 LARGEST_SHARE = 8  # a smoothing window holds at most an eighth of the bins
@@ -74,7 +74,7 @@ def noise_spectrum(
     index = np.flatnonzero(usable)
     if len(index) < FEWEST_BINS:
         raise ValueError(f"only {len(index)} bins free of the excitation; {FEWEST_BINS} are needed")
-    if fitted.shape[1] <= MOST_COLUMNS:
+    if harmonic is None or fitted.size <= MOST_ELEMENTS:
         left = 1 - _leverage(fitted, grid)
     else:
         # the fitted lines emptied the bins left out; what they took elsewhere is the rest of the balance

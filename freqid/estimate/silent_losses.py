@@ -16,6 +16,8 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from freqid.estimate.frame_grid import FrameGrid
+from freqid.estimate.noise_spectrum import noise_spectrum
 from freqid.estimate.outliers import spikes
 from freqid.estimate.record import Record
 from freqid.estimate.record_fit import RecordFit, refine
@@ -49,6 +51,7 @@ def with_silent_losses(record: Record, fit: RecordFit) -> tuple[Record, RecordFi
     if not found:
         return record, fit, np.empty(0)
     found, moved, again = _settled(record, again, found)
+    found, moved, again = _verified(record, moved, again, found)
     if not found or again.sum_of_squares >= fit.sum_of_squares:
         return record, fit, np.empty(0)
     return moved, again, moved.stamp[found]
@@ -81,6 +84,28 @@ def _settled(record: Record, fit: RecordFit, found: list[int]) -> tuple[list[int
         if found == before:
             break
     return found, moved, again
+
+
+def _verified(
+    record: Record, moved: Record, fit: RecordFit, found: list[int]
+) -> tuple[list[int], Record, RecordFit]:
+    """Keep a loss only where it gains more than the loudest part of the noise could: slow noise looks like wandering time."""
+    grid = FrameGrid.from_stamps(moved.stamp)
+    try:
+        noise = noise_spectrum(fit.residual, grid, fitted=fit.prediction.jacobian)
+    except ValueError:
+        return [], record, fit
+    loudest = float(np.max(noise.level[grid.frequency > 0]))
+    kept = []
+    for k in found:
+        others = list(found)
+        others.remove(k)
+        without = _corrected(record, fit, others)[1]
+        if without.sum_of_squares - fit.sum_of_squares >= CLEAR * loudest:
+            kept.append(k)
+    if kept == found:
+        return found, moved, fit
+    return kept, *_corrected(record, fit, kept)
 
 
 def _best_jump(record: Record, fit: RecordFit, *, least: float) -> int | None:

@@ -6,6 +6,7 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+from scipy.signal import lfilter
 
 from freqid.capture.simulated_rig import SimulatedRig, SimulatedSensor
 from freqid.estimate.identification import identify
@@ -81,3 +82,13 @@ def test_a_lost_frame_on_one_converter_is_not_looked_for(clean: Run) -> None:
         ),
     )
     assert len(identify(close_up(together, [])).model.clock.silently_lost_at) == 0
+
+
+def test_slow_noise_is_not_taken_for_lost_frames(clean: Run) -> None:
+    """Noise of first order below 1 Hz, 0.5 deg, wanders like a wandering clock; no frame is claimed lost in five records."""
+    pole = np.exp(-2 * np.pi / 60)
+    for seed in range(5):
+        white = np.random.default_rng(seed).standard_normal(len(clean.angle.time) + 300)
+        slow = 0.5 * lfilter([np.sqrt(1 - pole**2)], [1, -pole], white)[300:]
+        noisy = replace(clean, angle=replace(clean.angle, angle=clean.angle.angle + slow))
+        assert len(identify(noisy).model.clock.silently_lost_at) == 0
