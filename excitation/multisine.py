@@ -30,6 +30,7 @@ __all__ = ["design_multisine"]
 
 _ROUNDS = (6, 20)  # of the allocation: smooth, and close to what smooth phases still allow
 _ONSETS = 16  # places of the period tried to begin with
+_ONSET_POINTS = 16  # per period of the highest line, while these are compared
 _RIGS_WEIGHED = 9  # whose angle the phases take into account
 
 
@@ -130,17 +131,24 @@ def _limited_signals(settings: MultisineSettings, layout: MultisineLayout, ampli
 
 def _quietest_onset(period: Floats, layout: MultisineLayout, settings: MultisineSettings) -> int:
     """Sample of the period to begin with, so that onset and end swing the rigs least beyond the steady swing."""
-    short = replace(layout, n_periods=1, n_samples=layout.n_samples - (layout.n_periods - 1) * layout.period_samples)
-    starts = [layout.period_samples * n // _ONSETS for n in range(_ONSETS)]
+    # on a coarser grid, which holds every line: the place is sought here, the swing is computed when it is scaled
+    n_coarse = min(layout.period_samples, _ONSET_POINTS * int(layout.harmonics.max()))
+    coarse = np.fft.irfft(np.fft.rfft(period)[: n_coarse // 2 + 1], n_coarse)
+    part = n_coarse / layout.period_samples
+    rests = round((layout.n_samples - layout.n_periods * layout.period_samples) * part) + 1
+    ramp = max(2, round(layout.ramp_samples * part))
+    start = round((layout.steady_start - layout.ramp_samples) * part) + ramp
+    short = replace(
+        layout, n_periods=1, n_samples=n_coarse + rests, period_samples=n_coarse, ramp_samples=ramp, steady_start=start
+    )
 
-    def swing(start: int) -> float:
-        departure = _with_ramps(np.roll(period, -start), short)
-        profile = Profile(
-            voltage=departure, sample_rate=settings.sample_rate, hold=settings.hold, bias=0.0, kind="multisine"
-        )
+    def swing(place: int) -> float:
+        departure = _with_ramps(np.roll(coarse, -round(n_coarse * place / _ONSETS)), short)
+        rate = settings.sample_rate * part
+        profile = Profile(voltage=departure, sample_rate=rate, hold="smooth", bias=0.0, kind="multisine")
         return worst_swing(profile, settings.rigs[:_RIGS_WEIGHED])
 
-    return min(starts, key=swing)
+    return layout.period_samples * min(range(_ONSETS), key=swing) // _ONSETS
 
 
 def _with_ramps(period: Floats, layout: MultisineLayout) -> Floats:

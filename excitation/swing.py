@@ -65,9 +65,14 @@ def predicted_angle(profile: Profile, rig: RigModel) -> PredictedAngle:
     ExcitationError
         The model of the rig has no finite response at some frequency.
     """
+    return _predicted(profile, rig, {})
+
+
+def _predicted(profile: Profile, rig: RigModel, held: dict[int, Complexes]) -> PredictedAngle:
+    """As `predicted_angle`; `held` keeps the spectra of the voltage, by padded length, from one rig to the next."""
     padding = max(1.0, profile.duration / 4)
     for _ in range(_MAX_DOUBLINGS):
-        predicted = angle_with_rest(profile, rig, padding=padding)
+        predicted = _angle_with_rest(profile, rig, padding=padding, held=held)
         if predicted.remainder <= NEGLIGIBLE_TAIL * np.max(np.abs(predicted.angle)):
             return PredictedAngle(time=predicted.time, angle=predicted.angle, remainder=0.0)
         padding *= 2
@@ -78,16 +83,24 @@ def predicted_angle(profile: Profile, rig: RigModel) -> PredictedAngle:
 
 def angle_with_rest(profile: Profile, rig: RigModel, *, padding: float) -> PredictedAngle:
     """Angle that the profile will cause if it repeats after a rest of `padding` s or a little more."""
+    return _angle_with_rest(profile, rig, padding=padding, held={})
+
+
+def _angle_with_rest(
+    profile: Profile, rig: RigModel, *, padding: float, held: dict[int, Complexes]
+) -> PredictedAngle:
     deviation, rate = profile.voltage - profile.bias, profile.sample_rate
     n_padded = fast_length(deviation.size + math.ceil(padding * rate))
-    spectrum = _angle_spectrum(deviation, rig, rate=rate, n_padded=n_padded, hold=profile.hold)
+    if n_padded not in held:
+        held[n_padded] = _held_spectrum(deviation, rate=rate, n_padded=n_padded, hold=profile.hold)
+    spectrum = _angle_spectrum(held[n_padded], rig, rate=rate, n_padded=n_padded)
     highest = _highest_significant(spectrum)
     if profile.hold == "zero-order" and _POINTS_PER_PERIOD * highest > n_padded:
         # the staircase has content above half its rate: the same staircase with finer steps shows it
         finer = math.ceil(_POINTS_PER_PERIOD * highest / n_padded)
-        spectrum = _angle_spectrum(
-            np.repeat(deviation, finer) / finer, rig, rate=finer * rate, n_padded=finer * n_padded, hold=profile.hold
-        )
+        steps = np.repeat(deviation, finer) / finer
+        fine = _held_spectrum(steps, rate=finer * rate, n_padded=finer * n_padded, hold=profile.hold)
+        spectrum = _angle_spectrum(fine, rig, rate=finer * rate, n_padded=finer * n_padded)
         highest = _highest_significant(spectrum)
     n_points = fast_length(max(_POINTS_PER_PERIOD * highest, 1000))
     angle = np.fft.irfft(spectrum[: n_points // 2], n_points) * (n_points / n_padded)
@@ -111,7 +124,8 @@ def worst_swing(profile: Profile, rigs: Sequence[RigModel]) -> float:
     """
     if not rigs:
         raise ExcitationError("worst_swing: no model of the rig; give at least one")
-    return max(predicted_swing(profile, rig) for rig in rigs)
+    held: dict[int, Complexes] = {}
+    return max(_predicted(profile, rig, held).swing for rig in rigs)
 
 
 def check_swing(profile: Profile, rigs: Sequence[RigModel], limits: Limits, *, margin: float = 0.9) -> float:
@@ -152,10 +166,18 @@ def hold_response(frequency: Floats, *, step: float, hold: Hold) -> Complexes:
     return np.asarray(np.sinc(frequency * step) * np.exp(-1j * np.pi * frequency * step))
 
 
-def _angle_spectrum(deviation: Floats, rig: RigModel, *, rate: float, n_padded: int, hold: Hold) -> Complexes:
-    frequency: Floats = np.arange(n_padded // 2 + 1, dtype=np.float64) * (rate / n_padded)
-    held: Complexes = np.fft.rfft(deviation, n_padded) * hold_response(frequency, step=1 / rate, hold=hold)
-    return held * response_of(rig, frequency)
+def _held_spectrum(deviation: Floats, *, rate: float, n_padded: int, hold: Hold) -> Complexes:
+    spectrum: Complexes = np.fft.rfft(deviation, n_padded)
+    return spectrum if hold == "smooth" else spectrum * hold_response(_grid(rate, n_padded), step=1 / rate, hold=hold)
+
+
+def _angle_spectrum(held: Complexes, rig: RigModel, *, rate: float, n_padded: int) -> Complexes:
+    return held * response_of(rig, _grid(rate, n_padded))
+
+
+def _grid(rate: float, n_padded: int) -> Floats:
+    """Frequencies of the lines of the transform in Hz."""
+    return np.arange(n_padded // 2 + 1, dtype=np.float64) * (rate / n_padded)
 
 
 def _highest_significant(spectrum: Complexes) -> int:
