@@ -104,11 +104,11 @@ def _value_as_json(check: ValueCheck) -> dict[str, object]:
         "file": entry.file,
         "row": entry.row,
         "quantity": entry.quantity,
-        "inputs": dict(entry.inputs),
+        "inputs": {name: _finite(value) for name, value in entry.inputs.items()},
         "published": entry.published,
         "unit": entry.unit,
-        "computed": check.computed if math.isfinite(check.computed) else None,
-        "deviation": check.deviation if math.isfinite(check.deviation) else None,
+        "computed": _finite(check.computed),
+        "deviation": _finite(check.deviation),
         "fault": check.fault or None,
         "tolerance": entry.tolerance,
         "rule_error_percent": entry.rule_error_percent,
@@ -116,3 +116,8 @@ def _value_as_json(check: ValueCheck) -> dict[str, object]:
         "source": entry.source,
         "passed": check.passed,
     }
+
+
+def _finite(value: float) -> float | None:
+    """The number, or None (null in JSON) for infinity and NaN."""
+    return value if math.isfinite(value) else None
