@@ -118,7 +118,8 @@ def _check_amplitude(
             f"{margin * limits.angle:.3g} allowed ({margin:g} of the stops at {limits.angle:g})",
         }[allowance.limited_by]
         raise LimitExceeded(
-            f"amplitude: {amplitude:.6g} V asked for, but {figures}; ask for at most {largest:.6g} V, or leave it to the design"
+            f"amplitude: {amplitude:.6g} V asked for, but {figures}; "
+            f"ask for at most {largest:.6g} V, or leave it to the design"
         )
 
 

@@ -60,7 +60,8 @@ class MultisineSettings:
     phases : "low-peak", "random" or "schroeder"
         "low-peak" starts from random phases and lowers the peak of whatever limits the amplitude.
     power : "flat" or "informative"
-        "informative" gives the lines the power that tells most of damping ratio and natural frequency; flat without rigs.
+        "informative" gives the lines the power that tells most of damping ratio and natural frequency;
+        flat without rigs.
     rigs : sequence of RigModel
         All that the true rig may be, the likeliest first; without any the swing is not limited.
     margin : float
@@ -112,8 +113,8 @@ class MultisineLayout:
 def lay_out_multisine(settings: MultisineSettings) -> MultisineLayout:
     """Choose period, number of periods and lines.
 
-    With a rig, as many periods (3 to 6, more in a long test) as leave 4 excited lines within the half-power width of its
-    resonance; without one, 4.
+    With a rig, as many periods (3 to 6, more in a long test) as leave 4 excited lines within the half-power width of
+    its resonance; without one, 4.
 
     Raises
     ------

@@ -42,8 +42,8 @@ def informative_amplitudes(lines: Floats, rigs: Sequence[RigModel], *, costs: Fl
     costs : (S, F) array
         Square of the amplitude of each line, driven with 1 V, in each limited signal, in units of that signal's limit.
     rounds : int
-        Of the algorithm, from a flat spectrum. The optimum itself, after hundreds, stands on so few lines that no phases
-        can lower their peak: stopped early, the powers are smoother and the drive is larger.
+        Of the algorithm, from a flat spectrum. The optimum itself, after hundreds, stands on so few lines that no
+        phases can lower their peak: stopped early, the powers are smoother and the drive is larger.
 
     Returns
     -------

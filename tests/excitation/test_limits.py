@@ -84,7 +84,8 @@ def test_amplitude_beyond_a_limit_is_refused_with_the_largest_allowed() -> None:
     """The refusal names the amplitude, the largest one that passes, and the limit that sets it."""
     limits = Limits(voltage=5.0, slew_rate=20.0, angle=1.0)
     profile = _profile([0.0, 1.0, 0.0])
-    with pytest.raises(LimitExceeded, match=r"3 V asked for, but it would change faster than .* V/s; ask for at most 2 V"):
+    message = r"3 V asked for, but it would change faster than .* V/s; ask for at most 2 V"
+    with pytest.raises(LimitExceeded, match=message):
         scaled_to_limits(profile, limits, amplitude=3.0)
     assert scaled_to_limits(profile, limits, amplitude=1.5).peak_voltage == 1.5
 
