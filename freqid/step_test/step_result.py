@@ -13,8 +13,9 @@ from numpy.typing import NDArray
 
 from freqid.capture.clock_map import ClockMap
 from freqid.derived import derived_quantities
+from freqid.parameter_quantities import quantities_of
 from freqid.quantity import Caveat, Quantity
-from freqid.second_order import PARAMETER_ORDER, SecondOrder, parameter_units
+from freqid.second_order import SecondOrder
 
 __all__ = ["STEP_QUANTITIES", "StepReading", "StepResult"]
 
@@ -80,14 +81,13 @@ class StepResult:
     @property
     def parameters(self) -> dict[str, Quantity | None]:
         """The four parameters as quantities; None where undetermined."""
-        units = parameter_units(self.angle_unit)
-        deviations = np.sqrt(np.diag(self.covariance))
-        return {
-            name: None
-            if name in self.undetermined
-            else Quantity.normal(value, units[name], float(u), self.degrees_of_freedom)
-            for name, value, u in zip(PARAMETER_ORDER, self.model.vector, deviations, strict=True)
-        }
+        return quantities_of(
+            self.model,
+            self.covariance,
+            degrees_of_freedom=self.degrees_of_freedom,
+            angle_unit=self.angle_unit,
+            undetermined=self.undetermined,
+        )
 
     @property
     def derived(self) -> dict[str, Quantity | None]:
