@@ -24,7 +24,8 @@ def in_unit(unit: str) -> Any:
 
 def unit_of(owner: type, name: str) -> str:
     """Unit of the field `name` of the value object `owner`."""
-    return owner.__dataclass_fields__[name].metadata["unit"]  # type: ignore[attr-defined]
+    fields: dict[str, Any] = getattr(owner, "__dataclass_fields__")  # noqa: B009
+    return str(fields[name].metadata["unit"])
 
 
 @lru_cache(maxsize=256)

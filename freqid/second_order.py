@@ -59,7 +59,9 @@ class SecondOrder:
         """Frequency response in angle unit per V at `frequency` (F,) Hz: complex (F,)."""
         f = np.asarray(frequency, dtype=float)
         x = f / self.natural_frequency
-        return self.gain * np.exp(-2j * np.pi * f * self.delay) / (1 - x**2 + 2j * self.damping_ratio * x)
+        return np.asarray(
+            self.gain * np.exp(-2j * np.pi * f * self.delay) / (1 - x**2 + 2j * self.damping_ratio * x), dtype=complex
+        )
 
     def sensitivity(self, frequency: ArrayLike) -> NDArray[np.complex128]:
         """Derivatives of `response` with respect to the four parameters, complex (F, 4)."""

@@ -23,7 +23,9 @@ class ClockMap:
 
     `ratio_ppm` is (ratio - 1) in parts per million. `lag` is what the records themselves show: delay - offset.
     `lost_at` (L,) are the stamps just before each gap, `lost_frames` how many frames fell into the gaps;
-    `outlier_at` are the stamps of the samples left out, `silently_lost_at` those after losses without a gap. `jitter` is the rms deviation of the stamps from a uniform grid in s; `repeated_stamps` counts stamps equal to the one before.
+    `outlier_at` are the stamps of the samples left out, `silently_lost_at` those after losses without a gap. `jitter`
+    is the rms deviation of the stamps from a uniform grid in s; `repeated_stamps` counts stamps equal to the one
+    before.
     """
 
     ratio_ppm: Quantity

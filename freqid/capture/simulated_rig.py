@@ -17,6 +17,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from freqid.errors import RigSheetError
 from freqid.held_response import Drive, HeldResponse
 from freqid.quantity import in_unit
 from freqid.records import AngleStream, InputStream, Origin, Periodicity, Run, RunKind, Stamp
@@ -64,6 +65,8 @@ class SimulatedRig:
     def from_sheet(cls, rig: Rig) -> SimulatedRig:
         """The rig described by `[simulated]` and `[angle_sensor]` of a rig sheet."""
         s = rig.simulated
+        if s.gain is None or s.natural_frequency is None or s.damping_ratio is None or s.delay is None or s.noise is None:
+            raise RigSheetError("[simulated]: gain, natural_frequency, damping_ratio, delay and noise are needed; give them")
         return cls(
             model=SecondOrder(
                 gain=s.gain, natural_frequency=s.natural_frequency, damping_ratio=s.damping_ratio, delay=s.delay

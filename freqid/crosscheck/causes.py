@@ -1,6 +1,7 @@
 """Why might the two tests differ? Mechanisms, each with the evidence at hand; nothing is guessed.
 
-A cause is listed only where a test of its own on these data speaks for it; its strength is that evidence between 0 and 1.
+A cause is listed only where a test of its own on these data speaks for it; its strength is that evidence between 0 and
+1.
 Without a disagreement there are no causes.
 """
 

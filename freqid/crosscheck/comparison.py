@@ -1,7 +1,9 @@
 """Do the two tests agree? Quantity by quantity, jointly, and in one verdict.
 
-A row *agrees* where the 95 % interval of its difference lies within ± tolerance; it *disagrees* where that interval excludes
-zero and the difference exceeds the tolerance; otherwise it is *unresolved*. One disagreeing row makes the verdict *disagree*; all
+A row *agrees* where the 95 % interval of its difference lies within ± tolerance; it *disagrees* where that interval
+excludes
+zero and the difference exceeds the tolerance; otherwise it is *unresolved*. One disagreeing row makes the verdict
+*disagree*; all
 judged rows agreeing make it *agree*; anything else is *unresolved*.
 
 En = difference / sqrt(U1^2 + U2^2), U the expanded (95 %) uncertainties: ISO/IEC 17043:2010, B.3.1.3.
@@ -61,7 +63,8 @@ def cross_check(
 ) -> CrossCheck:
     """Compare the frequency test with the step test.
 
-    `tolerance` is relative, by parameter name; `resonance` is the peak read off the measured curve (or why there is none);
+    `tolerance` is relative, by parameter name; `resonance` is the peak read off the measured curve (or why there is
+    none);
     `folder` names the test folder in the proposed command. Raises CrossCheckError where the angle units differ.
     """
     if model.angle_unit != step.angle_unit:

@@ -18,7 +18,8 @@ RowVerdict = Literal["agree", "disagree", "unresolved", "not judged"]
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class ComparedRow:
-    """One quantity by both tests. `tolerance` is absolute, in the unit of the quantity; None where none was set (then not judged).
+    """One quantity by both tests. `tolerance` is absolute, in the unit of the quantity; None where none was set (then
+    not judged).
 
     `difference` is frequency test minus step test; `en` its En number; `reason` says why a row is not judged.
     """

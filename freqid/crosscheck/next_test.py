@@ -1,6 +1,7 @@
 """Which test settles it? The one whose uncertainty stands in the way, long enough to bring it below the tolerance.
 
-Random uncertainty falls with the square root of the duration (common practice). The wanted uncertainty of the difference is
+Random uncertainty falls with the square root of the duration (common practice). The wanted uncertainty of the
+difference is
 what is left of the tolerance beside the difference already found, at least a third of the tolerance.
 """
 

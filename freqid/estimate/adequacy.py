@@ -2,8 +2,10 @@
 
     statistic = min over d of  sum 2 |G_measured - G_model - S d|^2 / variance,     S the model's sensitivity
 
-is chi-square with 2 F - 4 degrees of freedom where the model is true (F complex points, four parameters). As each variance is
-itself an estimate with v degrees of freedom, each term is (v - 2) / v smaller than it looks (E[1 / chi-square] of v), and the mean
+is chi-square with 2 F - 4 degrees of freedom where the model is true (F complex points, four parameters). As each
+variance is
+itself an estimate with v degrees of freedom, each term is (v - 2) / v smaller than it looks (E[1 / chi-square] of v),
+and the mean
 square is referred to Fisher's F with all degrees of freedom of the noise.
 Source: N. Draper & H. Smith, *Applied Regression Analysis*, 3rd ed. 1998, ch. 2; Pintelon & Schoukens 2012, ch. 11.
 """

@@ -1,7 +1,8 @@
 """What do several runs say together? The generalised mean of their parameters, and whether they agree.
 
 Every run is estimated alone; the parameter vectors are averaged with the inverse of their covariances. Where
-they scatter more than their uncertainties allow (chi-square at 5 %), the covariance is enlarged by that ratio and a caveat says so.
+they scatter more than their uncertainties allow (chi-square at 5 %), the covariance is enlarged by that ratio and a
+caveat says so.
 On separate clocks each run has its own offset: then the delay is not averaged and stays that of the last run.
 Source: JCGM 102:2011, and the Birge ratio (R. T. Birge, Phys. Rev. 40 (1932) 207) for the enlargement.
 """

@@ -1,7 +1,9 @@
 """Which slot of a uniform grid does each frame belong to, and how regular are the stamps?
 
-The sensor means to take a frame every interval; stamps jitter, are rounded, repeat, and frames get lost. The interval is
-found by counting slots from stamp to stamp and a straight line through the count; then every frame takes the nearest slot.
+The sensor means to take a frame every interval; stamps jitter, are rounded, repeat, and frames get lost. The interval
+is
+found by counting slots from stamp to stamp and a straight line through the count; then every frame takes the nearest
+slot.
 """
 
 from __future__ import annotations
@@ -58,7 +60,7 @@ class FrameGrid:
     @property
     def frequency(self) -> Floats:
         """Frequencies of `spectrum`, Hz."""
-        return np.fft.rfftfreq(self.size, self.interval)
+        return np.asarray(np.fft.rfftfreq(self.size, self.interval), dtype=float)
 
     @property
     def multiplicity(self) -> Floats:

@@ -24,7 +24,8 @@ Floats = NDArray[np.float64]
 class FrequencyResponse:
     """Response at `frequency` (F,), ascending; all arrays share that shape.
 
-    `noise` is the amplitude of a sine as large as the noise of one line (rms times sqrt 2, angle unit), `input_amplitude` that
+    `noise` is the amplitude of a sine as large as the noise of one line (rms times sqrt 2, angle unit),
+    `input_amplitude` that
     of the voltage at the line; `coherence` is the share of the recorded power at the line that the input explains.
     `degrees_of_freedom` belongs to `variance`. `method` is "periodic" or "local-polynomial".
     """
@@ -48,18 +49,18 @@ class FrequencyResponse:
     @property
     def gain_uncertainty(self) -> Floats:
         """Standard uncertainty of `gain`."""
-        return np.sqrt(self.variance / 2)
+        return np.asarray(np.sqrt(self.variance / 2))
 
     @property
     def phase(self) -> Floats:
         """Unwrapped phase in degrees, negative where the angle lags."""
-        return np.degrees(np.unwrap(np.angle(self.response)))
+        return np.asarray(np.degrees(np.unwrap(np.angle(self.response))))
 
     @property
     def phase_uncertainty(self) -> Floats:
         """Standard uncertainty of `phase` in degrees (linear, at most 104 degrees = uniform over a turn)."""
         relative = self.gain_uncertainty / np.maximum(self.gain, 1e-300)
-        return np.minimum(np.degrees(relative), 360 / np.sqrt(12))
+        return np.asarray(np.minimum(np.degrees(relative), 360 / np.sqrt(12)))
 
     @property
     def coverage(self) -> Floats:
@@ -68,4 +69,4 @@ class FrequencyResponse:
 
     def without_delay(self, delay: float) -> NDArray[np.complex128]:
         """Response with a delay of `delay` seconds taken out, for showing the phase of a lagging log."""
-        return self.response * np.exp(2j * np.pi * self.frequency * delay)
+        return np.asarray(self.response * np.exp(2j * np.pi * self.frequency * delay))

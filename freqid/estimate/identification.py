@@ -1,6 +1,7 @@
 """From one run to frequency response, clock map and model: the whole estimate, in order.
 
-1. The record as it is (`record`), a start without the user's help (`starting_values`), the whole-record fit (`record_fit`).
+1. The record as it is (`record`), a start without the user's help (`starting_values`), the whole-record fit
+(`record_fit`).
 2. The noise, measured between the harmonics where the excitation is periodic (`noise_spectrum`).
 3. The four parameters with their joint covariance (`weighted_fit`).
 4. The frequency response around that fit: least squares at the lines, or the local polynomial method.

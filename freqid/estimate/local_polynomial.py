@@ -5,7 +5,8 @@ In a window of 2 n + 1 bins around each frequency the output spectrum is
     Y(k + r) = [G + g1 r + ... + gR r^R] U(k + r) + [T + t1 r + ... + tR r^R] + noise
 
 solved by least squares; the polynomial T takes up the leakage (transients at both ends), the residual gives the noise
-variance with q = 2 n + 1 - 2 (R + 1) complex degrees of freedom. It is applied to what the whole-record fit left over, so
+variance with q = 2 n + 1 - 2 (R + 1) complex degrees of freedom. It is applied to what the whole-record fit left over,
+so
 G here is a small, smooth correction to the fitted model; a lost frame or jitter, filled on the grid,
 then disturbs only that correction.
 
@@ -113,7 +114,7 @@ def local_polynomial_response(record: Record, fit: RecordFit) -> tuple[Frequency
 
 def _average(frequency: Floats, width: float) -> Complexes:
     """Response of a mean over [t - width, t]."""
-    return np.sinc(frequency * width) * np.exp(-1j * np.pi * frequency * width)
+    return np.asarray(np.sinc(frequency * width) * np.exp(-1j * np.pi * frequency * width))
 
 
 def _centres(

@@ -25,7 +25,8 @@ __all__ = ["Adequacy", "IdentifiedModel"]
 class Adequacy:
     """Lack-of-fit test of the model against the measured variances.
 
-    `statistic` is chi-square distributed with `degrees_of_freedom` where the model is true. `better_structure` names a structure that does better, if one was found.
+    `statistic` is chi-square distributed with `degrees_of_freedom` where the model is true. `better_structure` names a
+    structure that does better, if one was found.
     """
 
     statistic: float

@@ -1,6 +1,7 @@
 """How did the rig move? The fitted motion of one record with its covariance, and what had to be held or left out.
 
-Whole-record fit, then mis-tracked frames and silent losses (`outliers`, `silent_losses`), then weights from the measured noise
+Whole-record fit, then mis-tracked frames and silent losses (`outliers`, `silent_losses`), then weights from the
+measured noise
 (`weighted_fit`). On a common clock the delay is held at zero where the best one would be negative, or where a fast pole
 and the delay cannot be told apart; a caveat says so. A fit that ran away is refused.
 """
@@ -55,20 +56,24 @@ def estimate_motion(record: Record) -> Motion:
     delay cannot be told apart; a caveat says so.
     """
     record, fit, outlier_at, lost_at = _cleaned(record, fit_record(record))
-    cleaned = {"outlier_at": outlier_at, "silently_lost_at": lost_at}
     told = _cleaning_caveats(outlier_at, lost_at)
     reason = _acausal(record, fit)
     if reason is None and record.common_clock and _ran_away(record, fit):
         reason = "With a free delay no model fits: the delay was held at 0; check that the angle does not come before the voltage."
     if reason is None:
         _refuse_runaway(record, fit)
-        motion = replace(_weighted(record, fit), caveats=told, **cleaned)
+        motion = replace(_weighted(record, fit), caveats=told, outlier_at=outlier_at, silently_lost_at=lost_at)
         reason = _fast_pole(record, motion.weighted)
         if reason is None:
             return motion
     held, best = _with_held_delay(record, fit)
     _refuse_runaway(held, best)
-    return replace(_weighted(held, best), caveats=(*told, Caveat("delay_held_at_zero", reason)), **cleaned)
+    return replace(
+        _weighted(held, best),
+        caveats=(*told, Caveat("delay_held_at_zero", reason)),
+        outlier_at=outlier_at,
+        silently_lost_at=lost_at,
+    )
 
 
 def _with_held_delay(record: Record, fit: RecordFit) -> tuple[Record, RecordFit]:

@@ -1,9 +1,13 @@
 """How loud is the noise, frequency by frequency? A smoothed periodogram of the residual on the frame grid.
 
-Frames keep their slot number; lost ones are empty. `level` is the noise variance that white noise of the same loudness would
-have, so white noise of variance s^2 has the level s^2 everywhere. Bins at the harmonics of a periodic excitation are left
-out: they hold the signal's own misfit. Windows are wide; towards low frequencies, where slow noise rises steeply, a narrow one is
-taken where it differs from the wide one beyond chance. Between whole periods the remaining bins carry the same information
+Frames keep their slot number; lost ones are empty. `level` is the noise variance that white noise of the same loudness
+would
+have, so white noise of variance s^2 has the level s^2 everywhere. Bins at the harmonics of a periodic excitation are
+left
+out: they hold the signal's own misfit. Windows are wide; towards low frequencies, where slow noise rises steeply, a
+narrow one is
+taken where it differs from the wide one beyond chance. Between whole periods the remaining bins carry the same
+information
 as the scatter from period to period (Parseval).
 """
 
@@ -57,7 +61,8 @@ def noise_spectrum(
 ) -> NoiseSpectrum:
     """Smoothed noise level of `residual` (N,) on `grid`.
 
-    `fitted` (N, P) are the columns that were fitted: what they took out of each bin is put back. `harmonic` is (resolution in Hz, frequencies (H,) Hz to leave out): bins closer than half
+    `fitted` (N, P) are the columns that were fitted: what they took out of each bin is put back. `harmonic` is
+    (resolution in Hz, frequencies (H,) Hz to leave out): bins closer than half
     the resolution to one of them are not used. Raises ValueError where fewer than `FEWEST_BINS` bins are left.
     """
     power = np.abs(grid.spectrum(residual)) ** 2 * grid.size / len(residual)

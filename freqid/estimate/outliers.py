@@ -1,8 +1,11 @@
 """Which angle samples are nonsense? Those the fitted motion cannot come near.
 
-A tracker sometimes jumps to something else for a frame or a few. Such samples stand farther from the fit than six robust standard
-deviations (1.4826 times the median absolute deviation), and five times farther than their neighbours usually do: the misfit of a
-wrong model moves smoothly and is none. They are left out and the fit is repeated until none is new. More than a tenth of the
+A tracker sometimes jumps to something else for a frame or a few. Such samples stand farther from the fit than six
+robust standard
+deviations (1.4826 times the median absolute deviation), and five times farther than their neighbours usually do: the
+misfit of a
+wrong model moves smoothly and is none. They are left out and the fit is repeated until none is new. More than a tenth
+of the
 record is no outlier, and nothing is left out then.
 
 Source: F. R. Hampel, JASA 69 (1974) 383-393 (median absolute deviation as scale for rejecting).

@@ -1,11 +1,15 @@
 """What is the response at the lines of a periodic voltage? Least squares at the true instants of the frames.
 
-Nothing is interpolated: over the steady part, what the whole-record fit left over is regressed on a cosine and a sine at every
+Nothing is interpolated: over the steady part, what the whole-record fit left over is regressed on a cosine and a sine
+at every
 excited line, together with rest angle, drift, what is left of the start-up transient (free decay of the fitted poles)
-and a small change of the clock ratio. The start-up transient itself is in the whole-record fit. The uncertainty comes from
-the noise between the harmonics, which is the scatter from period to period; with a single period, from unexcited harmonics.
+and a small change of the clock ratio. The start-up transient itself is in the whole-record fit. The uncertainty comes
+from
+the noise between the harmonics, which is the scatter from period to period; with a single period, from unexcited
+harmonics.
 
-Source: Pintelon & Schoukens, *System Identification*, 2nd ed. 2012, ch. 2 and 4; sine fitting with known frequency: IEEE Std 1241.
+Source: Pintelon & Schoukens, *System Identification*, 2nd ed. 2012, ch. 2 and 4; sine fitting with known frequency:
+IEEE Std 1241.
 """
 
 from __future__ import annotations
@@ -63,7 +67,8 @@ def line_amplitudes(drive: Drive, periodicity: Periodicity) -> Complexes:
 class LineRegression:
     """The steady frames and the basis they are regressed on, ready for any residual of the same record.
 
-    `inside` (N,) marks the steady frames, `basis` (S, P) has a cosine and a minus sine column for each of the F lines, then the
+    `inside` (N,) marks the steady frames, `basis` (S, P) has a cosine and a minus sine column for each of the F lines,
+    then the
     nuisances; `inverse` (P, P) is the inverse of basis' basis; `lag` the lag (s) that the basis' time was shifted by;
     `periods` whole periods are covered.
     """

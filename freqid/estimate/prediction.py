@@ -6,7 +6,8 @@ The angle recorded at stamp s (end of exposure) is
 
 with lag = delay - clock offset. On a common clock the ratio is 1 and the lag is the delay. Derivatives by K,
 lag, ratio, rest and start are exact; those by natural frequency and damping ratio are differences of the exact
-response: forward with a relative step of 1e-6 (truncation about 1e-6 Q), central with 1e-4 (truncation about 2e-9 Q^2) where the voltage is
+response: forward with a relative step of 1e-6 (truncation about 1e-6 Q), central with 1e-4 (truncation about 2e-9 Q^2)
+where the voltage is
 sampled so finely that rounding would show.
 """
 

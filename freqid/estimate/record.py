@@ -32,7 +32,8 @@ class Record:
 
     `free_start` is true where the rig may have been moving when the record began; then the estimators
     add its free decay. `held_delay` is set where the delay is not to be
-    fitted. `same_rows` is true where voltage and angle stand in the same rows of one log. `frame_interval` is the spacing the
+    fitted. `same_rows` is true where voltage and angle stand in the same rows of one log. `frame_interval` is the
+    spacing the
     sensor meant to keep, s.
     """
 

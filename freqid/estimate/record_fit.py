@@ -1,8 +1,10 @@
 """Which second-order rig explains the whole record best? Least squares at the true instants.
 
 Output-error fit: gain, natural frequency, damping ratio and lag, jointly with clock ratio, rest angle and
-the motion at the start, by Levenberg-Marquardt from several starts. In white noise this is maximum likelihood and reaches
-the Cramer-Rao bound whatever the excitation. The covariance allows for coloured residuals: with spectrum S of the residual
+the motion at the start, by Levenberg-Marquardt from several starts. In white noise this is maximum likelihood and
+reaches
+the Cramer-Rao bound whatever the excitation. The covariance allows for coloured residuals: with spectrum S of the
+residual
 
     cov = (J'J)^-1 (J' V J) (J'J)^-1,   J'VJ evaluated line by line with S   ("sandwich")
 
@@ -46,7 +48,7 @@ class RecordFit:
     @property
     def degrees_of_freedom(self) -> int:
         """Frames minus fitted parameters."""
-        return len(self.residual) - self.prediction.jacobian.shape[1]
+        return len(self.residual) - int(self.prediction.jacobian.shape[1])
 
     @property
     def sum_of_squares(self) -> float:

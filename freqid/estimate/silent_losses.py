@@ -4,11 +4,13 @@ A loss before frame k shifts the true time of all later frames by one frame inte
 
     c_k(i) = K rate(i) * ratio * interval   for i >= k,  0 before
 
-Each k is tried at once (cumulative sums), all fitted parameters, the clock ratio among them, projected out. The best one is
+Each k is tried at once (cumulative sums), all fitted parameters, the clock ratio among them, projected out. The best
+one is
 accepted where it improves the fit beyond what chance gives over all k, and by a whole number of frames; the stamps
 after it are moved, the fit is repeated, and the search goes on. Sudden steps only: a clock's drift is the ratio's.
 
-Source: generalised likelihood ratio for a jump at an unknown instant (M. Basseville & I. Nikiforov, *Detection of Abrupt Changes*, 1993, ch. 2).
+Source: generalised likelihood ratio for a jump at an unknown instant (M. Basseville & I. Nikiforov, *Detection of
+Abrupt Changes*, 1993, ch. 2).
 """
 
 from __future__ import annotations

@@ -2,7 +2,8 @@
 
 For every natural frequency and damping ratio of a coarse grid the exact response to the drive is simulated on
 the sensor's grid and correlated with the angle at all lags at once (FFT). The best correlation gives
-gain, its sign and the lag together, so that an unknown clock offset and a reversed sensor need no special case: the rest
+gain, its sign and the lag together, so that an unknown clock offset and a reversed sensor need no special case: the
+rest
 before and after the excitation takes part in the correlation.
 
 Source: matched filter (North 1943), the maximum-likelihood lag of a known waveform in white noise.
@@ -87,8 +88,10 @@ def _distinct(found: list[Candidate], count: int) -> list[Candidate]:
 class _Bank:
     """The record on a uniform grid and its spectrum, ready to be correlated with many rigs.
 
-    Shapes are made in the frequency domain: the drive, averaged over the steps of the grid, times the rig's response. The
-    averaging is divided out again; the drive is taken as returning to rest after its end (far enough off by zero padding).
+    Shapes are made in the frequency domain: the drive, averaged over the steps of the grid, times the rig's response.
+    The
+    averaging is divided out again; the drive is taken as returning to rest after its end (far enough off by zero
+    padding).
     """
 
     def __init__(self, record: Record, highest: float) -> None:
@@ -98,7 +101,7 @@ class _Bank:
         self._span = float(record.stamp[-1] - record.stamp[0])
         begin = float(record.stamp[0]) if record.common_clock else record.drive.start
         end = float(record.stamp[-1]) if record.common_clock else record.drive.stop + min(self._span, 5.0)
-        self._grid = begin + self._step * np.arange(int((end - begin) / self._step) + 1)
+        self._grid = begin + self._step * np.arange(int((end - begin) / self._step) + 1, dtype=float)
         longest = int(self._span * (1 + LARGEST_RATIO_ERROR) / self._step) + 1
         self._size = next_fast_len(len(self._grid) + longest, real=True)
         averaged = record.drive.mean(self._grid, self._step)
@@ -111,7 +114,7 @@ class _Bank:
     def _resampled(self, ratio: float) -> Floats:
         n = int(self._span * ratio / self._step) + 1
         when = self._record.stamp[0] + self._step / ratio * np.arange(n)
-        return np.interp(when, self._record.stamp, self._angle)
+        return np.asarray(np.interp(when, self._record.stamp, self._angle))
 
     def match(self, frequency: float, damping: float, ratio: float) -> list[Candidate]:
         """The two best lags of one rig."""

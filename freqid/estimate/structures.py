@@ -1,13 +1,17 @@
-"""If a second-order model is not enough, what would do better? A few published structures, fitted to the measured response.
+"""If a second-order model is not enough, what would do better? A few published structures, fitted to the measured
+response.
 
     first order    K / (1 + j f / f1)
     extra pole     second order / (1 + j f / fp)           a driver's or a coil's lag
     zero           second order * (1 + j f / fz)           damping between other parts
     second mode    second order + K2 second-order mode     a flexible part
 
-each with its own delay, by weighted least squares on the response with its measured variances. The one with the smallest Bayesian information
-criterion  chi-square + (number of parameters) ln(2 F)  is named, if it is smaller by more than 10 than that of the second-order model
-("very strong" evidence by Kass & Raftery) and the structure itself comes near the noise: a nonlinear rig is not talked into a
+each with its own delay, by weighted least squares on the response with its measured variances. The one with the
+smallest Bayesian information
+criterion  chi-square + (number of parameters) ln(2 F)  is named, if it is smaller by more than 10 than that of the
+second-order model
+("very strong" evidence by Kass & Raftery) and the structure itself comes near the noise: a nonlinear rig is not talked
+into a
 second mode.
 
 Source: G. Schwarz, Ann. Statist. 6 (1978) 461-464; R. Kass & A. Raftery, JASA 90 (1995) 773-795.
@@ -88,7 +92,7 @@ def _fit(
         # a wild trial point may overflow; it is then only a bad one
         with np.errstate(all="ignore"):
             left = (structure.response(vector, f) - target) * weight
-        return np.nan_to_num(np.concatenate([left.real, left.imag]), nan=1e12, posinf=1e12, neginf=-1e12)
+        return np.asarray(np.nan_to_num(np.concatenate([left.real, left.imag]), nan=1e12, posinf=1e12, neginf=-1e12))
 
     best: tuple[float, Floats] | None = None
     for start in structure.starts(model, f):

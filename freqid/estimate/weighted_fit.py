@@ -1,12 +1,14 @@
 """What are the four parameters, and how sure are they jointly? Maximum likelihood with the measured noise.
 
-The whole record is weighted, frequency by frequency, with the noise spectrum measured between the harmonics (Gauss-Newton from
+The whole record is weighted, frequency by frequency, with the noise spectrum measured between the harmonics
+(Gauss-Newton from
 the unweighted fit). With weights W and noise covariance V the covariance is the sandwich
 
     (J' W J)^-1 (J' W V W J) (J' W J)^-1
 
 which is the Cramer-Rao bound where W = V^-1 and stays honest where it is not. Clock ratio, rest angle and start are
-estimated along and so are in the covariance: delay and clock ratio are correlated, and leaving that out spoils the interval of the delay.
+estimated along and so are in the covariance: delay and clock ratio are correlated, and leaving that out spoils the
+interval of the delay.
 
 Source: Pintelon & Schoukens 2012, ch. 9 (sample maximum likelihood); L. Ljung 1999, ch. 9.
 """
@@ -82,7 +84,8 @@ def _sandwich(
 ) -> tuple[Floats, float]:
     """Covariance of the parameters and the degrees of freedom of the least certain of its four first variances.
 
-    `noise` is the level and its degrees of freedom at every bin. Each variance is a weighted sum of levels; its degrees of
+    `noise` is the level and its degrees of freedom at every bin. Each variance is a weighted sum of levels; its
+    degrees of
     freedom follow from theirs (Welch-Satterthwaite, JCGM 100 G.4), neighbours that share a window counted as one.
     """
     level, freedom = noise

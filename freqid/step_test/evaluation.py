@@ -1,6 +1,7 @@
 """From one run to the step-test values: every step read off, all pooled, and the model of the whole record.
 
-The model (least squares at the true instants, as for the frequency test) gives the parameters; the read-offs come from the
+The model (least squares at the true instants, as for the frequency test) gives the parameters; the read-offs come from
+the
 record itself, the model lends them only the onset and the width of the smoothing window. Pooling weighs each step by
 its own uncertainty; the pooled uncertainty is the larger of what the weights say and what the scatter says.
 """

@@ -1,7 +1,9 @@
 """What can be read off one step? Overshoot, times and decrement from the smoothed curve, each with its uncertainty.
 
-Common practice for the definitions: percent overshoot and times refer to the change between the settled levels; delay time is
-50 %, rise times run from the onset or 10 % to 90 %, settling time is the last exit from ± 5 % or ± 2 %. Times count from the onset
+Common practice for the definitions: percent overshoot and times refer to the change between the settled levels; delay
+time is
+50 %, rise times run from the onset or 10 % to 90 %, settling time is the last exit from ± 5 % or ± 2 %. Times count
+from the onset
 (step plus delay). A reading that the noise or the frame rate does not allow is None.
 """
 
@@ -26,7 +28,8 @@ CLEAR = 4.0  # an extreme counts while it stands this many standard uncertaintie
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class StepFrames:
-    """Frames of one hold (`time` from the onset, s), its settled levels with their standard uncertainties, the change of voltage.
+    """Frames of one hold (`time` from the onset, s), its settled levels with their standard uncertainties, the change
+    of voltage.
 
     `period` is the oscillation's period, or the time constant's equivalent for an overdamped rig.
     """

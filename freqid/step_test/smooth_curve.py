@@ -1,7 +1,8 @@
 """What does the angle do between noisy frames? A local quadratic through the frames around each instant.
 
 A least-squares parabola over ± 0.15 of the oscillation's period is read at its centre: for a sine its height is low by
-0.28 % of the oscillation's amplitude at a peak ((3/35) a^4 / 24 with a = 0.3 pi), and white noise of variance s^2 is reduced to about 2.25 s^2 / n.
+0.28 % of the oscillation's amplitude at a peak ((3/35) a^4 / 24 with a = 0.3 pi), and white noise of variance s^2 is
+reduced to about 2.25 s^2 / n.
 Frames before the onset take no part, so the kink there is not rounded off; the onset itself is one further point.
 
 Source: W. S. Cleveland, JASA 74 (1979) 829-836 (local regression); A. Savitzky & M. Golay 1964.

@@ -1,6 +1,7 @@
 """Where are the steps? Plateaus of the voltage and the changes between them.
 
-A step is a change of the voltage that is over within a short time (a ramp under a slew limit is still one step) and stands
+A step is a change of the voltage that is over within a short time (a ramp under a slew limit is still one step) and
+stands
 between two plateaus. The instant of the step is the middle of the change.
 """
 

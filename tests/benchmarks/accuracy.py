@@ -1,8 +1,11 @@
 """How close to the Cramér-Rao bound do the estimates come, and do the intervals mean what they say?
 
-For every cell of damping ratio x excitation x clocks: 60 s of a 12 deg/V, 3 Hz vane with 20 ms delay, limits 5 V and 30 deg, 60 frames/s,
-8 ms exposure, 1 ms jitter (known from the stamps), 2 % lost frames, noise 0.3 deg. Printed per parameter: root-mean-square error
-over the Cramér-Rao bound of the whole record (all nuisance parameters included), and the share of 95 % intervals that hold
+For every cell of damping ratio x excitation x clocks: 60 s of a 12 deg/V, 3 Hz vane with 20 ms delay, limits 5 V and
+30 deg, 60 frames/s,
+8 ms exposure, 1 ms jitter (known from the stamps), 2 % lost frames, noise 0.3 deg. Printed per parameter:
+root-mean-square error
+over the Cramér-Rao bound of the whole record (all nuisance parameters included), and the share of 95 % intervals that
+hold
 the truth. Beside it the script a competent engineer would write: interpolate to a uniform grid, segment-averaged
 cross-spectrum over input spectrum, curve_fit of the gain.
 

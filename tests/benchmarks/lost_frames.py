@@ -1,7 +1,9 @@
 """Are frames lost without a gap found, and mis-tracked frames left out?
 
-60 s of the vane of `accuracy.py` (two clocks, 60 frames/s, 2 % of the frames lost with a gap): five further frames lost with the stamps closed
-up; none lost; 1 % of the frames off by 20 deg. Printed: share of records in which all five were found to within 0.2 s, share with
+60 s of the vane of `accuracy.py` (two clocks, 60 frames/s, 2 % of the frames lost with a gap): five further frames
+lost with the stamps closed
+up; none lost; 1 % of the frames off by 20 deg. Printed: share of records in which all five were found to within 0.2 s,
+share with
 a false find, outliers left out and planted, and the rms error over the Cramér-Rao bound of the clean record.
 
     python tests/benchmarks/lost_frames.py [records] [processes]

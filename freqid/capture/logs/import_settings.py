@@ -21,7 +21,8 @@ class ImportSettings:
     """The user's choices for one import.
 
     The columns are header names or numbers counted from 1. `time_unit` is one of s, ms, us, min;
-    `exposure` (s) is that of the angle samples, the rig sheet's unless given; `sample_rate` (Hz) is for logs without times and for frame numbers; `angle_unit` is deg or rad. The
+    `exposure` (s) is that of the angle samples, the rig sheet's unless given; `sample_rate` (Hz) is for logs without
+    times and for frame numbers; `angle_unit` is deg or rad. The
     three `input_...` choices are for an input log of its own that differs from the angle log.
     """
 
