@@ -68,4 +68,4 @@ def _factor(row: ComparedRow) -> float:
 
 def _round_up(seconds: float) -> int:
     step = 10 ** max(int(math.floor(math.log10(seconds))) - 1, 0)
-    return int(math.ceil(seconds / step) * step)
+    return math.ceil(seconds / step) * step

@@ -34,7 +34,8 @@ class Rehearsal:
 def rehearse(path: Path, *, seed: int = 1, progress: Progress = silent) -> Rehearsal:
     """Run the whole job in the folder `path`: design, simulated runs, estimates, cross-check, report.
 
-    A folder without a rig sheet gets the built-in vane. `seed` fixes phases and noise; the step run takes the next seed.
+    A folder without a rig sheet gets the built-in vane. `seed` fixes phases and noise; the step run takes the next
+    seed.
     Raises what the single stages raise.
     """
     folder = TestFolder(path)

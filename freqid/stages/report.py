@@ -29,7 +29,8 @@ LIBRARIES = ("numpy", "scipy", "matplotlib", "h5py")
 def report_folder(folder: TestFolder, *, progress: Progress = silent) -> Path:
     """Write report.html and figures/*.svg from what the folder holds; returns the page's path.
 
-    Raises TestFolderError where there is nothing to report, or where results were computed from files that have changed since.
+    Raises TestFolderError where there is nothing to report, or where results were computed from files that have
+    changed since.
     """
     from freqid.report import draw_report, write_report
     from freqid.report.figure_style import save_figure

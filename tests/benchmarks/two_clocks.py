@@ -1,8 +1,11 @@
 """Do the intervals hold the truth when voltage and angle are logged on different clocks?
 
-A vane of 12 deg/V, 3 Hz, damping ratio 0.12, delay 20 ms, driven by the profile that `excite` designs for 60 s; its angle from a
-sensor on its own clock (+150 ppm, unknown offset), 60 frames/s, exposure 8 ms, 1 ms jitter, 2 % lost frames, noise 0.3 deg.
-Prints, over the seeds: mean error over its standard deviation, stated over actual uncertainty, coverage of the 95 % intervals,
+A vane of 12 deg/V, 3 Hz, damping ratio 0.12, delay 20 ms, driven by the profile that `excite` designs for 60 s; its
+angle from a
+sensor on its own clock (+150 ppm, unknown offset), 60 frames/s, exposure 8 ms, 1 ms jitter, 2 % lost frames, noise 0.3
+deg.
+Prints, over the seeds: mean error over its standard deviation, stated over actual uncertainty, coverage of the 95 %
+intervals,
 and how often the adequacy test rejects (5 % claimed).
 
     python tests/benchmarks/two_clocks.py [seeds] [multisine|swept-sine|step]
