@@ -9,6 +9,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Mapping
 from functools import lru_cache
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,7 +18,10 @@ from freqid import resonance_relations
 from freqid.quantity import Quantity, coverage_factor
 from freqid.second_order import SecondOrder
 
-__all__ = ["MEASUREMENT_QUANTITIES"]
+if TYPE_CHECKING:
+    from freqid.estimate.frequency_response import FrequencyResponse
+
+__all__ = ["MEASUREMENT_QUANTITIES", "SEED", "measured_response", "swept_resonance"]
 
 Floats = NDArray[np.float64]
 SEED = 20_250_101  # any will do: the tolerance of a random row covers the scatter over seeds
@@ -49,10 +53,11 @@ def _mean_of_five(part: str) -> Callable[..., float]:
 
 
 def _point(response: complex, variance: float, quantity: str) -> float:
-    return float(getattr(_measured(np.array([1.0]), np.array([response]), variance), quantity)[0])
+    return float(getattr(measured_response(np.array([1.0]), np.array([response]), variance), quantity)[0])
 
 
-def _measured(frequency: Floats, response: NDArray[np.complex128], variance: float) -> object:
+def measured_response(frequency: Floats, response: NDArray[np.complex128], variance: float) -> FrequencyResponse:
+    """A measured response (F,) with the same variance at each frequency; the rest of it plays no part here."""
     from freqid.estimate.frequency_response import FrequencyResponse
 
     ones = np.ones_like(frequency)
@@ -70,7 +75,7 @@ def _delayed_response(part: str) -> Callable[..., float]:
             gain=1.0, natural_frequency=natural_frequency, damping_ratio=damping_ratio, delay=delay
         )
         grid = np.linspace(0.0, frequency, 2001)
-        return float(getattr(_measured(grid, model.response(grid), 1.0), part)[-1])
+        return float(getattr(measured_response(grid, model.response(grid), 1.0), part)[-1])
 
     return value
 
@@ -161,7 +166,7 @@ def _sine_variance(index: int, *, known: bool = False) -> Callable[..., float]:
 
 
 @lru_cache(maxsize=16)
-def _swept_resonance(damping_ratio: float, rate: float) -> tuple[float, float, float]:
+def swept_resonance(damping_ratio: float, rate: float) -> tuple[float, float, float]:
     """What a linear sweep of `rate` (half-power widths squared per second) shows of a resonance, against a slow one.
 
     Error of the peak in percent, its lag in half-power widths, error of the half-power width in percent. The envelope
@@ -193,7 +198,7 @@ def _swept_resonance(damping_ratio: float, rate: float) -> tuple[float, float, f
 
 
 def _swept(index: int) -> Callable[..., float]:
-    return lambda damping_ratio, rate: _swept_resonance(damping_ratio, rate)[index]
+    return lambda damping_ratio, rate: swept_resonance(damping_ratio, rate)[index]
 
 
 MEASUREMENT_QUANTITIES: Mapping[str, Callable[..., float]] = {

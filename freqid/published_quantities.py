@@ -17,6 +17,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from freqid import resonance_relations, step_relations
 from freqid.published_measurements import MEASUREMENT_QUANTITIES
+from freqid.published_uncertainties import UNCERTAINTY_QUANTITIES
 from freqid.second_order import SecondOrder
 
 __all__ = ["QUANTITIES"]
@@ -226,4 +227,5 @@ QUANTITIES: Mapping[str, Callable[..., float]] = {
     **_gain_and_delay("exposure", _exposure_response),
     **_gain_and_delay("hold", _hold_response),
     **MEASUREMENT_QUANTITIES,
+    **UNCERTAINTY_QUANTITIES,
 }
