@@ -10,7 +10,7 @@ import click
 from freqid.cli.cautions import print_cautions
 from freqid.cli.options import folder_argument, json_option
 from freqid.cli.output import print_caveats, print_json, print_table, progress_bar, quantity_rows
-from freqid.stages.excite import Design, ExciteSettings, design_excitation
+from freqid.stages.excite import Design, ExciteSettings, design_excitation, draw_profile_card
 from freqid.test_folder import TestFolder
 
 __all__ = ["command"]
@@ -31,6 +31,7 @@ _ABOVE_ZERO = click.FloatRange(min=0, min_open=True)
 @click.option("--amplitude", type=_ABOVE_ZERO, metavar="V",
               help="Peak voltage from the bias; refused where it would pass a limit. The largest safe one unless given.")
 @click.option("--seed", type=click.IntRange(min=0), default=1, show_default=True, help="Of the random phases.")
+@click.option("--from-model", is_flag=True, help="Plan from results/model.json in place of [step_test].")
 @json_option
 def command(
     folder: Path,
@@ -40,6 +41,7 @@ def command(
     wanted_damping: float | None,
     amplitude: float | None,
     seed: int,
+    from_model: bool,
     as_json: bool,
 ) -> None:  # fmt: skip
     """Design the voltage for FOLDER within the limits of its rig.toml: profile.*, or step_profile.* for --kind step.
@@ -51,14 +53,16 @@ def command(
         raise click.UsageError("--band has no meaning for --kind step; leave it out")
     test = TestFolder.existing(folder)
     settings = ExciteSettings(
-        kind=kind, band=band, duration=duration, wanted_damping=wanted_damping, amplitude=amplitude, seed=seed
-    )
+        kind=kind, band=band, duration=duration, wanted_damping=wanted_damping, amplitude=amplitude, seed=seed,
+        from_model=from_model,
+    )  # fmt: skip
     with progress_bar() as progress:
         design = design_excitation(test, settings, progress=progress)
+        card = draw_profile_card(test, design, progress=progress)
     if as_json:
-        print_json(_as_json(test, design))
+        print_json({**_as_json(test, design), "figure": test.relative_name(card)})
     else:
-        print_table(_profile_rows(test, design))
+        print_table([*_profile_rows(test, design), ("figure", test.relative_name(card))])
         print_table(quantity_rows(design.prediction.expected), columns=("to be measured", "at best, 95 %", "unit"))
     print_caveats(design.prediction.caveats)
     print_cautions()

@@ -2,7 +2,8 @@
 
 The step test says which rig to expect; the design then uses the largest amplitude at which no limit is
 passed anywhere in the step test's uncertainty box. Where the step test told too little to predict a swing,
-the amplitude is a tenth of what the voltage limit leaves, and a caveat says so.
+the amplitude is a tenth of what the voltage limit leaves, and a caveat says so; where it told nothing at all, this
+is a scouting test over all the sensor can see. A model estimated before can take the step test's place.
 """
 
 from __future__ import annotations
@@ -23,15 +24,24 @@ from excitation.swept_sine import SweptSineSettings, design_swept_sine
 from freqid.records import RunKind
 from freqid.rig import Rig, read_rig
 from freqid.stages import Progress, silent
-from freqid.stages.planned_rig import SWING_MARGIN, expected_rig, limits_of, rigs_of_the_box
+from freqid.stages.planned_rig import (
+    SWING_MARGIN,
+    expected_rig,
+    is_unknown,
+    limits_of,
+    rig_from_model,
+    rigs_of_the_box,
+    with_prior_noted,
+)
 from freqid.stages.prediction import Prediction, predict, relative_damping_uncertainty, rig_to_plan_with
 from freqid.test_folder import TestFolder
 
-__all__ = ["Design", "ExciteSettings", "design_excitation"]
+__all__ = ["Design", "ExciteSettings", "design_excitation", "draw_profile_card"]
 
 _USUAL_DURATION, _LONGEST_USUAL, _LONGEST = 60.0, 600.0, 3600.0  # s
 _TIME_CONSTANTS = 150  # of the ring-down in a usual test: enough for periods that resolve the resonance
 _BAND_ABOUT_RESONANCE = (0.1, 4.0)  # of the natural frequency
+_SCOUTING_SPAN, _SCOUTING_PERIODS = 300, 12  # highest over lowest frequency at most; periods of the lowest at least
 _CAUTIOUS_PART = 0.1  # of the voltage room, where no swing can be predicted
 _LENGTHENINGS = 8
 _SPARE = 1.05  # the duration asked of the next try, over what the last one suggests
@@ -44,7 +54,8 @@ class ExciteSettings:
     `band` (Hz) lies about the expected natural frequency where None; a step test has none. `duration` (s) is
     chosen where None. `wanted_damping` is the half-width of the 95 % interval wanted for the damping ratio,
     relative: the test is made as long as that takes, but no longer than `duration` where that is given. `amplitude`
-    (V from the bias) is refused where it would pass a limit; the largest safe one is taken where None.
+    (V from the bias) is refused where it would pass a limit; the largest safe one is taken where None. `from_model`
+    plans from results/model.json in place of [step_test].
     """
 
     kind: Literal["multisine", "swept-sine", "step"] = "multisine"
@@ -53,6 +64,7 @@ class ExciteSettings:
     wanted_damping: float | None = None
     amplitude: float | None = field(default=None, metadata={"unit": "V"})
     seed: int = 1
+    from_model: bool = False
 
     @property
     def run_kind(self) -> RunKind:
@@ -66,6 +78,7 @@ class Design:
 
     profile: Profile
     prediction: Prediction
+    rig: Rig  # as it was planned for
     files: tuple[Path, ...]
 
 
@@ -76,17 +89,44 @@ def design_excitation(folder: TestFolder, settings: ExciteSettings, *, progress:
     ------
     RigSheetError
         rig.toml is faulty.
+    TestFolderError
+        There is no model to plan from.
     excitation.ExcitationError
         The settings do not go together, or the uncertainty wanted cannot be reached (with what can).
     OSError
         The files cannot be written.
     """
     rig = read_rig(folder.rig)
+    if settings.from_model:
+        rig = rig_from_model(folder, rig)
     progress("designing the profile")
     profile = _long_enough(settings, rig)
+    if settings.from_model:
+        profile = with_prior_noted(profile, rig)
     progress("predicting what it will do")
     prediction = predict(profile, rig)
     return _written(folder, profile, prediction, settings, rig)
+
+
+def draw_profile_card(folder: TestFolder, design: Design, *, progress: Progress = silent) -> Path:
+    """Draw the profile to figures/profile_card.svg (step_profile_card.svg for a step test).
+
+    Raises
+    ------
+    OSError
+        The figure cannot be written.
+    """
+    from freqid.report.figure_style import save_figure
+    from freqid.report.profile_card import profile_card_figure
+
+    progress("drawing the profile")
+    figure = profile_card_figure(
+        design.profile, rigs_of_the_box(design.rig), limits_of(design.rig), angle_unit=design.rig.angle_unit
+    )
+    folder.figures.mkdir(exist_ok=True)
+    path = folder.figures / f"{folder.profile_stem('step' if design.profile.kind == 'step' else 'response')}_card.svg"
+    save_figure(figure, path)
+    return path
 
 
 def _long_enough(settings: ExciteSettings, rig: Rig) -> Profile:
@@ -174,11 +214,19 @@ def _band(settings: ExciteSettings, rig: Rig) -> tuple[float, float]:
     if settings.band is not None:
         return settings.band
     resonance = rig.step_test.natural_frequency
+    if is_unknown(rig):
+        return _scouting_band(rig, settings.duration or _USUAL_DURATION)
     if resonance is None:
         raise ExcitationError("band: [step_test] has no natural_frequency to lay it about; give --band LOW HIGH")
     low, high = (part * resonance for part in _BAND_ABOUT_RESONANCE)
     seen = max(1.5 * resonance, 0.45 * rig.angle_sensor.sample_rate)  # by the sensor, but the resonance always
     return _short(low), _short(min(high, 0.4 * rig.output.sample_rate, seen))
+
+
+def _scouting_band(rig: Rig, duration: float) -> tuple[float, float]:
+    """All that the sensor can see and the duration can resolve, Hz."""
+    high = min(0.45 * rig.angle_sensor.sample_rate, 0.4 * rig.output.sample_rate)
+    return _short(min(max(high / _SCOUTING_SPAN, _SCOUTING_PERIODS / duration), high / 2)), _short(high)
 
 
 def _short(frequency: float) -> float:
@@ -196,12 +244,14 @@ def _usual(rig: Rig) -> float:
 def _written(
     folder: TestFolder, profile: Profile, prediction: Prediction, settings: ExciteSettings, rig: Rig
 ) -> Design:
+    sources = (folder.rig, folder.model) if settings.from_model else (folder.rig,)
     files = write_profile(
         profile,
         folder.path,
         full_scale=rig.output.full_scale,
         name=folder.profile_stem(settings.run_kind),
         prediction=prediction.as_json(),
-        sources={folder.relative_name(folder.rig): file_sha256(folder.rig)},
+        sources={folder.relative_name(file): file_sha256(file) for file in sources},
     )
-    return Design(profile=files.profile, prediction=prediction, files=(files.hdf5, files.csv, files.wav, files.json))
+    written = (files.hdf5, files.csv, files.wav, files.json)
+    return Design(profile=files.profile, prediction=prediction, rig=rig, files=written)

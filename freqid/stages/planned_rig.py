@@ -6,20 +6,37 @@ proportional to it), at either end of the damping ratio, and at natural frequenc
 that none of the box lies further than a quarter of a half-power width (2 zeta fn) from one that is looked
 at: a rig that is lightly damped answers quite differently between the corners. The delay moves the swing in
 time and leaves it as large.
+
+A model estimated before takes the place of the step test where the next test is planned from it; the profile then
+carries these values, so that later checks look at the rigs it was designed for.
 """
 
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
+from dataclasses import asdict, replace
+from typing import Any
 
 from excitation.errors import ExcitationError
 from excitation.limits import Limits
 from excitation.profile import Profile
 from excitation.swing import check_swing
-from freqid.rig import Rig
+from freqid.errors import TestFolderError
+from freqid.rig import Rig, StepTest
 from freqid.second_order import SecondOrder
+from freqid.test_folder import TestFolder
 
-__all__ = ["SWING_MARGIN", "check_against_limits", "expected_rig", "limits_of", "rigs_of_the_box"]
+__all__ = [
+    "SWING_MARGIN",
+    "check_against_limits",
+    "expected_rig",
+    "is_unknown",
+    "limits_of",
+    "rig_from_model",
+    "rigs_of_the_box",
+    "with_prior_noted",
+]
 
 SWING_MARGIN = 0.9  # of the way to the stops, at the worst rig of the box
 _PART_OF_WIDTH = 0.25
@@ -47,6 +64,55 @@ def expected_rig(rig: Rig) -> SecondOrder | None:
         damping_ratio=known.damping_ratio,
         delay=known.delay or 0.0,
     )
+
+
+def is_unknown(rig: Rig) -> bool:
+    """Whether [step_test] tells nothing of gain, natural frequency and damping ratio."""
+    known = rig.step_test
+    return known.gain is None and known.natural_frequency is None and known.damping_ratio is None
+
+
+def rig_from_model(folder: TestFolder, rig: Rig) -> Rig:
+    """The rig with results/model.json for its step test: the parameters, and their intervals as relative uncertainties.
+
+    A delay that includes the offset of two clocks says nothing of the rig's own: then the sheet's stays.
+
+    Raises
+    ------
+    TestFolderError
+        There is no model, it is damaged or in another angle unit, or a parameter is undetermined or too uncertain.
+    """
+    content = folder.read_json(folder.model, format="freqid model")
+    if content.get("angle_unit") != rig.angle_unit:
+        raise TestFolderError(
+            f"{folder.model}: angle_unit {content.get('angle_unit')!r}, but {rig.angle_unit!r} in rig.toml; run"
+            f" `freqid estimate {folder.quoted}` again"
+        )
+    try:
+        gain, gain_uncertainty = _from_model(folder, content, "gain")
+        frequency, frequency_uncertainty = _from_model(folder, content, "natural_frequency")
+        damping, damping_uncertainty = _from_model(folder, content, "damping_ratio")
+        delay = content["parameters"]["delay"]
+        own = delay is not None and not delay.get("includes_clock_offset", True)
+        prior = StepTest(
+            gain=gain,
+            natural_frequency=frequency,
+            damping_ratio=damping,
+            delay=float(delay["value"]) if own else rig.step_test.delay,
+            gain_uncertainty=gain_uncertainty,
+            natural_frequency_uncertainty=frequency_uncertainty,
+            damping_ratio_uncertainty=damping_uncertainty,
+        )
+    except (KeyError, TypeError, ValueError) as error:
+        raise TestFolderError(
+            f"{folder.model}: damaged ({error!r}); run `freqid estimate {folder.quoted}` again"
+        ) from None
+    return replace(rig, step_test=prior)
+
+
+def with_prior_noted(profile: Profile, rig: Rig) -> Profile:
+    """The profile with what was known of the rig, in place of the sheet's [step_test], among its settings."""
+    return replace(profile, settings={**profile.settings, "prior": asdict(rig.step_test)})
 
 
 def rigs_of_the_box(rig: Rig) -> tuple[SecondOrder, ...]:
@@ -77,6 +143,8 @@ def rigs_of_the_box(rig: Rig) -> tuple[SecondOrder, ...]:
 def check_against_limits(profile: Profile, rig: Rig) -> float | None:
     """Worst predicted swing of the profile within the limits of the sheet as it is now; None without a rig to expect.
 
+    A profile that was planned from a model is held against the rigs of that model.
+
     Raises
     ------
     excitation.LimitExceeded
@@ -84,8 +152,29 @@ def check_against_limits(profile: Profile, rig: Rig) -> float | None:
     """
     limits = limits_of(rig)
     limits.check_profile(profile)
+    prior: Any = profile.settings.get("prior")
+    if prior is not None:
+        rig = replace(rig, step_test=StepTest(**prior))
     rigs = rigs_of_the_box(rig)
     return check_swing(profile, rigs, limits, margin=SWING_MARGIN) if rigs else None
+
+
+def _from_model(folder: TestFolder, content: Mapping[str, Any], name: str) -> tuple[float, float]:
+    """Value of a parameter and half its 95 % interval, relative."""
+    entry = content["parameters"][name]
+    if entry is None:
+        raise TestFolderError(
+            f"{folder.model}: {name} is undetermined, so no test can be planned from it; plan from [step_test], without"
+            " --from-model"
+        )
+    value, (low, high) = float(entry["value"]), entry["interval_95"]
+    relative = (high - low) / 2 / abs(value)
+    if not relative < 1:
+        raise TestFolderError(
+            f"{folder.model}: {name} is known to {relative:.3g} relative (95 %) only, below 1 is needed here;"
+            " plan from [step_test], without --from-model"
+        )
+    return value, relative
 
 
 def _across(natural_frequency: float, relative: float, damping_ratio: float) -> list[float]:

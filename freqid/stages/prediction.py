@@ -17,7 +17,7 @@ from excitation.profile import Profile
 from freqid.quantity import Caveat, Quantity, in_unit
 from freqid.rig import Rig
 from freqid.second_order import PARAMETER_ORDER, SecondOrder, parameter_units
-from freqid.stages.planned_rig import SWING_MARGIN, check_against_limits, expected_rig
+from freqid.stages.planned_rig import SWING_MARGIN, check_against_limits, expected_rig, is_unknown
 
 __all__ = ["Prediction", "predict", "relative_damping_uncertainty", "rig_to_plan_with"]
 
@@ -96,6 +96,14 @@ def rig_to_plan_with(rig: Rig) -> SecondOrder:
 def _expected(profile: Profile, rig: Rig) -> tuple[dict[str, Quantity | None], list[Caveat]]:
     nothing: dict[str, Quantity | None] = dict.fromkeys(PARAMETER_ORDER)
     model = expected_rig(rig)
+    if is_unknown(rig):
+        return nothing, [Caveat(
+            "scouting_test",
+            "a scouting test: [step_test] tells nothing of the rig, so no swing can be predicted. Unless asked"
+            " otherwise the amplitude is a tenth of what the voltage limit leaves and the band is as wide as the sensor"
+            " can see. Watch the angle, ready to switch off; run it, `estimate`, then plan the real test with `excite"
+            " --from-model`.",
+        )]  # fmt: skip
     if model is None:
         return nothing, [Caveat(
             "swing_not_predicted",

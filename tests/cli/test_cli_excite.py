@@ -74,7 +74,8 @@ def test_lightly_damped_rig_is_safe_between_the_corners_too(
 def test_design_is_written_as_told(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
     """The four files appear, the JSON file holds what was printed, and the rig sheet's sha256 stands in it."""
     told = designed(folder, capsys, "--band", "0.5", "10", "--duration", "25", "--seed", "3")
-    assert sorted(os.listdir(folder.path)) == sorted([*FILES, "rig.toml"])
+    assert sorted(os.listdir(folder.path)) == sorted([*FILES, "figures", "rig.toml"])
+    assert os.listdir(folder.figures) == ["profile_card.svg"] and told["figure"] == "figures/profile_card.svg"
     written = folder.read_json(folder.profile_json, format="freqid profile")
     assert written["prediction"] == told["prediction"]
     assert list(written["sources"]) == ["rig.toml"]
@@ -222,3 +223,72 @@ def test_failed_writing_leaves_nothing(
     assert main(["excite", str(folder.path), *SHORT]) == 1
     assert "profile.h5: No space left on device" in capsys.readouterr().err
     assert os.listdir(folder.path) == ["rig.toml"]
+
+
+def test_unknown_rig_gets_a_scouting_test(
+    folder: TestFolder, change_rig: Any, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """Without any step-test value a gentle test over all the sensor sees is proposed, and what to do after it."""
+    for key in ("gain = 12.0 ", "natural_frequency = 3.0 ", "damping_ratio = 0.12 ", "delay = 0.02 "):
+        change_rig(key, "#")
+    told = designed(folder, capsys)
+    assert told["band"] == [0.2, 27.0]  # 12 periods in 60 s; 0.45 of 60 frames/s
+    assert told["peak_voltage"] == pytest.approx(0.5, abs=1e-8)  # a tenth of 5 V, rounded toward the bias
+    (caveat,) = told["prediction"]["warnings"]
+    assert caveat["code"] == "scouting_test" and told["prediction"]["swing"] is None
+    assert "no swing can be predicted" in caveat["message"] and "--from-model" in caveat["message"]
+
+
+def test_next_test_is_planned_from_the_model(
+    planned: TestFolder, change_rig: Any, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """--from-model swings the estimated rig, not the step test's, and can be captured."""
+    change_rig("gain = 12.0 ", "gain = 10.0 ")
+    parameters = {
+        "gain": {"value": 12.0, "unit": "deg/V", "interval_95": [11.88, 12.12]},
+        "natural_frequency": {"value": 4.0, "unit": "Hz", "interval_95": [3.98, 4.02]},
+        "damping_ratio": {"value": 0.2, "unit": "1", "interval_95": [0.198, 0.202]},
+        "delay": {"value": 0.37, "unit": "s", "interval_95": [0.36, 0.38], "includes_clock_offset": True},
+    }
+    planned.results.mkdir(exist_ok=True)
+    planned.write_json(planned.model, {
+        "format": "freqid model", "format_version": 1, "angle_unit": "deg", "parameters": parameters,
+    })  # fmt: skip
+    told = designed(planned, capsys, "--from-model", *SHORT)
+    expected = told["prediction"]["expected"]
+    assert [expected[name]["value"] for name in expected] == [12.0, 4.0, 0.2, 0.02]  # the delay is the sheet's
+    swing = simulated_swing(
+        read_profile(planned.profile_h5), gain=12.12, natural_frequency=4.02, damping_ratio=0.198
+    )
+    # Of 27 deg allowed; a peak at up to 8 Hz is missed at 250 Hz by 1 - cos(pi * 8 / 250) = 0.5 %, and the worst of
+    # this narrow box is another corner by at most the 1 % by which natural frequency and damping ratio differ over it.
+    assert 27.0 * (1 - 0.02) < swing < 30.0
+    written = planned.read_json(planned.profile_json, format="freqid profile")
+    assert sorted(written["sources"]) == ["results/model.json", "rig.toml"]
+    assert main(["capture", str(planned.path), "--simulate"]) == 0
+
+
+@pytest.mark.parametrize(
+    ("damping_ratio", "expected"),
+    [
+        (None, "damping_ratio is undetermined"),
+        ({"value": 0.1, "interval_95": [-0.05, 0.25]}, "damping_ratio is known to 1.5 relative (95 %) only"),
+        ({"value": 0.1}, "damaged (KeyError('interval_95'))"),
+    ],
+)
+def test_model_that_cannot_be_planned_from_is_told(
+    damping_ratio: object, expected: str, folder: TestFolder, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """No model, or one that leaves a parameter open, is one line with what to do, and nothing is written."""
+    assert main(["excite", str(folder.path), "--from-model"]) == 1
+    err = capsys.readouterr().err
+    assert "model.json: no such file; make it with `freqid estimate" in err and err.count("\n") == 1
+    folder.results.mkdir()
+    known = {"value": 3.0, "interval_95": [2.9, 3.1]}
+    parameters = {"gain": known, "natural_frequency": known, "damping_ratio": damping_ratio, "delay": None}
+    content = {"format": "freqid model", "format_version": 1, "angle_unit": "deg", "parameters": parameters}
+    folder.write_json(folder.model, content)
+    assert main(["excite", str(folder.path), "--from-model"]) == 1
+    err = capsys.readouterr().err
+    assert expected in err and err.count("\n") == 1
+    assert sorted(os.listdir(folder.path)) == ["results", "rig.toml"]
