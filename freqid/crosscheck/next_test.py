@@ -67,5 +67,5 @@ def _factor(row: ComparedRow) -> float:
 
 
 def _round_up(seconds: float) -> int:
-    step = 10 ** max(int(math.floor(math.log10(seconds))) - 1, 0)
+    step: int = 10 ** max(math.floor(math.log10(seconds)) - 1, 0)
     return math.ceil(seconds / step) * step
