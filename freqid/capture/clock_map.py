@@ -60,7 +60,8 @@ class ClockMap:
     def from_json(cls, data: dict[str, Any]) -> ClockMap:
         """Back from the form of results/model.json."""
         ratio, lag = Quantity.from_json(data["ratio_ppm"]), Quantity.from_json(data["lag"])
-        assert ratio is not None and lag is not None
+        if ratio is None or lag is None:
+            raise ValueError("clock: ratio_ppm and lag are needed")
         return cls(
             ratio_ppm=ratio,
             offset_known=data["offset_known"],

@@ -29,8 +29,7 @@ def create_folder(path: Path | str) -> TestFolder:
     is_new = not folder.path.exists()
     try:
         write_text(folder.rig, rig_sheet_text())
-    except BaseException:
-        if is_new and folder.path.is_dir():
+    finally:
+        if is_new and folder.path.is_dir() and not folder.rig.exists():
             folder.path.rmdir()
-        raise
     return folder

@@ -75,7 +75,10 @@ def is_unknown(rig: Rig) -> bool:
 def rig_from_model(folder: TestFolder, rig: Rig) -> Rig:
     """The rig with results/model.json for its step test: the parameters, and their intervals as relative uncertainties.
 
-    A delay that includes the offset of two clocks says nothing of the rig's own: then the sheet's stays.
+    The interval of a model knows the noise of its run, not that the rig may change with amplitude or temperature: no
+    uncertainty is taken as smaller than the sheet's tolerance for that quantity, nor, where the model does not describe the
+    response, as smaller than that of [step_test]. A delay that includes the offset of two clocks says nothing of the rig's
+    own: then the sheet's stays.
 
     Raises
     ------
@@ -92,6 +95,7 @@ def rig_from_model(folder: TestFolder, rig: Rig) -> Rig:
         gain, gain_uncertainty = _from_model(folder, content, "gain")
         frequency, frequency_uncertainty = _from_model(folder, content, "natural_frequency")
         damping, damping_uncertainty = _from_model(folder, content, "damping_ratio")
+        least = _least_uncertainty(rig, adequate=content.get("adequate") is True)
         delay = content["parameters"]["delay"]
         own = delay is not None and not delay.get("includes_clock_offset", True)
         prior = StepTest(
@@ -99,15 +103,24 @@ def rig_from_model(folder: TestFolder, rig: Rig) -> Rig:
             natural_frequency=frequency,
             damping_ratio=damping,
             delay=float(delay["value"]) if own else rig.step_test.delay,
-            gain_uncertainty=gain_uncertainty,
-            natural_frequency_uncertainty=frequency_uncertainty,
-            damping_ratio_uncertainty=damping_uncertainty,
+            gain_uncertainty=max(gain_uncertainty, least["gain"]),
+            natural_frequency_uncertainty=max(frequency_uncertainty, least["natural_frequency"]),
+            damping_ratio_uncertainty=max(damping_uncertainty, least["damping_ratio"]),
         )
     except (KeyError, TypeError, ValueError) as error:
         raise TestFolderError(
             f"{folder.model}: damaged ({error!r}); run `freqid estimate {folder.quoted}` again"
         ) from None
     return replace(rig, step_test=prior)
+
+
+def _least_uncertainty(rig: Rig, *, adequate: bool) -> dict[str, float]:
+    """Smallest relative uncertainties (95 %) that a plan may rest on."""
+    names = ("gain", "natural_frequency", "damping_ratio")
+    tolerated = {name: getattr(rig.tolerance, name) for name in names}
+    if adequate:
+        return tolerated
+    return {name: max(tolerated[name], getattr(rig.step_test, f"{name}_uncertainty")) for name in names}
 
 
 def with_prior_noted(profile: Profile, rig: Rig) -> Profile:
