@@ -184,7 +184,9 @@ class HeldResponse:
         return self._at(np.asarray(time, dtype=float))[1]
 
     def mean_and_rate(self, end: Floats, exposure: float) -> tuple[Floats, Floats]:
-        """Mean angle over [end - exposure, end] and its derivative by `end`, both (N,); exposure 0 is the angle itself."""
+        """Mean angle over [end - exposure, end] and its derivative by `end`, both (N,); exposure 0 is the angle
+        itself.
+        """
         end = np.asarray(end, dtype=float)
         angle1, rate1 = self._at(end)
         if exposure <= 0:

@@ -1,4 +1,6 @@
-"""What are the four fitted parameters worth? Each with its unit and interval, the same for every test that fits them."""
+"""What are the four fitted parameters worth? Each with its unit and interval, the same for every test that fits
+them.
+"""
 
 from __future__ import annotations
 
@@ -21,7 +23,9 @@ def quantities_of(
     angle_unit: str,
     undetermined: Collection[str] = (),
 ) -> dict[str, Quantity | None]:
-    """The parameters by name, with the square roots of the covariance's (4, 4) diagonal; None for those undetermined."""
+    """The parameters by name, with the square roots of the covariance's (4, 4) diagonal; None for those
+    undetermined.
+    """
     units = parameter_units(angle_unit)
     deviations = np.sqrt(np.diag(covariance))
     return {

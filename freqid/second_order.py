@@ -70,7 +70,8 @@ class SecondOrder:
         denominator = 1 - x**2 + 2j * self.damping_ratio * x
         unit = np.exp(-2j * np.pi * f * self.delay) / denominator
         response = self.gain * unit
-        by_natural_frequency = -response * (2 * x**2 - 2j * self.damping_ratio * x) / (denominator * self.natural_frequency)
+        slope = (2 * x**2 - 2j * self.damping_ratio * x) / self.natural_frequency
+        by_natural_frequency = -response * slope / denominator
         by_damping_ratio = -response * 2j * x / denominator
         by_delay = -2j * np.pi * f * response
         return np.stack([unit, by_natural_frequency, by_damping_ratio, by_delay], axis=-1)

@@ -65,8 +65,11 @@ class SimulatedRig:
     def from_sheet(cls, rig: Rig) -> SimulatedRig:
         """The rig described by `[simulated]` and `[angle_sensor]` of a rig sheet."""
         s = rig.simulated
-        if s.gain is None or s.natural_frequency is None or s.damping_ratio is None or s.delay is None or s.noise is None:
-            raise RigSheetError("[simulated]: gain, natural_frequency, damping_ratio, delay and noise are needed; give them")
+        if s.gain is None or s.natural_frequency is None or s.damping_ratio is None or s.delay is None or (
+            s.noise is None
+        ):
+            raise RigSheetError("[simulated]: gain, natural_frequency, damping_ratio, delay and noise are needed; "
+                                "give them")
         return cls(
             model=SecondOrder(
                 gain=s.gain, natural_frequency=s.natural_frequency, damping_ratio=s.damping_ratio, delay=s.delay

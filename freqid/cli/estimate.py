@@ -20,8 +20,9 @@ __all__ = ["command", "print_identification"]
 @click.command("estimate")
 @folder_argument
 @click.option("--run", "run", metavar="NAME|all", help="The run to use, or all; the latest complete one unless given.")
-@click.option("--method", type=click.Choice(["auto", "periodic", "local-polynomial"]), default="auto", show_default=True,
-              help="How the response is estimated; auto takes periodic where the excitation is known to repeat.")
+@click.option("--method", type=click.Choice(["auto", "periodic", "local-polynomial"]), default="auto",
+              show_default=True, help="How the response is estimated; auto takes periodic where the excitation"
+              " is known to repeat.")
 @json_option
 def command(
     folder: Path, run: str | None, method: Literal["auto", "periodic", "local-polynomial"], as_json: bool
@@ -68,6 +69,7 @@ def _facts(found: Identification) -> list[tuple[str, str]]:
         ("response", f"{len(response.frequency)} points from {response.frequency[0]:.3g} to "
                      f"{response.frequency[-1]:.3g} Hz, {response.method}"),
         ("clocks", clocks),
-        ("frames", f"{clock.frames} read, {clock.lost_frames} lost, stamps off their grid by {1e3 * clock.jitter:.2g} ms rms"),
+        ("frames", f"{clock.frames} read, {clock.lost_frames} lost, stamps off their grid by {1e3 * clock.jitter:.2g} "
+                   f"ms rms"),
         ("model", f"explains {100 * model.explained:.2f} % of the angle's variance; {adequate}"),
     ]  # fmt: skip

@@ -29,7 +29,8 @@ _ABOVE_ZERO = click.FloatRange(min=0, min_open=True)
               help="Uncertainty wanted for the damping ratio, relative, at 95 % (0.05 is 5 %): the test is made as"
                    " long as it takes, at most --duration.")
 @click.option("--amplitude", type=_ABOVE_ZERO, metavar="V",
-              help="Peak voltage from the bias; refused where it would pass a limit. The largest safe one unless given.")
+              help="Peak voltage from the bias; refused where it would pass a limit. The largest safe one unless "
+                   "given.")
 @click.option("--seed", type=click.IntRange(min=0), default=1, show_default=True, help="Of the random phases.")
 @click.option("--from-model", is_flag=True, help="Plan from results/model.json in place of [step_test].")
 @json_option

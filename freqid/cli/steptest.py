@@ -45,10 +45,11 @@ def print_step_result(result: StepResult) -> None:
     )
     read, derived = dict(quantity_rows_by_name(result.quantities)), dict(quantity_rows_by_name(result.derived))
     rows = [(name, *read[name], derived.get(name, ("", ""))[0]) for name in read]
+    counted = f"{len(result.steps)} step{'s' if len(result.steps) > 1 else ''}"
     up = sum(step.direction == "up" for step in result.steps)
     print_table(
         rows,
-        columns=(f"{len(result.steps)} step{'s' if len(result.steps) > 1 else ''}, {up} up", "read off ± 95 %", "unit", "fit implies"),
+        columns=(f"{counted}, {up} up", "read off ± 95 %", "unit", "fit implies"),
     )
 
 

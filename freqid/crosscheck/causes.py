@@ -68,7 +68,8 @@ def _scale_error(rows: dict[str, ComparedRow]) -> Cause | None:
         cause="scale_error",
         strength=0.8,
         evidence=(
-            f"The gain differs by {100 * relative[0]:+.3g} % while natural frequency and damping ratio agree within their "
+            f"The gain differs by {100 * relative[0]:+.3g} % while natural frequency and damping ratio agree within "
+            f"their "
             "uncertainty: the scale of voltage or angle differs between the tests."
         ),
     )
@@ -84,7 +85,8 @@ def _time_scale(rows: dict[str, ComparedRow], model: IdentifiedModel, step: Step
         cause="time_scale",
         strength=0.5,
         evidence=(
-            f"The natural frequency differs by {100 * relative[0]:+.3g} % at equal damping ratio: a clock or a sample rate stated "
+            f"The natural frequency differs by {100 * relative[0]:+.3g} % at equal damping ratio: a clock or a sample "
+            f"rate stated "
             "wrongly in one test, or a spring that depends on amplitude or temperature."
         ),
     )
@@ -98,7 +100,8 @@ def _further_dynamics(model: IdentifiedModel) -> Cause | None:
         cause="model_inadequate",
         strength=float(np.clip(1 - 1 / excess, 0.1, 0.9)),
         evidence=(
-            f"The frequency response misses a second-order model by {excess:.3g} times its noise: nonlinearity or further dynamics, "
+            f"The frequency response misses a second-order model by {excess:.3g} times its noise: nonlinearity or "
+            f"further dynamics, "
             "which the two tests weigh differently."
         ),
     )
@@ -120,7 +123,8 @@ def _unequal_steps(step: StepResult) -> Cause | None:
         cause="unequal_directions",
         strength=float(np.clip(1 - 3 / ratio, 0.1, 0.9)),
         evidence=(
-            f"Steps up give a static gain {difference:+.3g} {step.angle_unit}/V different from steps down ({ratio:.2g} standard "
+            f"Steps up give a static gain {difference:+.3g} {step.angle_unit}/V different from steps down "
+            f"({ratio:.2g} standard "
             "uncertainties): friction, hysteresis or an operating point that moves the spring's stiffness."
         ),
     )

@@ -69,12 +69,14 @@ def cross_check(
     """
     if model.angle_unit != step.angle_unit:
         raise CrossCheckError(
-            f"the frequency test is in {model.angle_unit}, the step test in {step.angle_unit}: repeat one with the same rig sheet"
+            f"the frequency test is in {model.angle_unit}, the step test in {step.angle_unit}: repeat one with the "
+            f"same rig sheet"
         )
     rows = [_parameter_row(name, model, step, tolerance.get(name)) for name in JUDGED]
     rows.append(_delay_row(model, step))
     rows.extend(_resonance_rows(resonance, step))
-    rows.append(_row("static_gain", model.parameters["gain"], step.quantities["static_gain"], None, "gain is judged above"))
+    rows.append(_row("static_gain", model.parameters["gain"], step.quantities["static_gain"], None, "gain is judged "
+                                                                                                    "above"))
     verdict = _verdict(rows)
     result = CrossCheck(
         verdict=verdict, sentence=_sentence(verdict, rows), compared=tuple(rows), joint=joint_test(model, step)

@@ -26,7 +26,8 @@ def propose_next_test(
         return NextTest(
             command=f"freqid excite {folder} --kind multisine --seed 2",
             reason=(
-                "Repeat the frequency test with new phases at the operating point and amplitude of the step test: if the result "
+                "Repeat the frequency test with new phases at the operating point and amplitude of the step test: if "
+                "the result "
                 "stays, the rig differs between the tests; if it moves, something drifts."
             ),
         )
@@ -53,7 +54,8 @@ def propose_next_test(
     return NextTest(
         command=f"freqid excite {folder} --kind {kind} --duration {duration}",
         reason=(
-            f"The {name} decides it, and the {'step' if step_is_wider else 'frequency'} test is the less certain of it: "
+            f"The {name} decides it, and the {'step' if step_is_wider else 'frequency'} test is the less certain of "
+            f"it: "
             f"{duration} s instead of {present:.0f} s bring the uncertainty down {factor:.2g} times."
         ),
     )

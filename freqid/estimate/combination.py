@@ -67,7 +67,8 @@ def _scatter(deviation: np.ndarray, weights: list[np.ndarray]) -> tuple[float, l
     return ratio, [
         Caveat(
             "runs_differ",
-            f"The runs scatter {np.sqrt(ratio):.2g} times more than their uncertainties allow; the intervals were widened by "
+            f"The runs scatter {np.sqrt(ratio):.2g} times more than their uncertainties allow; the intervals were "
+            f"widened by "
             "that factor. Something changes from run to run: amplitude, temperature, operating point.",
         )
     ]

@@ -32,7 +32,7 @@ from freqid.estimate.structures import BetterStructure, find_better_structure
 from freqid.quantity import Caveat, Quantity
 from freqid.records import Run
 
-__all__ = ["Identification", "Method", "Motion", "clock_caveats", "clock_map", "estimate_motion", "identify", "parameter_covariance"]
+__all__ = ["Identification", "Method", "clock_caveats", "clock_map", "identify"]
 
 Floats = NDArray[np.float64]
 Method = Literal["auto", "periodic", "local-polynomial"]
@@ -43,7 +43,9 @@ POOLED = 4  # independent points on either side that share their noise estimate
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Identification:
-    """What one run tells: response, model (with the clock map), and the residual (N,) at `time` (N,) on the input's clock."""
+    """What one run tells: response, model (with the clock map), and the residual (N,) at `time` (N,) on the input's
+    clock.
+    """
 
     response: FrequencyResponse
     model: IdentifiedModel
@@ -138,12 +140,14 @@ def _inadequate(adequacy: Adequacy, better: BetterStructure | None) -> Caveat:
     hint = "look at the residuals for nonlinearity or further dynamics."
     if better is not None:
         hint = (
-            f"a model with {'an' if better.name[0] in 'ae' else 'a'} {better.name} (at {better.frequency:.3g} Hz) does better "
+            f"a model with {'an' if better.name[0] in 'ae' else 'a'} {better.name} (at {better.frequency:.3g} Hz) "
+            f"does better "
             f"(information criterion smaller by {better.gained:.3g})."
         )
     return Caveat(
         "model_inadequate",
-        f"A second-order model does not describe the response within its noise: the misfit is {excess:.3g} times what noise "
+        f"A second-order model does not describe the response within its noise: the misfit is {excess:.3g} times what "
+        f"noise "
         f"alone would give (p {chance}). The intervals contain the misfit; {hint}",
     )
 
@@ -166,7 +170,8 @@ def _sign_caveats(record: Record, fit: RecordFit) -> list[Caveat]:
                     )
                 ]
     if m.gain < 0:
-        return [Caveat("sensor_reversed", "The gain is negative: the angle moves against the voltage (sensor reversed?).")]
+        return [Caveat("sensor_reversed", "The gain is negative: the angle moves against the voltage (sensor "
+                                          "reversed?).")]
     return []
 
 

@@ -50,7 +50,9 @@ class LocalFit:
 def fit_locally(
     output: Complexes, drive: Complexes, centre: NDArray[np.intp], *, half_window: int = HALF_WINDOW, order: int = ORDER
 ) -> LocalFit:
-    """Local polynomial fit of two spectra (K,) at the bins `centre` (B,), each at least `half_window` from both ends."""
+    """Local polynomial fit of two spectra (K,) at the bins `centre` (B,), each at least `half_window` from both
+    ends.
+    """
     r = np.arange(-half_window, half_window + 1)
     powers = (r / half_window)[:, None] ** np.arange(order + 1)
     window = centre[:, None] + r

@@ -42,7 +42,9 @@ class Adequacy:
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class IdentifiedModel:
-    """Model, joint covariance (4, 4) in `PARAMETER_ORDER` (gain in angle unit per V, Hz, 1, s), and what it rests on."""
+    """Model, joint covariance (4, 4) in `PARAMETER_ORDER` (gain in angle unit per V, Hz, 1, s), and what it rests
+    on.
+    """
 
     model: SecondOrder
     covariance: NDArray[np.float64]

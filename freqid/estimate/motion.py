@@ -59,7 +59,10 @@ def estimate_motion(record: Record) -> Motion:
     told = _cleaning_caveats(outlier_at, lost_at)
     reason = _acausal(record, fit)
     if reason is None and record.common_clock and _ran_away(record, fit):
-        reason = "With a free delay no model fits: the delay was held at 0; check that the angle does not come before the voltage."
+        reason = (
+            "With a free delay no model fits: the delay was held at 0; check that the angle does not come before the "
+            "voltage."
+        )
     if reason is None:
         _refuse_runaway(record, fit)
         motion = replace(_weighted(record, fit), caveats=told, outlier_at=outlier_at, silently_lost_at=lost_at)
@@ -84,7 +87,8 @@ def _with_held_delay(record: Record, fit: RecordFit) -> tuple[Record, RecordFit]
     trials = [refine(held, start), refine(held, _sluggish(start)), fit_record(held, starts=starts)]
     fits = [trial for trial in trials if trial is not None]
     if not fits:
-        raise EstimationError("no model with a delay of zero could be fitted: check that input and angle belong together")
+        raise EstimationError("no model with a delay of zero could be fitted: check that input and angle belong "
+                              "together")
     return held, min(fits, key=lambda trial: trial.sum_of_squares)
 
 
@@ -107,7 +111,8 @@ def _cleaning_caveats(outlier_at: Floats, lost_at: Floats) -> tuple[Caveat, ...]
         found.append(
             Caveat(
                 "outliers_left_out",
-                f"{len(outlier_at)} angle samples stand more than six standard deviations off and were left out, at stamps "
+                f"{len(outlier_at)} angle samples stand more than six standard deviations off and were left out, at "
+                f"stamps "
                 f"{_instants(outlier_at)}.",
             )
         )
@@ -149,8 +154,10 @@ def _refuse_runaway(record: Record, fit: RecordFit) -> None:
     if not _ran_away(record, fit):
         return
     raise EstimationError(
-        f"the fit ran away to a natural frequency of {m.natural_frequency:.3g} Hz and a damping ratio of {m.damping_ratio:.3g}: the "
-        "record does not determine a second-order model; check that input and angle belong together, excite around the resonance",
+        f"the fit ran away to a natural frequency of {m.natural_frequency:.3g} Hz and a damping ratio of "
+        f"{m.damping_ratio:.3g}: the "
+        "record does not determine a second-order model; check that input and angle belong together, excite around "
+        "the resonance",
         fit,
     )
 
@@ -161,7 +168,8 @@ def _acausal(record: Record, fit: RecordFit) -> str | None:
     if not record.common_clock or lag >= -max(record.frame_interval, record.drive.interval):
         return None
     return (
-        f"The best fit would put the angle {-lag:.3g} s before the voltage, which cannot be: the delay was held at 0 (noise, "
+        f"The best fit would put the angle {-lag:.3g} s before the voltage, which cannot be: the delay was held at 0 "
+        f"(noise, "
         "drift or further dynamics take its place)."
     )
 
@@ -175,7 +183,8 @@ def _fast_pole(record: Record, weighted: WeightedFit) -> str | None:
     if variance > 0 and np.sqrt(variance) <= RIDGE * model.natural_frequency:
         return None
     return (
-        "The fast pole and a delay look alike in this record: the delay was held at 0, so that the fast pole carries the "
+        "The fast pole and a delay look alike in this record: the delay was held at 0, so that the fast pole carries "
+        "the "
         "whole lag."
     )
 

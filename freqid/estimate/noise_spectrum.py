@@ -101,7 +101,9 @@ def noise_spectrum(
 
 
 def _window_means(totals: list[Floats], centre: NDArray[np.intp], half: NDArray[np.intp]) -> tuple[Floats, Floats]:
-    """Mean power of the bins within `half` of each centre, and its real degrees of freedom; ends use the nearest full window."""
+    """Mean power of the bins within `half` of each centre, and its real degrees of freedom; ends use the nearest full
+    window.
+    """
     last = len(totals[0]) - 1
     low = np.clip(centre - half, 0, np.maximum(last - 2 * half, 0))
     high = np.minimum(low + 2 * half, last)

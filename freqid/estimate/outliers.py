@@ -45,7 +45,9 @@ def without_outliers(record: Record, fit: RecordFit) -> tuple[Record, RecordFit,
 
 
 def spikes(residual: NDArray[np.float64], *, farthest: float) -> NDArray[np.bool_]:
-    """Which residuals (N,) stand farther off than `farthest` robust deviations, and far off what is usual around them."""
+    """Which residuals (N,) stand farther off than `farthest` robust deviations, and far off what is usual around
+    them.
+    """
     size = np.abs(residual - np.median(residual))
     scale = max(1.4826 * float(np.median(size)), 0.1 * float(np.std(residual)))
     around = np.lib.stride_tricks.sliding_window_view(np.pad(size, NEIGHBOURS, mode="reflect"), 2 * NEIGHBOURS + 1)

@@ -92,7 +92,8 @@ class LineRegression:
         count, width = basis.shape
         if width > FULLEST * count:
             raise EstimationError(
-                f"{count} frames cannot carry {len(periodicity.lines)} lines: fewer lines (narrower band, odd grid) or a "
+                f"{count} frames cannot carry {len(periodicity.lines)} lines: fewer lines (narrower band, odd grid) "
+                f"or a "
                 "longer record"
             )
         scale = np.sqrt(np.sum(basis**2, axis=0))
@@ -144,11 +145,9 @@ def steady_noise(record: Record, fit: RecordFit, lines: LineRegression) -> Noise
     period, periods = lines.periodicity.period, lines.periods
     grid = FrameGrid.from_stamps(record.stamp[lines.inside])
     top = 0.5 / record.frame_interval
-    if periods >= 2:
-        # every harmonic of the period is left out, excited or not: distortion sits there
-        known = np.arange(1, int(top * period) + 2) / period
-    else:
-        known = lines.periodicity.lines
+    # with two periods or more every harmonic is left out, excited or not: distortion sits there
+    harmonics = np.arange(1, int(top * period) + 2) / period
+    known = harmonics if periods >= 2 else lines.periodicity.lines
     folded = np.abs((known * lines.clock_ratio + top) % (2 * top) - top)
     try:
         return noise_spectrum(
@@ -182,7 +181,8 @@ def periodic_response(
         caveats = (
             Caveat(
                 "noise_assumed_white",
-                "One period with every harmonic excited shows no noise of its own; it was taken as white from the residual.",
+                "One period with every harmonic excited shows no noise of its own; it was taken as white from the "
+                "residual.",
             ),
         )
     else:

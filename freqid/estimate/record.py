@@ -65,7 +65,8 @@ class Record:
         usable = np.isfinite(a.time) & np.isfinite(a.angle)
         if usable.sum() < MINIMUM_FRAMES:
             raise EstimationError(
-                f"{run.name}: {int(usable.sum())} readable angle samples; at least {MINIMUM_FRAMES} are needed: record longer"
+                f"{run.name}: {int(usable.sum())} readable angle samples; at least {MINIMUM_FRAMES} are needed: "
+                f"record longer"
             )
         order = np.argsort(a.time[usable], kind="stable")
         stamp, angle = a.time[usable][order], a.angle[usable][order]
@@ -75,7 +76,8 @@ class Record:
             raise EstimationError(f"{run.name}: all angle stamps are {stamp[0]:g} s: check the time column")
         caveats: list[Caveat] = []
         if not usable.all():
-            caveats.append(Caveat("unreadable_frames", f"{int((~usable).sum())} frames without a readable angle were left out."))
+            caveats.append(Caveat("unreadable_frames", f"{int((~usable).sum())} frames without a readable angle were "
+                                                       f"left out."))
         drive, remarks = _drive(run.input, run.name)
         stamp = stamp + STAMP_TO_EXPOSURE_END[a.stamp] * a.exposure
         if run.common_clock and not run.input.commanded:
@@ -83,7 +85,8 @@ class Record:
             stamp, angle = stamp[covered], angle[covered]
             if len(stamp) < MINIMUM_FRAMES:
                 raise EstimationError(
-                    f"{run.name}: {len(stamp)} angle samples lie within the {drive.start:g} to {drive.stop:g} s of the input; at "
+                    f"{run.name}: {len(stamp)} angle samples lie within the {drive.start:g} to {drive.stop:g} s of "
+                    f"the input; at "
                     f"least {MINIMUM_FRAMES} are needed: give logs that overlap in time"
                 )
         return cls(
@@ -139,7 +142,8 @@ def _from_irregular(time: Floats, voltage: Floats, deviation: float, *, smooth: 
         voltage = voltage[np.searchsorted(time, grid + 1e-12, side="right") - 1]
     caveat = Caveat(
         "input_stamps_irregular",
-        f"The input stamps are irregular (up to {deviation:.2g} s off a uniform grid); the voltage was placed on a grid of "
+        f"The input stamps are irregular (up to {deviation:.2g} s off a uniform grid); the voltage was placed on a "
+        f"grid of "
         f"{fine:.2g} s.",
     )
     return Drive.from_samples(voltage, start=float(time[0]), interval=fine, smooth=smooth), [caveat]

@@ -110,7 +110,9 @@ def refine(record: Record, start: MotionParameters, *, evaluations: int = 100) -
         return j
 
     try:
-        found = least_squares(residual, np.zeros(len(free)), jac=jacobian, method="lm", x_scale="jac", max_nfev=evaluations)
+        found = least_squares(
+            residual, np.zeros(len(free)), jac=jacobian, method="lm", x_scale="jac", max_nfev=evaluations
+        )
         p = unpack(found.x)
         prediction = predict(record, p)
     except (ValueError, FloatingPointError, np.linalg.LinAlgError):

@@ -55,7 +55,8 @@ def read_resonance(measured: FrequencyResponse) -> ResonanceReading | str:
         return "the gain has no peak inside the measured band"
     if high - low + 1 < FEWEST_POINTS:
         return (
-            f"only {high - low + 1} of the {FEWEST_POINTS} lines needed lie on the peak: choose a longer period, or a longer record"
+            f"only {high - low + 1} of the {FEWEST_POINTS} lines needed lie on the peak: choose a longer period, or a "
+            f"longer record"
         )
     return _parabola(measured, slice(low, high + 1))
 

@@ -62,7 +62,8 @@ def read_identification(folder: TestFolder) -> Identification:
     try:
         model = _model(content)
     except (KeyError, TypeError, ValueError) as error:
-        raise TestFolderError(f"{folder.model}: damaged ({error!r}); run `freqid estimate {folder.quoted}` again") from None
+        raise TestFolderError(f"{folder.model}: damaged ({error!r}); run `freqid estimate {folder.quoted}` "
+                              f"again") from None
     return _read_response(folder, model)
 
 

@@ -68,7 +68,9 @@ def _corrected(record: Record, fit: RecordFit, found: list[int]) -> tuple[Record
 
 
 def _settled(record: Record, fit: RecordFit, found: list[int]) -> tuple[list[int], Record, RecordFit]:
-    """Take each loss out and look again with all others in place, until nothing moves: early finds stood among unfound ones."""
+    """Take each loss out and look again with all others in place, until nothing moves: early finds stood among unfound
+    ones.
+    """
     moved, again = _corrected(record, fit, found)
     for _ in range(PASSES):
         before = list(found)
@@ -91,7 +93,9 @@ def _settled(record: Record, fit: RecordFit, found: list[int]) -> tuple[list[int
 def _verified(
     record: Record, moved: Record, fit: RecordFit, found: list[int]
 ) -> tuple[list[int], Record, RecordFit]:
-    """Keep a loss only where it gains more than the loudest part of the noise could: slow noise looks like wandering time."""
+    """Keep a loss only where it gains more than the loudest part of the noise could: slow noise looks like wandering
+    time.
+    """
     grid = FrameGrid.from_stamps(moved.stamp)
     try:
         noise = noise_spectrum(fit.residual, grid, fitted=fit.prediction.jacobian)

@@ -143,7 +143,9 @@ _STRUCTURES = (
         "second mode",
         lambda v, f: (
             _second_order(v, f)
-            + v[4] * np.exp(-2j * np.pi * f * v[3]) / (1 - (f / np.exp(v[5])) ** 2 + 2j * np.exp(v[6]) * f / np.exp(v[5]))
+            + v[4]
+            * np.exp(-2j * np.pi * f * v[3])
+            / (1 - (f / np.exp(v[5])) ** 2 + 2j * np.exp(v[6]) * f / np.exp(v[5]))
         ),
         lambda m, f: [
             np.concatenate([_as_vector(m), [s * 0.05 * m.gain, np.log(c), np.log(0.05)]])

@@ -1,4 +1,6 @@
-"""How do both results become a verdict? Compared within the tolerances of the rig sheet, kept in results/crosscheck.json."""
+"""How do both results become a verdict? Compared within the tolerances of the rig sheet, kept in
+results/crosscheck.json.
+"""
 
 from __future__ import annotations
 

@@ -76,9 +76,9 @@ def rig_from_model(folder: TestFolder, rig: Rig) -> Rig:
     """The rig with results/model.json for its step test: the parameters, and their intervals as relative uncertainties.
 
     The interval of a model knows the noise of its run, not that the rig may change with amplitude or temperature: no
-    uncertainty is taken as smaller than the sheet's tolerance for that quantity, nor, where the model does not describe the
-    response, as smaller than that of [step_test]. A delay that includes the offset of two clocks says nothing of the rig's
-    own: then the sheet's stays.
+    uncertainty is taken as smaller than the sheet's tolerance for that quantity, nor, where the model does not
+    describe the response, as smaller than that of [step_test]. A delay that includes the offset of two clocks says
+    nothing of the rig's own: then the sheet's stays.
 
     Raises
     ------

@@ -56,7 +56,8 @@ def gather(folder: TestFolder) -> Any:
     step = read_step_result(folder) if folder.step.exists() else None
     if found is None and step is None:
         raise TestFolderError(
-            f"{folder.results}: nothing to report yet; run `freqid estimate {folder.quoted}` or `freqid steptest {folder.quoted}`"
+            f"{folder.results}: nothing to report yet; run `freqid estimate {folder.quoted}` or `freqid steptest "
+            f"{folder.quoted}`"
         )
     check = None
     if folder.crosscheck.exists():
@@ -95,7 +96,8 @@ def _refuse_stale(folder: TestFolder, path: Path, verb: str) -> None:
             continue
         if file_sha256(source) != sha256:
             raise TestFolderError(
-                f"{path}: was computed from another {name} than the one there now; run `freqid {verb} {folder.quoted}` again"
+                f"{path}: was computed from another {name} than the one there now; run `freqid {verb} "
+                f"{folder.quoted}` again"
             )
 
 

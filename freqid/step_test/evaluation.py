@@ -167,7 +167,8 @@ def _pooled(
             caveats.append(
                 Caveat(
                     "too_few_frames",
-                    f"The {_words(name)} was not read off: {_period(model) / record.frame_interval:.1f} frames per period, "
+                    f"The {_words(name)} was not read off: {_period(model) / record.frame_interval:.1f} frames per "
+                    f"period, "
                     f"{FRAMES_PER_PERIOD} are needed; take the value of the fitted model.",
                 )
             )

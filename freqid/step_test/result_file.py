@@ -63,7 +63,8 @@ def read_step_result(folder: TestFolder) -> StepResult:
     try:
         return _result(content)
     except (KeyError, TypeError, ValueError) as error:
-        raise TestFolderError(f"{folder.step}: damaged ({error!r}); run `freqid steptest {folder.quoted}` again") from None
+        raise TestFolderError(f"{folder.step}: damaged ({error!r}); run `freqid steptest {folder.quoted}` "
+                              f"again") from None
 
 
 def _result(content: dict[str, Any]) -> StepResult:

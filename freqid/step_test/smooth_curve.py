@@ -24,7 +24,9 @@ FEWEST_FRAMES = 4
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class SmoothCurve:
-    """Frames of one step: `time` (N,) s from the onset, `angle` (N,), half width of the window in s, noise rms of a frame."""
+    """Frames of one step: `time` (N,) s from the onset, `angle` (N,), half width of the window in s, noise rms of a
+    frame.
+    """
 
     time: Floats
     angle: Floats
@@ -32,7 +34,9 @@ class SmoothCurve:
     noise: float
 
     def at(self, instants: Floats) -> tuple[Floats, Floats, Floats]:
-        """Angle, its slope, and the standard uncertainty of the angle at `instants` (Q,); NaN where frames are missing."""
+        """Angle, its slope, and the standard uncertainty of the angle at `instants` (Q,); NaN where frames are
+        missing.
+        """
         value, slope, spread = (np.full(len(instants), np.nan) for _ in range(3))
         low = np.searchsorted(self.time, instants - self.half_width)
         high = np.searchsorted(self.time, instants + self.half_width)

@@ -36,7 +36,9 @@ STEP_QUANTITIES = (
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class StepReading:
-    """One step: when (s, input's clock), from and to which voltage (V), and what was read off it (None: undetermined)."""
+    """One step: when (s, input's clock), from and to which voltage (V), and what was read off it (None:
+    undetermined).
+    """
 
     time: float
     voltage_before: float

@@ -55,7 +55,8 @@ def find_steps(drive: Drive) -> list[VoltageStep]:
         (start, stop), (next_start, next_stop) = plateaus[number], plateaus[number + 1]
         before, after = float(np.median(value[start:stop])), float(np.median(value[next_start:next_stop]))
         change = next_start - stop + 1
-        if abs(after - before) < threshold or change > max(LONGEST_CHANGE * min(stop - start, next_stop - next_start), 2):
+        longest_change = max(LONGEST_CHANGE * min(stop - start, next_stop - next_start), 2)
+        if abs(after - before) < threshold or change > longest_change:
             continue
         steps.append(
             VoltageStep(

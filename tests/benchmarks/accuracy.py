@@ -181,7 +181,8 @@ def table(cells: Iterable[Cell], seeds: int, processes: int | None) -> None:
                 other[3] = np.nan  # a plain script cannot separate what it aligned by hand
             print(f"{cell.damping:5g} {cell.kind:11}{'two' if cell.two_clocks else 'one':7}"
                   + "".join(f"{v:6.2f}" for v in ratio) + "  " + "".join(f"{v:6.1f}" for v in coverage)
-                  + f"{100 * np.mean(p_value < 0.05):6.1f}  " + "".join(f"{v:8.1f}" for v in other), flush=True)  # fmt: skip
+                  + f"{100 * np.mean(p_value < 0.05):6.1f}  " + "".join(f"{v:8.1f}" for v in other),
+                  flush=True)  # fmt: skip
     pooled = np.mean(covered, axis=0)
     pairs = np.array(covered).ravel()
     print("pooled coverage: " + ", ".join(f"{n} {v:.1f} %" for n, v in zip(PARAMETER_ORDER, pooled, strict=True)))

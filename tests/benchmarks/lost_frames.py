@@ -47,7 +47,8 @@ def main() -> None:
     """Run and print."""
     records = int(sys.argv[1]) if len(sys.argv) > 1 else 100
     processes = int(sys.argv[2]) if len(sys.argv) > 2 else None
-    print(f"{'':11}{'zeta':>5} {'case':18}{'all, no more':>13}{'finds':>7}{'left out':>9}{'planted':>8}   rms error / bound")
+    print(f"{'':11}{'zeta':>5} {'case':18}{'all, no more':>13}{'finds':>7}{'left out':>9}{'planted':>8}   rms error / "
+          f"bound")
     with Pool(processes) as pool:
         for kind in KINDS:
             for damping in (0.12, 0.5):
@@ -56,7 +57,8 @@ def main() -> None:
                     rows = np.array(pool.map(one, [(cell, seed, lost, share) for seed in range(records)], chunksize=5))
                     mean = rows[:, :4].mean(axis=0)
                     ratio = np.sqrt(np.mean(rows[:, 4:] ** 2, axis=0))
-                    print(f"{kind:11}{damping:5g} {name:18}{100 * mean[0]:12.0f}%{mean[1]:7.2f}{mean[2]:9.1f}{mean[3]:8.1f}   "
+                    print(f"{kind:11}{damping:5g} "
+                          f"{name:18}{100 * mean[0]:12.0f}%{mean[1]:7.2f}{mean[2]:9.1f}{mean[3]:8.1f}   "
                           + " ".join(f"{v:.2f}" for v in ratio), flush=True)  # fmt: skip
 
 

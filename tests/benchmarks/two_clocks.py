@@ -34,7 +34,8 @@ from freqid.second_order import PARAMETER_ORDER, SecondOrder
 TRUE = SecondOrder(gain=12.0, natural_frequency=3.0, damping_ratio=0.12, delay=0.02)
 OFFSET = -0.35
 SENSOR = SimulatedSensor(
-    sample_rate=60.0, exposure=0.008, noise=0.3, jitter=0.001, lost_frames=0.02, clock_ratio=1.00015, clock_offset=OFFSET
+    sample_rate=60.0, exposure=0.008, noise=0.3, jitter=0.001, lost_frames=0.02,
+    clock_ratio=1.00015, clock_offset=OFFSET,
 )
 LIMITS = Limits(voltage=5.0, slew_rate=500.0, angle=30.0)
 

@@ -30,9 +30,13 @@ def _log(folder: Path, rate: float) -> Path:
     return path
 
 
-@pytest.mark.parametrize(("rate", "exposure"), [(60.0, 0.004), (59.0, 0.004), (65.9, 0.004), (50.0, 0.0), (1000.0, 0.0)])
+@pytest.mark.parametrize(
+    ("rate", "exposure"), [(60.0, 0.004), (59.0, 0.004), (65.9, 0.004), (50.0, 0.0), (1000.0, 0.0)]
+)
 def test_exposure_follows_the_rate_of_the_log(tmp_path: Path, rate: float, exposure: float) -> None:
-    """Within 10 % of the sensor's nominal rate its exposure counts; another log is read as instants, and a note says so."""
+    """Within 10 % of the sensor's nominal rate its exposure counts; another log is read as instants, and a note says
+    so.
+    """
     run = run_from_one_log(_log(tmp_path, rate), settings=ImportSettings(), rig=RIG)
     assert run.angle.exposure == exposure
     assert any("--exposure" in note for note in run.notes) == (exposure == 0.0)

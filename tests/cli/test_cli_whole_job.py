@@ -33,7 +33,8 @@ def copied(rehearsed: TestFolder, tmp_path: Path) -> TestFolder:
 
 
 def _json(path: Path) -> dict[str, Any]:
-    content: dict[str, Any] = json.loads(path.read_text(encoding="utf-8"), parse_constant=lambda word: pytest.fail(word))
+    text = path.read_text(encoding="utf-8")
+    content: dict[str, Any] = json.loads(text, parse_constant=lambda word: pytest.fail(word))
     return content
 
 
@@ -41,7 +42,8 @@ def test_rehearsal_makes_every_file_of_a_test(rehearsed: TestFolder) -> None:
     """All boxes of the flow are there, and nothing temporary."""
     names = {file.relative_to(rehearsed.path).as_posix() for file in rehearsed.path.rglob("*") if file.is_file()}
     profiles = {f"{stem}.{ending}" for stem in ("profile", "step_profile") for ending in ("h5", "csv", "wav", "json")}
-    results = {f"results/{name}" for name in ("response.h5", "response.csv", "model.json", "step.json", "crosscheck.json")}
+    made = ("response.h5", "response.csv", "model.json", "step.json", "crosscheck.json")
+    results = {f"results/{name}" for name in made}
     assert profiles | results | {"rig.toml", "runs/response-001.h5", "runs/step-001.h5", "report.html"} <= names
     assert {name for name in names if name.startswith("figures/")}
     assert not [name for name in names if ".part" in name or "tmp" in name]
@@ -81,7 +83,8 @@ def test_response_csv_is_the_response(rehearsed: TestFolder) -> None:
     lines = rehearsed.response_csv.read_text(encoding="utf-8").splitlines()
     table = np.array([[float(cell) for cell in line.split(",")] for line in lines[1:]])
     assert lines[0].startswith("frequency_Hz,gain_deg_per_V,")
-    assert np.all(np.diff(table[:, 0]) > 0) and np.all(table[:, 2] > 0) and np.all((table[:, 5] > 0) & (table[:, 5] <= 1))
+    assert np.all(np.diff(table[:, 0]) > 0) and np.all(table[:, 2] > 0)
+    assert np.all((table[:, 5] > 0) & (table[:, 5] <= 1))
 
 
 def test_verdict_of_the_same_rig_is_agree(rehearsed: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
@@ -93,7 +96,9 @@ def test_verdict_of_the_same_rig_is_agree(rehearsed: TestFolder, capsys: pytest.
 
 
 def test_another_rig_in_the_step_test_disagrees(copied: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
-    """A damping ratio 40 % higher in the step test than in the frequency test is found: status 3, named, next test proposed."""
+    """A damping ratio 40 % higher in the step test than in the frequency test is found: status 3, named, next test
+    proposed.
+    """
     sheet = copied.rig.read_text(encoding="utf-8")
     copied.rig.write_text(_simulated(sheet, damping_ratio=0.165), encoding="utf-8")
     for words in (["capture", "--kind", "step", "--simulate", "--seed", "3"], ["steptest"]):
@@ -188,7 +193,8 @@ def test_damaged_result_is_one_line(
     """A result file cut short, or without a key, is named with the command that makes it again."""
     path: Path = getattr(copied, name)
     content = _json(path)
-    for text in (path.read_text(encoding="utf-8")[:200], json.dumps({"format": content["format"], "format_version": 1})):
+    bare = json.dumps({"format": content["format"], "format_version": 1})
+    for text in (path.read_text(encoding="utf-8")[:200], bare):
         path.write_text(text, encoding="utf-8")
         assert main([verb, str(copied.path)]) == 1
         err = capsys.readouterr().err

@@ -85,7 +85,9 @@ def test_a_lost_frame_on_one_converter_is_not_looked_for(clean: Run) -> None:
 
 
 def test_slow_noise_is_not_taken_for_lost_frames(clean: Run) -> None:
-    """Noise of first order below 1 Hz, 0.5 deg, wanders like a wandering clock; no frame is claimed lost in five records."""
+    """Noise of first order below 1 Hz, 0.5 deg, wanders like a wandering clock; no frame is claimed lost in five
+    records.
+    """
     pole = np.exp(-2 * np.pi / 60)
     for seed in range(5):
         white = np.random.default_rng(seed).standard_normal(len(clean.angle.time) + 300)

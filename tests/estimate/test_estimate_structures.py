@@ -59,15 +59,15 @@ def test_planted_structure_is_named(name: str, change: Callable[..., Complexes],
 
 
 def test_fewer_parameters_alone_name_nothing() -> None:
-    """A second-order model that fits a first-order response as well loses only ln(160) = 5.1 by its one parameter more: less
-    than the 10 asked for."""
+    """A second-order model that fits a first-order response as well loses only ln(160) = 5.1 by its one parameter
+    more: less than the 10 asked for."""
     response = 12.0 / (1 + 1j * FREQUENCY / 1.5)
     like = SecondOrder(gain=12.0, natural_frequency=20.0, damping_ratio=6.7, delay=0.0)
     assert find_better_structure(measured(response.astype(complex), 1), like) is None
 
 
 def test_nothing_is_named_where_second_order_is_enough() -> None:
-    """Six records of a true second-order rig: one to three parameters more would have to gain 15 to 25 in chi-square, which
-    chance does in fewer than one of 5000."""
+    """Six records of a true second-order rig: one to three parameters more would have to gain 15 to 25 in
+    chi-square, which chance does in fewer than one of 5000."""
     named = [find_better_structure(measured(VANE.response(FREQUENCY), seed), VANE) for seed in range(6)]
     assert named == [None] * 6

@@ -137,7 +137,8 @@ def _exposure(time: NDArray[np.float64], settings: ImportSettings, rig: RigFacts
     if rig.exposure == 0 or abs(rate / rig.angle_sample_rate - 1) <= SAME_RATE:
         return rig.exposure, ""
     return 0.0, (
-        f"logged at {rate:.4g} Hz, not at the {rig.angle_sample_rate:g} Hz of [angle_sensor]: taken as readings of an instant, "
+        f"logged at {rate:.4g} Hz, not at the {rig.angle_sample_rate:g} Hz of [angle_sensor]: taken as readings of an "
+        f"instant, "
         f"its exposure of {rig.exposure:g} s left aside; give --exposure where the log averages"
     )
 
