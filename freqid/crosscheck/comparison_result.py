@@ -6,9 +6,12 @@ Source: design of the verdict in DEVELOPERS.md; En: ISO/IEC 17043:2010, B.3.1.3.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any, Literal
+from typing import TYPE_CHECKING, Any, Literal
 
 from freqid.quantity import Caveat, Quantity
+
+if TYPE_CHECKING:
+    from freqid.crosscheck.exhibit import Exhibit
 
 __all__ = ["Cause", "ComparedRow", "CrossCheck", "JointTest", "NextTest", "RowVerdict", "Verdict"]
 
@@ -62,11 +65,46 @@ class JointTest:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Cause:
-    """A possible cause of a disagreement: a stable code, strength 0 to 1, and the evidence in one sentence."""
+    """A possible cause of a disagreement: a stable code, strength 0 to 1, and the evidence in one sentence.
+
+    `against` is what speaks against it, `settling_test` the test that would tell it from its rivals (both empty where
+    there is nothing to say), `exhibit` the figure that shows the evidence.
+    """
 
     cause: str
     strength: float
     evidence: str
+    against: str = ""
+    exhibit: Exhibit | None = None
+    settling_test: str = ""
+
+    def as_json(self) -> dict[str, Any]:
+        """One entry of "causes" in results/crosscheck.json."""
+        return {
+            "cause": self.cause,
+            "strength": self.strength,
+            "evidence": self.evidence,
+            "against": self.against,
+            "exhibit": None if self.exhibit is None else self.exhibit.as_json(),
+            "settling_test": self.settling_test,
+        }
+
+    @classmethod
+    def from_json(cls, data: dict[str, Any]) -> Cause:
+        """Back from the form of results/crosscheck.json."""
+        shown = data.get("exhibit")
+        if shown is not None:
+            from freqid.crosscheck.exhibit import Exhibit
+
+            shown = Exhibit.from_json(shown)
+        return cls(
+            cause=data["cause"],
+            strength=data["strength"],
+            evidence=data["evidence"],
+            against=data.get("against", ""),
+            exhibit=shown,
+            settling_test=data.get("settling_test", ""),
+        )
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

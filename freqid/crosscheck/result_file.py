@@ -32,7 +32,7 @@ def crosscheck_as_json(check: CrossCheck) -> dict[str, Any]:
         "sentence": check.sentence,
         "compared": [row.as_json() for row in check.compared],
         "joint": None if check.joint is None else asdict(check.joint),
-        "causes": [asdict(cause) for cause in check.causes],
+        "causes": [cause.as_json() for cause in check.causes],
         "next_test": None if check.next_test is None else asdict(check.next_test),
         "warnings": [c.as_json() for c in check.caveats],
     }
@@ -47,7 +47,7 @@ def read_crosscheck(folder: TestFolder) -> CrossCheck:
             sentence=content["sentence"],
             compared=tuple(_row(row) for row in content["compared"]),
             joint=None if content["joint"] is None else JointTest(**content["joint"]),
-            causes=tuple(Cause(**cause) for cause in content["causes"]),
+            causes=tuple(Cause.from_json(cause) for cause in content["causes"]),
             next_test=None if content["next_test"] is None else NextTest(**content["next_test"]),
             caveats=Caveat.all_from_json(content["warnings"]),
         )
