@@ -23,6 +23,7 @@ from freqid.rig_tables import (
     Limits,
     Output,
     Range,
+    Requirements,
     Simulated,
     StepTest,
     Tolerance,
@@ -34,6 +35,7 @@ __all__ = [
     "Identity",
     "Limits",
     "Output",
+    "Requirements",
     "Rig",
     "Simulated",
     "StepTest",
@@ -55,6 +57,7 @@ class Rig:
     angle_sensor: AngleSensor
     step_test: StepTest
     tolerance: Tolerance
+    requirements: Requirements
     simulated: Simulated
 
     @property
@@ -75,6 +78,7 @@ TABLES: Mapping[str, type] = {
     "angle_sensor": AngleSensor,
     "step_test": StepTest,
     "tolerance": Tolerance,
+    "requirements": Requirements,
     "simulated": Simulated,
 }
 
@@ -116,6 +120,7 @@ def parse_rig(text: str, source: str = "rig.toml") -> Rig:
         angle_sensor=_table(AngleSensor, sheet, "angle_sensor", source),
         step_test=_table(StepTest, sheet, "step_test", source),
         tolerance=_table(Tolerance, sheet, "tolerance", source),
+        requirements=_table(Requirements, sheet, "requirements", source),
         simulated=_table(Simulated, sheet, "simulated", source),
     )
     _check_together(rig, source)
@@ -160,6 +165,7 @@ def _allowed(rule: KeyRule) -> str:
 
 
 def _check_together(rig: Rig, source: str) -> None:
+    _check_requirements(rig.requirements, source)
     if abs(rig.limits.bias) >= rig.limits.voltage:
         raise RigSheetError(
             f"{source}: [limits] bias = {rig.limits.bias:g}: must lie inside ±voltage = ±{rig.limits.voltage:g} V"
@@ -170,6 +176,21 @@ def _check_together(rig: Rig, source: str) -> None:
             f"{source}: [angle_sensor] exposure = {rig.angle_sensor.exposure:g}: must be at most the frame interval,"
             f" {interval:.4g} s at sample_rate = {rig.angle_sensor.sample_rate:g} Hz"
         )
+
+
+def _check_requirements(wanted: Requirements, source: str) -> None:
+    given = ["settling_time_max", "settling_band"]
+    if (wanted.settling_time_max is None) != (wanted.settling_band is None):
+        missing = given[0] if wanted.settling_time_max is None else given[1]
+        other = given[1] if missing == given[0] else given[0]
+        raise RigSheetError(f"{source}: [requirements] {missing} is missing; it goes with {other}: give both or none")
+    for name in ("gain", "natural_frequency", "damping_ratio"):
+        low, high = getattr(wanted, f"{name}_min"), getattr(wanted, f"{name}_max")
+        if low is not None and high is not None and low > high:
+            raise RigSheetError(
+                f"{source}: [requirements] {name}_min = {low:g} is above {name}_max = {high:g}: nothing can meet both; "
+                "exchange them"
+            )
 
 
 def _filled(rig: Rig) -> Simulated:

@@ -12,7 +12,18 @@ from __future__ import annotations
 from dataclasses import MISSING, dataclass, field
 from typing import Any, Literal
 
-__all__ = ["AngleSensor", "Identity", "KeyRule", "Limits", "Output", "Range", "Simulated", "StepTest", "Tolerance"]
+__all__ = [
+    "AngleSensor",
+    "Identity",
+    "KeyRule",
+    "Limits",
+    "Output",
+    "Range",
+    "Requirements",
+    "Simulated",
+    "StepTest",
+    "Tolerance",
+]
 
 
 @dataclass(frozen=True, slots=True)
@@ -135,6 +146,42 @@ class Tolerance:
     gain: float = _key("relative", "", _TOLERANCES, 0.05, default=0.05)
     natural_frequency: float = _key("relative", "", _TOLERANCES, 0.02, default=0.02)
     damping_ratio: float = _key("relative", "", _TOLERANCES, 0.10, default=0.10)
+
+
+def _wanted(explanation: str, unit: str, allowed: Range) -> Any:
+    """A key of [requirements]: none unless given."""
+    return _key(explanation, unit, allowed, None, default=None)
+
+
+_TIMES = Range(0, 1e5, low_open=True)
+_PERCENT = Range(0, 100)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Requirements:
+    """[requirements]: what the rig must do to be accepted, each None unless given.
+
+    A key ends in `_max` or `_min`; what stands before it is the quantity. `settling_time_max` goes with `settling_band`.
+    """
+
+    percent_overshoot_max: float | None = _wanted("overshoot of a step", "%", _PERCENT)
+    peak_time_max: float | None = _wanted("from the onset to the first peak", "s", _TIMES)
+    delay_time_50_max: float | None = _wanted("from the onset to 50 %", "s", _TIMES)
+    rise_time_0_90_max: float | None = _wanted("from the onset to 90 %", "s", _TIMES)
+    rise_time_10_90_max: float | None = _wanted("from 10 to 90 %", "s", _TIMES)
+    settling_time_5_max: float | None = _wanted("until it stays within 5 %", "s", _TIMES)
+    settling_time_2_max: float | None = _wanted("until it stays within 2 %", "s", _TIMES)
+    settling_time_max: float | None = _wanted("until it stays within settling_band", "s", _TIMES)
+    settling_band: float | None = _wanted("for settling_time_max, relative: 0.015 is 1.5 %", "", Range(1e-6, 0.5))
+    gain_min: float | None = _wanted("static gain, at least (its size)", "angle_unit/V", _GAINS)
+    gain_max: float | None = _wanted("static gain, at most (its size)", "angle_unit/V", _GAINS)
+    natural_frequency_min: float | None = _wanted("undamped, at least", "Hz", _FREQUENCIES)
+    natural_frequency_max: float | None = _wanted("undamped, at most", "Hz", _FREQUENCIES)
+    damping_ratio_min: float | None = _wanted("at least", "", _DAMPINGS)
+    damping_ratio_max: float | None = _wanted("at most", "", _DAMPINGS)
+    bandwidth_min: float | None = _wanted("where the power gain is half the static one", "Hz", _FREQUENCIES)
+    resonance_gain_max: float | None = _wanted("largest gain", "angle_unit/V", _GAINS)
+    delay_max: float | None = _wanted("from voltage to angle", "s", _DELAYS)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -26,6 +26,7 @@ _TABLE_COMMENTS = {
     "angle_sensor": "what watches the angle",
     "step_test": "what it already told; used to plan, never to estimate; leave out what is not known",
     "tolerance": "what counts as agreement of the two tests",
+    "requirements": "acceptance limits, judged with their uncertainty; every line is optional",
     "simulated": "the rig used by rehearse and by capture --simulate; every key may be left out",
 }
 
