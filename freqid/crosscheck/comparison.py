@@ -20,6 +20,7 @@ from numpy.typing import NDArray
 
 from freqid.crosscheck.causes import probable_causes
 from freqid.crosscheck.comparison_result import ComparedRow, CrossCheck, JointTest, RowVerdict, Verdict
+from freqid.crosscheck.evidence import Evidence, Recorded
 from freqid.crosscheck.next_test import propose_next_test
 from freqid.derived import derived_quantities
 from freqid.errors import CrossCheckError
@@ -60,12 +61,14 @@ def cross_check(
     tolerance: Mapping[str, float],
     resonance: ResonanceReading | str = "the measured curve was not given",
     folder: str = "FOLDER",
+    recorded: Recorded | None = None,
 ) -> CrossCheck:
     """Compare the frequency test with the step test.
 
     `tolerance` is relative, by parameter name; `resonance` is the peak read off the measured curve (or why there is
     none);
-    `folder` names the test folder in the proposed command. Raises CrossCheckError where the angle units differ.
+    `folder` names the test folder in the proposed command; `recorded` hands the raw runs to the causes.
+    Raises CrossCheckError where the angle units differ.
     """
     if model.angle_unit != step.angle_unit:
         raise CrossCheckError(
@@ -81,7 +84,8 @@ def cross_check(
     result = CrossCheck(
         verdict=verdict, sentence=_sentence(verdict, rows), compared=tuple(rows), joint=joint_test(model, step)
     )
-    result = replace(result, causes=probable_causes(result, model, step))
+    evidence = Evidence(check=result, model=model, step=step, recorded=recorded or Recorded())
+    result = replace(result, causes=probable_causes(evidence))
     return replace(result, next_test=propose_next_test(result, model, step, folder=folder))
 
 

@@ -6,10 +6,13 @@ from __future__ import annotations
 
 from freqid.crosscheck.comparison import cross_check
 from freqid.crosscheck.comparison_result import CrossCheck
+from freqid.crosscheck.evidence import Recorded
 from freqid.crosscheck.result_file import write_crosscheck
 from freqid.estimate.resonance import read_resonance
 from freqid.estimate.result_files import read_identification
+from freqid.records import Run
 from freqid.rig import read_rig
+from freqid.run_file import read_run
 from freqid.step_test.result_file import read_step_result
 from freqid.test_folder import TestFolder
 
@@ -22,8 +25,23 @@ def cross_check_folder(folder: TestFolder) -> CrossCheck:
     found, step = read_identification(folder), read_step_result(folder)
     tolerance = {name: getattr(rig.tolerance, name) for name in ("gain", "natural_frequency", "damping_ratio")}
     check = cross_check(
-        found.model, step, tolerance=tolerance, resonance=read_resonance(found.response), folder=folder.quoted
+        found.model,
+        step,
+        tolerance=tolerance,
+        resonance=read_resonance(found.response),
+        folder=folder.quoted,
+        recorded=Recorded(
+            response_runs=_runs(folder, found.model.runs),
+            step_runs=_runs(folder, step.runs),
+            response=found.response,
+            rig=rig,
+        ),
     )
     sources = [folder.rig, folder.model, folder.response_h5, folder.step]
     write_crosscheck(folder, check, computed_from=sources)
     return check
+
+
+def _runs(folder: TestFolder, names: tuple[str, ...]) -> tuple[Run, ...]:
+    """The raw runs behind a result, as far as they still lie in the folder."""
+    return tuple(read_run(folder.run(name)) for name in names if folder.run(name).exists())

@@ -1,34 +1,30 @@
-"""Why might the two tests differ? Mechanisms, each with the evidence at hand; nothing is guessed.
-
-A cause is listed only where a test of its own on these data speaks for it; its strength is that evidence between 0 and
-1.
-Without a disagreement there are no causes.
-"""
+"""Which causes do the results alone speak for, without the raw runs?"""
 
 from __future__ import annotations
 
 import numpy as np
 
 from freqid.crosscheck.comparison_result import Cause, ComparedRow, CrossCheck
+from freqid.crosscheck.evidence import Evidence
 from freqid.estimate.model import IdentifiedModel
 from freqid.step_test.step_result import StepResult
 
-__all__ = ["probable_causes"]
+__all__ = ["causes_from_results"]
 
 
-def probable_causes(check: CrossCheck, model: IdentifiedModel, step: StepResult) -> tuple[Cause, ...]:
-    """Causes for which the data speak, strongest first."""
-    if check.verdict == "agree":
+def causes_from_results(evidence: Evidence) -> tuple[Cause, ...]:
+    """Causes for which the compared rows and the two results speak."""
+    if evidence.check.verdict == "agree":
         return ()
-    rows = {row.quantity: row for row in check.compared}
+    rows, model, step = evidence.rows, evidence.model, evidence.step
     found = [
-        _too_little_data(check, rows),
+        _too_little_data(evidence.check, rows),
         _scale_error(rows),
         _time_scale(rows, model, step),
         _further_dynamics(model),
         _unequal_steps(step),
     ]
-    return tuple(sorted((c for c in found if c is not None), key=lambda c: -c.strength))
+    return tuple(c for c in found if c is not None)
 
 
 def _relative(row: ComparedRow) -> tuple[float, float] | None:
