@@ -1,0 +1,180 @@
+"""What stands behind the sound interface in these tests? A spring-centred vane in software, and a recorder beside it.
+
+    python plant_client.py vane --settings FILE       JACK client `vane`: ports drive, spare -> loopback, angle
+    python plant_client.py recorder --settings FILE   JACK client `recorder`: keeps every sample that reached the vane
+    python plant_client.py pipe --settings FILE       the vane between stdin and stdout, two channels of float32
+
+The vane obeys theta'' + 2 zeta wn theta' + wn^2 theta = K wn^2 u, solved exactly for straight lines between the
+samples (first-order hold). So its response at frequency f is that of the continuous model times sinc^2(f / rate),
+which differs from one by (pi f / rate)^2 / 3: 4e-6 at 8 Hz and 8 kHz. Delays are whole frames.
+
+The record is a file of blocks, each the frame time of the server and the samples of one period, written without
+buffering before the period ends: whoever is killed, what was sent is in it.
+"""
+
+from __future__ import annotations
+
+import argparse
+import json
+import os
+import signal
+import sys
+import threading
+from dataclasses import asdict, dataclass
+from pathlib import Path
+
+import numpy as np
+from numpy.typing import NDArray
+
+__all__ = ["PlantSettings", "Vane", "read_record"]
+
+Floats = NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class PlantSettings:
+    """The vane, the scales of its converters and where the client finds its server and files."""
+
+    sample_rate: int = 48000  # Hz
+    gain: float = 12.0  # deg/V
+    natural_frequency: float = 3.0  # Hz
+    damping_ratio: float = 0.12
+    delay_frames: int = 960
+    noise: float = 0.0  # deg rms, white
+    seed: int = 1
+    voltage_full_scale: float = 10.0  # V per digit
+    angle_full_scale: float = 45.0  # deg per digit
+    loopback_gain: float = 1.0
+    loopback_ends: float | None = None  # s of non-zero drive after which the loopback is dead
+    server: str = ""
+    record: str = ""  # file of the recorder
+    ready: str = ""  # file that appears when the client runs
+
+    @property
+    def delay(self) -> float:
+        """s."""
+        return self.delay_frames / self.sample_rate
+
+    def write(self, path: Path) -> None:
+        """As JSON, for the client process."""
+        path.write_text(json.dumps(asdict(self)), encoding="utf-8")
+
+    @classmethod
+    def read(cls, path: Path) -> PlantSettings:
+        """What `write` wrote."""
+        return cls(**json.loads(path.read_text(encoding="utf-8")))
+
+
+class Vane:
+    """Drive in digits to loopback and angle in digits, block after block of any length."""
+
+    def __init__(self, settings: PlantSettings) -> None:
+        from scipy.signal import cont2discrete, lfilter  # the recorder starts without it
+
+        wn = 2 * np.pi * settings.natural_frequency
+        gain = settings.gain * settings.voltage_full_scale / settings.angle_full_scale
+        numerator, denominator, _ = cont2discrete(
+            ([gain * wn**2], [1.0, 2 * settings.damping_ratio * wn, wn**2]), 1 / settings.sample_rate, method="foh"
+        )
+        self._numerator, self._denominator = numerator[0], denominator
+        self._state = np.zeros(2)
+        self._filter = lfilter
+        self._late = np.zeros(settings.delay_frames)
+        self._noise = settings.noise / settings.angle_full_scale
+        self._rng = np.random.default_rng(settings.seed)
+        self._driven = 0
+        self._settings = settings
+
+    def process(self, drive: Floats) -> tuple[Floats, Floats]:
+        """Loopback and angle (n,) for the drive (n,) of one block."""
+        waiting = np.concatenate((self._late, drive))
+        self._late = waiting[len(drive) :]
+        angle, self._state = self._filter(
+            self._numerator, self._denominator, waiting[: len(drive)], zi=self._state
+        )
+        if self._noise:
+            angle = angle + self._noise * self._rng.standard_normal(len(drive))
+        return self._loopback(drive), angle
+
+    def _loopback(self, drive: Floats) -> Floats:
+        self._driven += int(np.count_nonzero(drive))
+        ends = self._settings.loopback_ends
+        dead = ends is not None and self._driven > ends * self._settings.sample_rate
+        return np.zeros_like(drive) if dead else self._settings.loopback_gain * drive
+
+
+def read_record(path: Path, *, period: int) -> tuple[NDArray[np.uint32], NDArray[np.float32]]:
+    """Frame times (n,) of the blocks and their samples (n, period); a block cut short at the end is left out."""
+    block = np.dtype([("frame", "<u4"), ("samples", "<f4", (period,))])
+    raw = path.read_bytes()
+    blocks = np.frombuffer(raw[: len(raw) // block.itemsize * block.itemsize], dtype=block)
+    return blocks["frame"], blocks["samples"]
+
+
+def _run_vane(settings: PlantSettings) -> None:
+    import jack
+
+    client = jack.Client("vane", use_exact_name=True, servername=settings.server, no_start_server=True)
+    drive = client.inports.register("drive")
+    client.inports.register("spare")
+    loopback = client.outports.register("loopback")
+    angle = client.outports.register("angle")
+    vane = Vane(settings)
+
+    def process(frames: int) -> None:
+        sent_back, turned = vane.process(drive.get_array().astype(np.float64))
+        loopback.get_array()[:] = sent_back
+        angle.get_array()[:] = turned
+
+    client.set_process_callback(process)
+    _serve(client, settings)
+
+
+def _run_recorder(settings: PlantSettings) -> None:
+    import jack
+
+    client = jack.Client("recorder", use_exact_name=True, servername=settings.server, no_start_server=True)
+    heard = client.inports.register("heard")
+    record = os.open(settings.record, os.O_WRONLY | os.O_CREAT | os.O_TRUNC, 0o600)
+
+    def process(frames: int) -> None:
+        frame = np.array([client.last_frame_time], dtype="<u4").tobytes()
+        os.write(record, frame + bytes(heard.get_buffer()))
+
+    client.set_process_callback(process)
+    _serve(client, settings)
+
+
+def _serve(client: object, settings: PlantSettings) -> None:
+    """Run until the server goes away or the process is told to end."""
+    over = threading.Event()
+    client.set_shutdown_callback(lambda status, reason: over.set())  # type: ignore[attr-defined]
+    for number in (signal.SIGTERM, signal.SIGINT):
+        signal.signal(number, lambda *_: over.set())
+    client.activate()  # type: ignore[attr-defined]
+    Path(settings.ready).touch()
+    over.wait()
+    os._exit(0)  # closing a client of a dead server can hang
+
+
+def _run_pipe(settings: PlantSettings) -> None:
+    vane = Vane(settings)
+    frame = 2 * np.dtype("<f4").itemsize
+    while block := sys.stdin.buffer.read(256 * frame):
+        drive = np.frombuffer(block[: len(block) // frame * frame], dtype="<f4").reshape(-1, 2)[:, 0]
+        pair = np.stack(vane.process(drive.astype(np.float64)), axis=1).astype("<f4")
+        sys.stdout.buffer.write(pair.tobytes())
+        sys.stdout.buffer.flush()
+
+
+def _main() -> None:
+    roles = {"vane": _run_vane, "recorder": _run_recorder, "pipe": _run_pipe}
+    parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
+    parser.add_argument("role", choices=roles)
+    parser.add_argument("--settings", type=Path, required=True)
+    arguments = parser.parse_args()
+    roles[arguments.role](PlantSettings.read(arguments.settings))
+
+
+if __name__ == "__main__":
+    _main()
