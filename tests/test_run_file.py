@@ -129,7 +129,7 @@ def test_damaged_runs_are_told_in_one_line(folder: TestFolder) -> None:
     cases = {
         "not HDF5": None,
         "its format is 'freqid response'": (datasets, source.attributes | {"format": "freqid response"}),
-        "freqid run version 2": (datasets, source.attributes | {"format_version": 2}),
+        "freqid run version 3": (datasets, source.attributes | {"format_version": 3}),
         "damaged run": ({name: pair for name, pair in datasets.items() if name != "angle/angle"}, source.attributes),
         "angle/angle has 29": (datasets | {"angle/angle": (np.zeros(29), "rad")}, source.attributes),
         "damaged run (": (datasets, source.attributes | {"origins": "[{"}),
