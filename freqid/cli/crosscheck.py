@@ -39,7 +39,7 @@ def print_cross_check(check: CrossCheck) -> None:
     """Every row, the agreement strip, then the verdict, its causes and the next test."""
     print_table(
         [_cells(row) for row in check.compared],
-        columns=("quantity", "frequency test", "step test", "difference", "unit", "En", "verdict"),
+        columns=("quantity", *check.labels, "difference", "unit", "En", "verdict"),
     )
     for row in check.compared:
         if row.difference is None:

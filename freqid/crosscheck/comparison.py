@@ -1,13 +1,13 @@
-"""Do the two tests agree? Quantity by quantity, jointly, and in one verdict.
+"""Do two results agree? Quantity by quantity, jointly, and in one verdict.
 
 A row *agrees* where the 95 % interval of its difference lies within ± tolerance; it *disagrees* where that interval
-excludes
-zero and the difference exceeds the tolerance; otherwise it is *unresolved*. One disagreeing row makes the verdict
-*disagree*; all
-judged rows agreeing make it *agree*; anything else is *unresolved*.
+excludes zero and the difference exceeds the tolerance; otherwise it is *unresolved*. One disagreeing row makes the
+verdict *disagree*; all judged rows agreeing make it *agree*; anything else is *unresolved*.
 
 En = difference / sqrt(U1^2 + U2^2), U the expanded (95 %) uncertainties: ISO/IEC 17043:2010, B.3.1.3.
-Judged are the quantities with a tolerance in the rig sheet; the others are shown for the eye.
+Judged are the quantities with a tolerance in the rig sheet; the others are shown for the eye: what one test measured
+beside what the other implies (the resonance that the step test predicts, the overshoot that the frequency test
+predicts).
 """
 
 from __future__ import annotations
@@ -21,19 +21,33 @@ from numpy.typing import NDArray
 from freqid.crosscheck.causes import probable_causes
 from freqid.crosscheck.comparison_result import ComparedRow, CrossCheck, JointTest, RowVerdict, Verdict
 from freqid.crosscheck.evidence import Evidence, Recorded
+from freqid.crosscheck.findings import Findings, findings_of_model, findings_of_step
 from freqid.crosscheck.next_test import propose_next_test
-from freqid.derived import derived_quantities
 from freqid.errors import CrossCheckError
 from freqid.estimate.model import IdentifiedModel
 from freqid.estimate.resonance import ResonanceReading
 from freqid.quantity import Quantity
-from freqid.resonance_relations import half_power_width_ratio
 from freqid.second_order import PARAMETER_ORDER
 from freqid.step_test.step_result import StepResult
 
-__all__ = ["cross_check", "difference_of", "en_number", "half_power_width"]
+__all__ = ["JUDGED", "compare", "cross_check", "difference_of", "en_number"]
 
 JUDGED = ("gain", "natural_frequency", "damping_ratio")
+SHOWN = (
+    "resonance_frequency",
+    "resonance_gain",
+    "half_power_width",
+    "static_gain",
+    "percent_overshoot",
+    "peak_time",
+    "delay_time_50",
+    "rise_time_0_90",
+    "rise_time_10_90",
+    "settling_time_5",
+    "settling_time_2",
+    "time_constant",
+    "log_decrement",
+)
 
 
 def en_number(first: Quantity, second: Quantity) -> float | None:
@@ -63,79 +77,83 @@ def cross_check(
     folder: str = "FOLDER",
     recorded: Recorded | None = None,
 ) -> CrossCheck:
-    """Compare the frequency test with the step test.
+    """Compare the frequency test with the step test, with causes and the next test.
 
     `tolerance` is relative, by parameter name; `resonance` is the peak read off the measured curve (or why there is
-    none);
-    `folder` names the test folder in the proposed command; `recorded` hands the raw runs to the causes.
+    none); `folder` names the test folder in the proposed command; `recorded` hands the raw runs to the causes.
     Raises CrossCheckError where the angle units differ.
     """
-    if model.angle_unit != step.angle_unit:
-        raise CrossCheckError(
-            f"the frequency test is in {model.angle_unit}, the step test in {step.angle_unit}: repeat one with the "
-            f"same rig sheet"
-        )
-    rows = [_parameter_row(name, model, step, tolerance.get(name)) for name in JUDGED]
-    rows.append(_delay_row(model, step))
-    rows.extend(_resonance_rows(resonance, step))
-    rows.append(_row("static_gain", model.parameters["gain"], step.quantities["static_gain"], None, "gain is judged "
-                                                                                                    "above"))
-    verdict = _verdict(rows)
-    result = CrossCheck(
-        verdict=verdict, sentence=_sentence(verdict, rows), compared=tuple(rows), joint=joint_test(model, step)
-    )
+    result = compare(findings_of_model(model, resonance), findings_of_step(step), tolerance=tolerance)
     evidence = Evidence(check=result, model=model, step=step, recorded=recorded or Recorded())
     result = replace(result, causes=probable_causes(evidence))
     return replace(result, next_test=propose_next_test(result, model, step, folder=folder))
 
 
-def _parameter_row(name: str, model: IdentifiedModel, step: StepResult, relative: float | None) -> ComparedRow:
-    first, second = model.parameters[name], step.parameters[name]
-    if first is None or second is None or relative is None:
-        return _row(name, first, second, None, "no tolerance in the rig sheet" if relative is None else "undetermined")
-    return _row(name, first, second, relative * (abs(first.value) + abs(second.value)) / 2, "")
+def compare(first: Findings, second: Findings, *, tolerance: Mapping[str, float]) -> CrossCheck:
+    """Hold any two results against each other; causes and the next test are for the caller to add.
+
+    Rows hold `first` under `frequency_test` and `second` under `step_test`; `labels` says what they are. `tolerance` is
+    relative, by parameter name. A quantity that one of them does not speak of at all (typed values) has no row.
+    Raises CrossCheckError where the angle units differ.
+    """
+    if first.angle_unit != second.angle_unit:
+        raise CrossCheckError(
+            f"the {first.label} is in {first.angle_unit}, the {second.label} in {second.angle_unit}: repeat one with "
+            f"the same rig sheet"
+        )
+    names = [name for name in JUDGED if name in first.parameters and name in second.parameters]
+    rows = [_parameter_row(name, first, second, tolerance.get(name)) for name in names]
+    if "delay" in first.parameters and "delay" in second.parameters:
+        rows.append(_delay_row(first, second))
+    rows.extend(_shown_row(name, first, second) for name in SHOWN if _worth_a_row(name, first, second))
+    if not rows:
+        raise CrossCheckError(f"the {first.label} and the {second.label} have no quantity in common to compare")
+    verdict = _verdict(rows)
+    return CrossCheck(
+        verdict=verdict,
+        sentence=_sentence(verdict, rows),
+        compared=tuple(rows),
+        joint=joint_test(first, second, names),
+        labels=(first.label, second.label),
+    )
 
 
-def _delay_row(model: IdentifiedModel, step: StepResult) -> ComparedRow:
-    first, second = model.parameters["delay"], step.parameters["delay"]
-    reason = "no tolerance in the rig sheet" if first is not None and second is not None else "undetermined by one test"
-    if not (model.clock.offset_known and step.clock.offset_known):
+def _parameter_row(name: str, first: Findings, second: Findings, relative: float | None) -> ComparedRow:
+    one, other = first.parameters[name], second.parameters[name]
+    if one is None or other is None or relative is None:
+        return _row(name, one, other, None, "no tolerance in the rig sheet" if relative is None else "undetermined")
+    return _row(name, one, other, relative * (abs(one.value) + abs(other.value)) / 2, "")
+
+
+def _delay_row(first: Findings, second: Findings) -> ComparedRow:
+    one, other = first.parameters["delay"], second.parameters["delay"]
+    reason = "no tolerance in the rig sheet" if one is not None and other is not None else "undetermined by one test"
+    if not (first.offset_known and second.offset_known):
         reason = "contains the unknown offset between the clocks"
         return ComparedRow(
-            quantity="delay", frequency_test=first, step_test=second, difference=None, en=None, tolerance=None,
+            quantity="delay", frequency_test=one, step_test=other, difference=None, en=None, tolerance=None,
             verdict="not judged", reason=reason,
-        )
-    return _row("delay", first, second, None, reason)
+        )  # fmt: skip
+    return _row("delay", one, other, None, reason)
 
 
-def half_power_width(step: StepResult) -> Quantity | None:
-    """Half-power width that the step test's natural frequency and damping ratio predict, with uncertainty."""
-    fn, zeta = step.model.natural_frequency, step.model.damping_ratio
-    width = float(half_power_width_ratio(zeta)) * fn
-    if not np.isfinite(width):
-        return None
-    h = 1e-4 * zeta
-    by_zeta = (float(half_power_width_ratio(zeta + h)) - float(half_power_width_ratio(zeta - h))) / (2 * h) * fn
-    slope = np.array([width / fn, by_zeta])
-    u = float(np.sqrt(slope @ step.covariance[1:3, 1:3] @ slope))
-    return Quantity.finite_or_none(width, "Hz", u, step.degrees_of_freedom)
+def _worth_a_row(name: str, first: Findings, second: Findings) -> bool:
+    """What both speak of and at least one measured itself."""
+    return first.knows(name) and second.knows(name) and (name in first.measured or name in second.measured)
 
 
-def _resonance_rows(reading: ResonanceReading | str, step: StepResult) -> list[ComparedRow]:
-    predicted = derived_quantities(
-        step.model.vector, step.covariance, angle_unit=step.angle_unit, degrees_of_freedom=step.degrees_of_freedom
-    )
-    expected = {
-        "resonance_frequency": predicted["resonance_frequency"],
-        "resonance_gain": predicted["resonance_gain"],
-        "half_power_width": half_power_width(step),
-    }
-    rows = []
-    for name, second in expected.items():
-        first = None if isinstance(reading, str) else getattr(reading, name)
-        reason = reading if isinstance(reading, str) else "read off the measured curve"
-        rows.append(_row(name, first, second, None, reason))
-    return rows
+def _shown_row(name: str, first: Findings, second: Findings) -> ComparedRow:
+    one, other = first.shown(name), second.shown(name)
+    if one is None or other is None:
+        lacking = first if one is None else second
+        reason = lacking.silence.get(name, f"the {name.replace('_', ' ')} does not exist, or is undetermined")
+    elif name == "static_gain" and first.kind != second.kind:
+        reason = "gain is judged above"
+    else:
+        measured = [f.label for f in (first, second) if name in f.measured]
+        reason = f"measured by the {' and the '.join(measured)}"
+        reason += "" if len(measured) == 2 else ", implied by the model of the other"
+    return _row(name, one, other, None, reason)
 
 
 def _row(
@@ -145,12 +163,12 @@ def _row(
         return ComparedRow(
             quantity=name, frequency_test=first, step_test=second, difference=None, en=None, tolerance=tolerance,
             verdict="unresolved" if name in JUDGED else "not judged", reason=reason or "undetermined",
-        )
+        )  # fmt: skip
     difference = difference_of(first, second)
     return ComparedRow(
         quantity=name, frequency_test=first, step_test=second, difference=difference, en=en_number(first, second),
         tolerance=tolerance, verdict=_judge(difference, tolerance), reason=reason,
-    )
+    )  # fmt: skip
 
 
 def _judge(difference: Quantity, tolerance: float | None) -> RowVerdict:
@@ -171,13 +189,16 @@ def _verdict(rows: list[ComparedRow]) -> Verdict:
     return "agree" if judged and all(v == "agree" for v in judged) else "unresolved"
 
 
-def joint_test(model: IdentifiedModel, step: StepResult) -> JointTest | None:
-    """Chi-square of the differences of gain, natural frequency and damping ratio with both covariances."""
+def joint_test(first: Findings, second: Findings, names: list[str] | tuple[str, ...] = JUDGED) -> JointTest | None:
+    """Chi-square of the differences of the parameters `names` with both covariances; None where that is singular."""
     from scipy.stats import chi2
 
-    kept = [PARAMETER_ORDER.index(name) for name in JUDGED]
-    difference = (model.model.vector - step.model.vector)[kept]
-    covariance: NDArray[np.float64] = (model.covariance + step.covariance)[np.ix_(kept, kept)]
+    known = [name for name in names if first.parameters[name] is not None and second.parameters[name] is not None]
+    kept = [PARAMETER_ORDER.index(name) for name in known]
+    if not kept:
+        return None
+    difference = (first.vector - second.vector)[kept]
+    covariance: NDArray[np.float64] = (first.covariance + second.covariance)[np.ix_(kept, kept)]
     scale = np.sqrt(np.diag(covariance))
     if not (np.all(np.isfinite(covariance)) and np.all(scale > 0)):
         return None
@@ -190,8 +211,12 @@ def joint_test(model: IdentifiedModel, step: StepResult) -> JointTest | None:
 
 def _sentence(verdict: Verdict, rows: list[ComparedRow]) -> str:
     judged = [row for row in rows if row.verdict != "not judged"]
+    if not judged:
+        return "No quantity that both give has a tolerance: nothing is judged."
     if verdict == "agree":
-        return "Both tests give the same gain, natural frequency and damping ratio within the tolerances."
+        names = [row.quantity.replace("_", " ") for row in judged]
+        listed = names[0] if len(names) == 1 else f"{', '.join(names[:-1])} and {names[-1]}"
+        return f"Both tests give the same {listed} within the tolerance{'s' if len(names) > 1 else ''}."
     decisive = [row for row in judged if row.verdict == verdict]
     return "; ".join(_row_sentence(row) for row in decisive) + "."
 

@@ -13,18 +13,20 @@ from freqid.quantity import Caveat, Quantity
 if TYPE_CHECKING:
     from freqid.crosscheck.exhibit import Exhibit
 
-__all__ = ["Cause", "ComparedRow", "CrossCheck", "JointTest", "NextTest", "RowVerdict", "Verdict"]
+__all__ = ["USUAL_LABELS", "Cause", "ComparedRow", "CrossCheck", "JointTest", "NextTest", "RowVerdict", "Verdict"]
 
+USUAL_LABELS = ("frequency test", "step test")
 Verdict = Literal["agree", "disagree", "unresolved"]
 RowVerdict = Literal["agree", "disagree", "unresolved", "not judged"]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class ComparedRow:
-    """One quantity by both tests. `tolerance` is absolute, in the unit of the quantity; None where none was set (then
+    """One quantity by both results. `tolerance` is absolute, in the unit of the quantity; None where none was set (then
     not judged).
 
-    `difference` is frequency test minus step test; `en` its En number; `reason` says why a row is not judged.
+    `difference` is frequency test minus step test; `en` its En number; `reason` says why a row is not judged. In a
+    comparison of other results `frequency_test` is the first and `step_test` the second, see `CrossCheck.labels`.
     """
 
     quantity: str
@@ -117,7 +119,10 @@ class NextTest:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class CrossCheck:
-    """The verdict with everything it rests on. `sentence` is the reason in one sentence."""
+    """The verdict with everything it rests on.
+
+    `sentence` is the reason in one sentence, `labels` what the two columns of a row are.
+    """
 
     verdict: Verdict
     sentence: str
@@ -125,4 +130,5 @@ class CrossCheck:
     joint: JointTest | None
     causes: tuple[Cause, ...] = ()
     next_test: NextTest | None = None
+    labels: tuple[str, str] = USUAL_LABELS
     caveats: tuple[Caveat, ...] = ()

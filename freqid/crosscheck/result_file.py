@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import asdict
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from freqid.crosscheck.comparison_result import Cause, ComparedRow, CrossCheck, JointTest, NextTest
+from freqid.crosscheck.comparison_result import USUAL_LABELS, Cause, ComparedRow, CrossCheck, JointTest, NextTest
 from freqid.errors import TestFolderError
 from freqid.quantity import Caveat, Quantity
 
@@ -30,6 +30,7 @@ def crosscheck_as_json(check: CrossCheck) -> dict[str, Any]:
     return {
         "verdict": check.verdict,
         "sentence": check.sentence,
+        "labels": list(check.labels),
         "compared": [row.as_json() for row in check.compared],
         "joint": None if check.joint is None else asdict(check.joint),
         "causes": [cause.as_json() for cause in check.causes],
@@ -49,12 +50,18 @@ def read_crosscheck(folder: TestFolder) -> CrossCheck:
             joint=None if content["joint"] is None else JointTest(**content["joint"]),
             causes=tuple(Cause.from_json(cause) for cause in content["causes"]),
             next_test=None if content["next_test"] is None else NextTest(**content["next_test"]),
+            labels=_labels(content.get("labels", USUAL_LABELS)),
             caveats=Caveat.all_from_json(content["warnings"]),
         )
     except (KeyError, TypeError, ValueError) as error:
         raise TestFolderError(
             f"{folder.crosscheck}: damaged ({error!r}); run `freqid crosscheck {folder.quoted}` again"
         ) from None
+
+
+def _labels(labels: Sequence[str]) -> tuple[str, str]:
+    first, second = labels
+    return first, second
 
 
 def _row(row: dict[str, Any]) -> ComparedRow:

@@ -65,7 +65,7 @@ def agreement_text(crosscheck: CrossCheck, width: int = 80, *, ascii: bool = Fal
         for name, row in zip(names, rows, strict=True)
     ]
     margin = " " * (name_width + len(_GAP))
-    return "\n".join([*_key(letters), *lines, margin + _ticks(scale)])
+    return "\n".join([*_key(letters, crosscheck.labels), *lines, margin + _ticks(scale)])
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -128,10 +128,10 @@ def _ticks(axis: _Axis) -> str:
     return "".join(line).rstrip() + " tolerance"
 
 
-def _key(letters: _Characters) -> list[str]:
+def _key(letters: _Characters, labels: tuple[str, str]) -> list[str]:
     return [
-        f"{letters.frequency_bar}{letters.frequency_mark}{letters.frequency_bar} frequency test   "
-        f"{letters.step_bar}{letters.step_mark}{letters.step_bar} step test   {letters.both_bars} both"
+        f"{letters.frequency_bar}{letters.frequency_mark}{letters.frequency_bar} {labels[0]}   "
+        f"{letters.step_bar}{letters.step_mark}{letters.step_bar} {labels[1]}   {letters.both_bars} both"
     ]
 
 

@@ -11,10 +11,14 @@ import pytest
 from scipy.stats import binom, kstest
 from two_tests import NO_PEAK, TIGHT, TOLERANCE, VANE, K, checked, frequency_test, moved, row, step_test
 
-from freqid.crosscheck.comparison import cross_check, difference_of, en_number, half_power_width, joint_test
+from freqid.crosscheck.comparison import cross_check, difference_of, en_number, joint_test
+from freqid.crosscheck.comparison_result import JointTest
+from freqid.crosscheck.findings import findings_of_model, findings_of_step, half_power_width
 from freqid.errors import CrossCheckError
+from freqid.estimate.model import IdentifiedModel
 from freqid.estimate.resonance import ResonanceReading
 from freqid.quantity import Quantity
+from freqid.step_test.step_result import StepResult
 
 # ---- En ----
 
@@ -207,14 +211,16 @@ def test_half_power_width_follows_from_the_step_test() -> None:
         x, r = 1 - 2 * z**2, 2 * z * np.sqrt(1 - z**2)
         return float(fn * (np.sqrt(x + r) - np.sqrt(x - r)))
 
-    q = half_power_width(step_test(relative=(1e-4, 0.01, 0.05, 1e-4)))
+    step = step_test(relative=(1e-4, 0.01, 0.05, 1e-4))
+    q = half_power_width(step.model, step.covariance)
     assert q is not None
     assert q.value == pytest.approx(width(fn, z), rel=1e-9)
     h = 1e-6
     slope_fn = (width(fn + h, z) - width(fn - h, z)) / (2 * h)
     slope_z = (width(fn, z + h) - width(fn, z - h)) / (2 * h)
     assert q.standard_uncertainty == pytest.approx(np.hypot(slope_fn * 0.01 * fn, slope_z * 0.05 * z), rel=1e-5)
-    assert half_power_width(step_test(VANE * [1, 1, 5, 1])) is None  # zeta 0.6: no lower half-power frequency
+    wide = step_test(VANE * [1, 1, 5, 1])
+    assert half_power_width(wide.model, wide.covariance) is None  # zeta 0.6: no lower half-power frequency
 
 
 def test_the_measured_peak_stands_beside_the_step_tests_prediction() -> None:
@@ -241,11 +247,16 @@ def test_the_measured_peak_stands_beside_the_step_tests_prediction() -> None:
 # ---- joint test ----
 
 
+def joint(first: IdentifiedModel, second: StepResult) -> JointTest | None:
+    """The joint test of both, without a measured peak."""
+    return joint_test(findings_of_model(first, NO_PEAK), findings_of_step(second))
+
+
 def test_joint_statistic_by_hand() -> None:
     """Independent parameters: the sum of the squared differences in joint standard uncertainties."""
     relative = (0.01, 0.002, 0.03, 0.1)
     first = frequency_test(VANE * [1.02, 1.003, 0.95, 3.0], relative)
-    found = joint_test(first, step_test(VANE, relative))
+    found = joint(first, step_test(VANE, relative))
     assert found is not None
     assert found.degrees_of_freedom == 3
     variances = (np.array(relative[:3]) * VANE[:3] * [1.02, 1.003, 0.95]) ** 2 + (
@@ -265,7 +276,7 @@ def test_joint_test_has_the_false_alarms_it_claims() -> None:
         one, other = (rng.multivariate_normal(VANE, c) for c in covariances)
         first = replace(frequency_test(one), covariance=covariances[0])
         second = replace(step_test(other), covariance=covariances[1])
-        found = joint_test(first, second)
+        found = joint(first, second)
         assert found is not None
         p_values.append(found.p_value)
     low, high = binom.ppf([1e-4, 1 - 1e-4], 500, 0.05)
@@ -276,4 +287,4 @@ def test_joint_test_has_the_false_alarms_it_claims() -> None:
 def test_without_uncertainty_there_is_no_joint_test() -> None:
     """A covariance of zero whitens nothing."""
     nothing = (0.0, 0.0, 0.0, 0.0)
-    assert joint_test(frequency_test(relative=nothing), step_test(relative=nothing)) is None
+    assert joint(frequency_test(relative=nothing), step_test(relative=nothing)) is None
