@@ -22,7 +22,8 @@ from numpy.typing import NDArray
 from freqid.errors import EstimationError
 from freqid.estimate.frame_grid import FrameGrid
 from freqid.estimate.frequency_response import FrequencyResponse
-from freqid.estimate.noise_spectrum import NoiseSpectrum, noise_spectrum
+from freqid.estimate.harmonic_basis import HarmonicBasis
+from freqid.estimate.noise_spectrum import MOST_ELEMENTS, NoiseSpectrum, noise_spectrum
 from freqid.estimate.record import Record
 from freqid.estimate.record_fit import RecordFit
 from freqid.held_response import Drive, free_decay
@@ -67,15 +68,14 @@ def line_amplitudes(drive: Drive, periodicity: Periodicity) -> Complexes:
 class LineRegression:
     """The steady frames and the basis they are regressed on, ready for any residual of the same record.
 
-    `inside` (N,) marks the steady frames, `basis` (S, P) has a cosine and a minus sine column for each of the F lines,
-    then the
-    nuisances; `inverse` (P, P) is the inverse of basis' basis; `lag` the lag (s) that the basis' time was shifted by;
-    `periods` whole periods are covered.
+    `inside` (N,) marks the steady frames, `basis` has a cosine and a minus sine column for each of the F lines, then
+    the nuisances: (S, P); `inverse` (P, P) is the inverse of basis' basis; `lag` the lag (s) that the basis' time was
+    shifted by; `periods` whole periods are covered.
     """
 
     periodicity: Periodicity
     inside: NDArray[np.bool_]
-    basis: Floats
+    basis: HarmonicBasis
     inverse: Floats
     lag: float
     clock_ratio: float
@@ -96,14 +96,11 @@ class LineRegression:
                 f"or a "
                 "longer record"
             )
-        scale = np.sqrt(np.sum(basis**2, axis=0))
-        gram = basis.T @ basis / np.outer(scale, scale)
-        inverse = np.linalg.inv(gram + 1e-12 * np.eye(width)) / np.outer(scale, scale)
         return cls(
             periodicity=periodicity,
             inside=inside,
             basis=basis,
-            inverse=inverse,
+            inverse=basis.inverse_gram(),
             lag=fit.parameters.model.delay,
             clock_ratio=fit.parameters.clock_ratio,
             periods=periods,
@@ -111,11 +108,11 @@ class LineRegression:
 
     def coefficients(self, residual: Floats) -> Floats:
         """Least-squares coefficients (P,) of a residual (N,) of the whole record."""
-        return np.asarray(self.inverse @ (self.basis.T @ residual[self.inside]))
+        return np.asarray(self.inverse @ self.basis.project(residual[self.inside]))
 
     def rest(self, residual: Floats) -> Floats:
         """What the basis leaves of a residual, at the steady frames (S,)."""
-        return np.asarray(residual[self.inside] - self.basis @ self.coefficients(residual))
+        return np.asarray(residual[self.inside] - self.basis.combined(self.coefficients(residual)))
 
     @property
     def spread(self) -> Floats:
@@ -153,7 +150,7 @@ def steady_noise(record: Record, fit: RecordFit, lines: LineRegression) -> Noise
         return noise_spectrum(
             lines.rest(fit.residual),
             grid,
-            fitted=lines.basis,
+            fitted=_fitted(lines.basis),
             harmonic=(lines.clock_ratio / (periods * period), folded),
         )
     except ValueError:
@@ -209,15 +206,23 @@ def periodic_response(
     return measured, in_all
 
 
-def _basis(fit: RecordFit, periodicity: Periodicity, inside: NDArray[np.bool_], time: Floats) -> Floats:
+def _fitted(basis: HarmonicBasis) -> Floats:
+    """The columns where their share of each bin is worked out; of more only the shape is looked at."""
+    small = basis.shape[0] * basis.shape[1] <= MOST_ELEMENTS
+    return basis.columns if small else np.broadcast_to(0.0, basis.shape)
+
+
+def _basis(fit: RecordFit, periodicity: Periodicity, inside: NDArray[np.bool_], time: Floats) -> HarmonicBasis:
     """Columns: cosine and minus sine of every line, rest, drift, two free decays, clock ratio."""
     t = time[inside]
     m = fit.parameters.model
-    turning = np.exp(2j * np.pi * np.outer(t, periodicity.lines))
-    span = t[-1] - t[0]
     decay = free_decay(2 * np.pi * m.natural_frequency, m.damping_ratio, t - t[0])
-    columns = [turning.real, -turning.imag, np.ones((len(t), 1)), ((t - t.mean()) / span)[:, None], decay]
+    columns = [np.ones((len(t), 1)), ((t - t.mean()) / (t[-1] - t[0]))[:, None], decay]
     if 4 in fit.prediction.free:
         ratio = fit.prediction.jacobian[inside][:, fit.prediction.free.index(4)]
         columns.append(ratio[:, None])
-    return np.concatenate(columns, axis=1)
+    return HarmonicBasis(
+        turn=np.exp(2j * np.pi * (t / periodicity.period % 1.0)),
+        orders=np.round(periodicity.lines * periodicity.period).astype(np.intp),
+        further=np.concatenate(columns, axis=1),
+    )
