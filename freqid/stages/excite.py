@@ -36,7 +36,7 @@ from freqid.stages.planned_rig import (
 from freqid.stages.prediction import Prediction, predict, relative_damping_uncertainty, rig_to_plan_with
 from freqid.test_folder import TestFolder
 
-__all__ = ["Design", "ExciteSettings", "design_excitation", "draw_profile_card"]
+__all__ = ["Design", "ExciteSettings", "design_excitation", "designed_profile", "draw_profile_card"]
 
 _USUAL_DURATION, _LONGEST_USUAL, _LONGEST = 60.0, 600.0, 3600.0  # s
 _TIME_CONSTANTS = 150  # of the ring-down in a usual test: enough for periods that resolve the resonance
@@ -106,6 +106,14 @@ def design_excitation(folder: TestFolder, settings: ExciteSettings, *, progress:
     progress("predicting what it will do")
     prediction = predict(profile, rig)
     return _written(folder, profile, prediction, settings, rig)
+
+
+def designed_profile(settings: ExciteSettings, rig: Rig) -> Profile:
+    """The profile that `design_excitation` would write for the rig of the sheet, written nowhere.
+
+    Raises ExcitationError as `design_excitation` does.
+    """
+    return _long_enough(settings, rig)
 
 
 def draw_profile_card(folder: TestFolder, design: Design, *, progress: Progress = silent) -> Path:
