@@ -206,3 +206,33 @@ class Simulated:
     lost_frames: float = _key("fraction of the frames", "", Range(0, 0.9), 0.02, default=0.01)
     noise: float | None = _key("rms; the sensor's unless given", "angle_unit", Range(0, 3600), None, default=None)
     quantisation: float = _key("smallest step of the angle; 0: none", "angle_unit", Range(0, 3600), 0.0, default=0.0)
+    # planted faults, all off by default
+    faults_in: Literal["both", "response", "step"] = _key(
+        "which test the faults below are planted in", "", ("both", "response", "step"), "both", default="both"
+    )
+    dry_friction: float = _key("Coulomb friction as an angle", "angle_unit", Range(0, 3600), None, default=0.0)
+    static_friction: float = _key("to set off; dry_friction if below", "angle_unit", Range(0, 3600), None, default=0.0)
+    backlash: float = _key("play between shaft and sensor, whole gap", "angle_unit", Range(0, 3600), None, default=0.0)
+    spring_hardening: float = _key(
+        "relative change of stiffness at the end stops; negative softens", "", Range(-0.9, 100), None, default=0.0
+    )
+    spring_asymmetry: float = _key(
+        "relative change of stiffness at the upper stop, opposite at the lower", "", Range(-0.9, 0.9), None, default=0.0
+    )
+    end_stop: float | None = _key("angle at which the rig hits a stop", "angle_unit", _ANGLES, None, default=None)
+    restitution: float = _key("rate after over rate before hitting a stop", "", Range(0, 0.99), None, default=0.5)
+    saturation: float | None = _key("the output clips here, from rest", "V", _VOLTS, None, default=None)
+    gain_asymmetry: float = _key("gain up minus down, relative", "", Range(-1.9, 1.9), None, default=0.0)
+    slew_limit: float | None = _key("the driver changes no faster", "V/s", Range(0, 1e9, low_open=True), None,
+                                    default=None)  # fmt: skip
+    driver_pole: float | None = _key("corner of the driver's lag", "Hz", _FREQUENCIES, None, default=None)
+    second_mode_frequency: float | None = _key("of a second mode", "Hz", _FREQUENCIES, None, default=None)
+    second_mode_gain: float = _key("static gain of that mode, relative", "", Range(-10, 10), None, default=0.0)
+    second_mode_damping: float = _key("damping ratio of that mode", "", _DAMPINGS, None, default=0.02)
+    sensor_pole: float | None = _key("corner of a filter in the sensor", "Hz", _FREQUENCIES, None, default=None)
+    hidden_exposure: float = _key("exposure beyond [angle_sensor] exposure", "s", Range(0, 10), None, default=0.0)
+    drift: float = _key("of the rest angle over a run", "angle_unit", Range(-3600, 3600), None, default=0.0)
+    voltage_scale: float = _key("voltage at the rig over voltage as told", "", Range(0.01, 100), None, default=1.0)
+    angle_scale: float = _key("angle as read over angle", "", Range(0.01, 100), None, default=1.0)
+    time_base_ppm: float = _key("by how much the played second is too long", "ppm", Range(-5e5, 1e6), None, default=0.0)
+    silent_losses: float = _key("frames lost without a gap in the stamps", "", Range(0, 1000), None, default=0.0)
