@@ -2,8 +2,9 @@
 
 All count from rest (the drive's first value): unequal gain up and down, clipping, limited slew rate, a
 first-order lag. The last two turn a staircase into straight lines between points. A limited slew is exact where it
-limits for whole steps of the drive, else late by an eighth of a step at most; the lag is sampled so finely (20 points a time
-constant, at most 100 a step of the drive) that its straight lines miss it by (1/20)^2 / 8 = 3e-4 of a voltage jump.
+limits for whole steps of the drive, else late by an eighth of a step at most; the lag is sampled so finely (20 points
+a time constant, at most 100 a step of the drive) that its straight lines miss it by (1/20)^2 / 8 = 3e-4 of a voltage
+jump.
 """
 
 from __future__ import annotations
@@ -41,8 +42,14 @@ def slew_limited(drive: Drive, limit: float) -> Drive:
     most = limit * h
     reached = [0.0]
     now = 0.0
-    for target in _refined(drive, h * np.arange(1, SLEW_STEPS + 1)).tolist():
-        now += min(max(target - now, -most), most)
+    for target in _refined(drive, h, 1, SLEW_STEPS).tolist():
+        change = target - now
+        if change > most:
+            now += most
+        elif change < -most:
+            now -= most
+        else:
+            now = target
         reached.append(now)
     return _joined(np.array(reached), start=drive.start, interval=h, rest=drive.rest)
 
@@ -53,7 +60,7 @@ def lagging(drive: Drive, time_constant: float) -> Drive:
 
     refine = min(max(1, math.ceil(STEPS_PER_TIME_CONSTANT * drive.interval / time_constant)), MOST_PER_INTERVAL)
     h = drive.interval / refine
-    value = _refined(drive, h * np.arange(refine))
+    value = _refined(drive, h, 0, refine)
     slope = np.repeat(drive.slope, refine)
     decay = math.exp(-h / time_constant)
     # straight input v + s t over a step: w(h) = decay w(0) + (1 - decay) (v - s T) + s h
@@ -62,8 +69,9 @@ def lagging(drive: Drive, time_constant: float) -> Drive:
     return _joined(np.concatenate([[0.0], after]), start=drive.start, interval=h, rest=drive.rest)
 
 
-def _refined(drive: Drive, inside: Floats) -> Floats:
-    """Voltage at the instants `inside` (R,) of every interval, in one row."""
+def _refined(drive: Drive, h: float, first: int, n: int) -> Floats:
+    """Voltage at `n` instants of every interval, `h` s apart from number `first` on, in one row."""
+    inside = h * np.arange(first, first + n)
     return np.asarray((drive.value[:, None] + drive.slope[:, None] * inside).ravel())
 
 
