@@ -34,7 +34,7 @@ import numpy as np
 from numpy.typing import NDArray
 from plant_client import PlantSettings, read_record
 
-__all__ = ["JackRig", "jack_rig", "what_is_missing"]
+__all__ = ["JackRig", "child", "jack_rig", "server_environment", "what_is_missing"]
 
 PATIENCE = 20.0  # s until a server or client must run; they take less than one
 PROGRAMS = {"jackd": "jackd2", "jack_lsp": "jackd2", "setpriv": "util-linux"}
@@ -126,8 +126,9 @@ def jack_rig(plant: PlantSettings | None = None, *, period: int = 1024, recorder
     plant = plant or PlantSettings()
     with contextlib.ExitStack() as stack:
         name = stack.enter_context(_server_name())
+        environment = {**os.environ, **server_environment(name), "OMP_NUM_THREADS": "1"}
         folder = Path(stack.enter_context(tempfile.TemporaryDirectory(prefix="jack-rig-")))
-        server = stack.enter_context(_child(_server_command(name, plant.sample_rate, period), name, folder / "server"))
+        server = stack.enter_context(child(_server_command(name, plant.sample_rate, period), environment, folder / "server"))
         _wait(lambda: _serves(name), server, folder / "server")
         clients = []
         for role in ("vane", "recorder") if recorder else ("vane",):
@@ -136,7 +137,7 @@ def jack_rig(plant: PlantSettings | None = None, *, period: int = 1024, recorder
             )
             settings.write(folder / f"{role}.json")
             command = [sys.executable, str(CLIENT), role, "--settings", str(folder / f"{role}.json")]
-            clients.append(stack.enter_context(_child(command, name, folder / role)))
+            clients.append(stack.enter_context(child(command, environment, folder / role)))
         for role, client in zip(("vane", "recorder"), clients, strict=False):
             _wait((folder / f"{role}.ready").exists, client, folder / role)
         if recorder:
@@ -174,9 +175,8 @@ def _server_command(name: str, sample_rate: int, period: int) -> list[str]:
 
 
 @contextmanager
-def _child(command: Sequence[str], server: str, log: Path) -> Iterator[subprocess.Popen[bytes]]:
-    """A process in its own group, killed with this one or at the end of the block."""
-    environment = {**os.environ, **server_environment(server), "OMP_NUM_THREADS": "1"}
+def child(command: Sequence[str], environment: Mapping[str, str], log: Path) -> Iterator[subprocess.Popen[bytes]]:
+    """A process in its own group, killed with this one or at the end of the block; what it prints goes to `log`."""
     with open(log, "wb") as output:
         process = subprocess.Popen(
             ["setpriv", "--pdeathsig", "KILL", "--", *command],

@@ -2,7 +2,7 @@
 
     python plant_client.py vane --settings FILE       JACK client `vane`: ports drive, spare -> loopback, angle
     python plant_client.py recorder --settings FILE   JACK client `recorder`: keeps every sample that reached the vane
-    python plant_client.py pipe --settings FILE       the vane between stdin and stdout, two channels of float32
+    python plant_client.py pulse --settings FILE      the vane from the monitor of the sink `drive` to the sink `angle`
 
 The vane obeys theta'' + 2 zeta wn theta' + wn^2 theta = K wn^2 u, solved exactly for straight lines between the
 samples (first-order hold). So its response at frequency f is that of the continuous model times sinc^2(f / rate),
@@ -18,7 +18,7 @@ import argparse
 import json
 import os
 import signal
-import sys
+import subprocess
 import threading
 from dataclasses import asdict, dataclass
 from pathlib import Path
@@ -40,7 +40,7 @@ class PlantSettings:
     natural_frequency: float = 3.0  # Hz
     damping_ratio: float = 0.12
     delay_frames: int = 960
-    noise: float = 0.0  # deg rms, white
+    noise: float = 0.0  # deg rms, white; drawn anew, and the same every time, at each onset of the drive
     seed: int = 1
     voltage_full_scale: float = 10.0  # V per digit
     angle_full_scale: float = 45.0  # deg per digit
@@ -81,7 +81,8 @@ class Vane:
         self._filter = lfilter
         self._late = np.zeros(settings.delay_frames)
         self._noise = settings.noise / settings.angle_full_scale
-        self._rng = np.random.default_rng(settings.seed)
+        self._onsets, self._silent = 0, 0
+        self._rng = np.random.default_rng((settings.seed, 0))
         self._driven = 0
         self._settings = settings
 
@@ -92,9 +93,18 @@ class Vane:
         angle, self._state = self._filter(
             self._numerator, self._denominator, waiting[: len(drive)], zi=self._state
         )
-        if self._noise:
-            angle = angle + self._noise * self._rng.standard_normal(len(drive))
-        return self._loopback(drive), angle
+        return self._loopback(drive), angle + self._noise_of(drive) if self._noise else angle
+
+    def _noise_of(self, drive: Floats) -> Floats:
+        """White noise (n,) that begins its sequence anew with the first drive after half a second of silence."""
+        driven = np.flatnonzero(drive)
+        before = int(driven[0]) if len(driven) else len(drive)
+        noise = self._noise * self._rng.standard_normal(before)
+        if len(driven) and self._silent + before > 0.5 * self._settings.sample_rate:
+            self._onsets += 1
+            self._rng = np.random.default_rng((self._settings.seed, self._onsets))
+        self._silent = len(drive) - 1 - int(driven[-1]) if len(driven) else self._silent + len(drive)
+        return np.concatenate((noise, self._noise * self._rng.standard_normal(len(drive) - before)))
 
     def _loopback(self, drive: Floats) -> Floats:
         self._driven += int(np.count_nonzero(drive))
@@ -157,18 +167,24 @@ def _serve(client: object, settings: PlantSettings) -> None:
     os._exit(0)  # closing a client of a dead server can hang
 
 
-def _run_pipe(settings: PlantSettings) -> None:
-    vane = Vane(settings)
-    frame = 2 * np.dtype("<f4").itemsize
-    while block := sys.stdin.buffer.read(256 * frame):
+def _run_pulse(settings: PlantSettings) -> None:
+    form = ["--raw", "--format=float32le", "--channels=2", f"--rate={settings.sample_rate}", "--latency-msec=40"]
+    vane, frame = Vane(settings), 2 * np.dtype("<f4").itemsize
+    vane.process(np.zeros(256))  # everything is loaded before sound flows: what waits in pipes is delay for good
+    say = subprocess.Popen(["pacat", *form, "-d", "angle"], stdin=subprocess.PIPE)
+    hear = subprocess.Popen(["parec", *form, "-d", "drive.monitor"], stdout=subprocess.PIPE)
+    assert hear.stdout is not None
+    assert say.stdin is not None
+    while block := hear.stdout.read(256 * frame):
         drive = np.frombuffer(block[: len(block) // frame * frame], dtype="<f4").reshape(-1, 2)[:, 0]
         pair = np.stack(vane.process(drive.astype(np.float64)), axis=1).astype("<f4")
-        sys.stdout.buffer.write(pair.tobytes())
-        sys.stdout.buffer.flush()
+        say.stdin.write(pair.tobytes())
+        say.stdin.flush()
+        Path(settings.ready).touch()
 
 
 def _main() -> None:
-    roles = {"vane": _run_vane, "recorder": _run_recorder, "pipe": _run_pipe}
+    roles = {"vane": _run_vane, "recorder": _run_recorder, "pulse": _run_pulse}
     parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
     parser.add_argument("role", choices=roles)
     parser.add_argument("--settings", type=Path, required=True)

@@ -43,6 +43,23 @@ def test_vane_equals_theory_however_the_blocks_are_cut() -> None:
     np.testing.assert_allclose(angle, expected, atol=1e-8 * np.abs(expected).max())
 
 
+def test_noise_begins_anew_with_the_drive_however_the_blocks_are_cut() -> None:
+    """Two runs after rests of different lengths: the same noise from the onset on, other noise in the second onset."""
+    settings = PlantSettings(sample_rate=100, delay_frames=2, noise=0.3)
+    still = PlantSettings(sample_rate=100, delay_frames=2)
+    drive = np.sin(np.arange(1.0, 201.0))
+
+    def noise(rest: int, block: int) -> NDArray[np.float64]:
+        whole = np.concatenate((np.zeros(rest), drive, np.zeros(70), drive))
+        noisy, quiet = Vane(settings), Vane(still)
+        cuts = range(block, len(whole), block)
+        return np.concatenate([noisy.process(part)[1] - quiet.process(part)[1] for part in np.split(whole, cuts)])
+
+    short, long = noise(60, 7)[60:], noise(111, 16)[111:]
+    np.testing.assert_array_equal(short, long)
+    assert not np.any(short[:200] == short[270:])
+
+
 def test_loopback_may_die_after_a_while() -> None:
     """Silent from the sample on at which the drive has been non-zero for the set time."""
     vane = Vane(PlantSettings(sample_rate=100, loopback_ends=0.5, delay_frames=2))
