@@ -55,6 +55,7 @@ def short_multisine(vane_model: SecondOrder) -> InputStream:
         rigs=(vane_model,),
         phases="schroeder",
         period=4.0,
+        grid="odd",
     )
     return input_from_profile(design_multisine(settings))
 

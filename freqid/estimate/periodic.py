@@ -35,6 +35,7 @@ __all__ = ["LineRegression", "line_amplitudes", "periodic_response", "steady_noi
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
 FULLEST = 0.8  # of the frames: more columns than this leave no noise to judge by
+MOST_COLUMNS = 3000  # with more, the detection lines are left out
 
 
 def line_amplitudes(drive: Drive, periodicity: Periodicity) -> Complexes:
@@ -68,13 +69,15 @@ def line_amplitudes(drive: Drive, periodicity: Periodicity) -> Complexes:
 class LineRegression:
     """The steady frames and the basis they are regressed on, ready for any residual of the same record.
 
-    `inside` (N,) marks the steady frames, `basis` has a cosine and a minus sine column for each of the F lines, then
-    the nuisances: (S, P); `inverse` (P, P) is the inverse of basis' basis; `lag` the lag (s) that the basis' time was
+    `inside` (N,) marks the steady frames. `basis` has a cosine and a minus sine column for each of the F lines and of
+    the detection lines `free` (L,) (harmonics without voltage between the lines, where distortion sits), then the
+    nuisances: (S, P); `inverse` (P, P) is the inverse of basis' basis; `lag` the lag (s) that the basis' time was
     shifted by; `periods` whole periods are covered.
     """
 
     periodicity: Periodicity
     inside: NDArray[np.bool_]
+    free: NDArray[np.intp]
     basis: HarmonicBasis
     inverse: Floats
     lag: float
@@ -96,9 +99,14 @@ class LineRegression:
                 f"or a "
                 "longer record"
             )
+        free = _detection_orders(record, fit, periodicity, periods)
+        if periods < 2 or width + 2 * len(free) > min(FULLEST * count, MOST_COLUMNS):
+            free = free[:0]
+        basis = basis.with_orders(np.concatenate([basis.orders, free]))
         return cls(
             periodicity=periodicity,
             inside=inside,
+            free=free,
             basis=basis,
             inverse=basis.inverse_gram(),
             lag=fit.parameters.model.delay,
@@ -116,9 +124,16 @@ class LineRegression:
 
     @property
     def spread(self) -> Floats:
-        """Variance of each complex line amplitude (F,) for noise of variance one."""
-        n, diagonal = len(self.periodicity.lines), np.diag(self.inverse)
+        """Variance of each complex amplitude, of the lines and then of the detection lines (F + L,), for noise of
+        variance one.
+        """
+        n, diagonal = len(self.basis.orders), np.diag(self.inverse)
         return np.asarray(diagonal[:n] + diagonal[n : 2 * n])
+
+    def amplitudes(self, residual: Floats) -> Complexes:
+        """Complex amplitudes, of the lines and then of the detection lines (F + L,), in a residual (N,)."""
+        n, coefficient = len(self.basis.orders), self.coefficients(residual)
+        return np.asarray(coefficient[:n] + 1j * coefficient[n : 2 * n])
 
 
 def _steady(record: Record, fit: RecordFit, periodicity: Periodicity) -> tuple[NDArray[np.bool_], Floats, int]:
@@ -166,8 +181,7 @@ def periodic_response(
     """
     f = lines.periodicity.lines
     n = len(f)
-    coefficient = lines.coefficients(fit.residual)
-    amplitude = coefficient[:n] + 1j * coefficient[n : 2 * n]
+    amplitude = lines.amplitudes(fit.residual)[:n]
     noise = steady_noise(record, fit, lines)
     caveats: tuple[Caveat, ...] = ()
     if noise is None:
@@ -188,7 +202,7 @@ def periodic_response(
     exposure = np.sinc(f * record.exposure) * np.exp(-1j * np.pi * f * record.exposure)
     drive = line_amplitudes(record.drive, lines.periodicity)
     transfer = drive * exposure
-    variance_of_line = level * lines.spread
+    variance_of_line = level * lines.spread[:n]
     response = fit.parameters.model.response(f) + amplitude / transfer * np.exp(-2j * np.pi * f * lines.lag)
     signal = np.abs(response * transfer)
     measured = FrequencyResponse(
@@ -204,6 +218,19 @@ def periodic_response(
         caveats=caveats,
     )
     return measured, in_all
+
+
+def _detection_orders(
+    record: Record, fit: RecordFit, periodicity: Periodicity, periods: int
+) -> NDArray[np.intp]:
+    """Harmonics without voltage between the lines, below half the frame rate, on which no line folds."""
+    orders = np.round(periodicity.lines * periodicity.period).astype(np.intp)
+    free = np.setdiff1d(np.arange(orders.min() + 1, orders.max()), orders)
+    top = 0.5 / record.frame_interval / fit.parameters.clock_ratio * periodicity.period  # in orders
+    free = free[free < top - 0.5]
+    folded = np.abs((orders + top) % (2 * top) - top)[orders > top]
+    apart = np.abs(free[:, None] - folded).min(axis=1, initial=np.inf)
+    return np.asarray(free[apart > 0.55 / periods])
 
 
 def _fitted(basis: HarmonicBasis) -> Floats:

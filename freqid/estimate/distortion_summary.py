@@ -1,0 +1,142 @@
+"""How loud is the distortion around the resonance, against the noise and against the swing itself?
+
+Powers are averaged over the detection lines within half an octave of the natural frequency (at least the three
+nearest). `excess` is the rms distortion of a line over its rms noise, `relative` the same over the linear answer there.
+The distortion is called significant where noise alone would give as much power in less than 1 of 200 records: the
+mean of |A|^2 / s^2 over n lines is Fisher's F with 2 n and v degrees of freedom.
+
+Source: Pintelon & Schoukens, *System Identification*, 2nd ed. 2012, ch. 4.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from freqid.estimate.distortion import EVEN, ODD, UNDIVIDED, DistortionLevels
+from freqid.quantity import Caveat, Quantity
+
+__all__ = ["DistortionSummary", "distortion_caveats", "summarize_distortion"]
+
+REACH = 0.5  # octaves either side of the natural frequency
+FEWEST = 3
+SIGNIFICANT = 0.005
+NAMES = {ODD: "odd", EVEN: "even", UNDIVIDED: "all"}
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class DistortionSummary:
+    """Distortion of one kind ("odd", "even", or "all" where they cannot be told apart) around the resonance.
+
+    `amplitude` is that of one line (rms times sqrt 2, angle unit), `band` the lowest and the highest of the `lines`
+    detection lines looked at, Hz.
+    """
+
+    kind: str
+    amplitude: Quantity
+    excess: Quantity
+    relative: Quantity
+    p_value: float
+    lines: int
+    band: tuple[float, float]
+
+    @property
+    def significant(self) -> bool:
+        """Whether noise alone would hardly give as much."""
+        return self.p_value < SIGNIFICANT
+
+    def as_json(self) -> dict[str, Any]:
+        """The form of "distortion" in results/model.json."""
+        return {
+            "kind": self.kind,
+            "amplitude": self.amplitude.as_json(),
+            "excess": self.excess.as_json(),
+            "relative": self.relative.as_json(),
+            "p_value": self.p_value,
+            "significant": self.significant,
+            "lines": self.lines,
+            "band": list(self.band),
+        }
+
+    @classmethod
+    def from_json(cls, data: dict[str, Any]) -> DistortionSummary:
+        """Back from `as_json`."""
+        amplitude, excess, relative = (Quantity.from_json(data[name]) for name in ("amplitude", "excess", "relative"))
+        if amplitude is None or excess is None or relative is None:
+            raise ValueError("a distortion without its figures")
+        return cls(
+            kind=data["kind"],
+            amplitude=amplitude,
+            excess=excess,
+            relative=relative,
+            p_value=data["p_value"],
+            lines=data["lines"],
+            band=(data["band"][0], data["band"][1]),
+        )
+
+
+def summarize_distortion(
+    levels: DistortionLevels | None, natural_frequency: float, *, angle_unit: str
+) -> tuple[DistortionSummary, ...]:
+    """One summary for each kind of distortion that has detection lines; none without levels."""
+    if levels is None:
+        return ()
+    present = [parity for parity in NAMES if np.any(levels.parity == parity)]
+    return tuple(_summary(levels.of(parity), NAMES[parity], natural_frequency, angle_unit) for parity in present)
+
+
+def distortion_caveats(found: tuple[DistortionSummary, ...]) -> list[Caveat]:
+    """One sentence for each significant distortion."""
+    return [
+        Caveat(
+            f"distortion_{one.kind}",
+            f"{_name(one)} exceeds the noise {one.excess.value:.2g} times around the resonance "
+            f"({_decibels(one.excess.value)}; from {one.band[0]:.3g} to {one.band[1]:.3g} Hz, {one.lines} detection "
+            f"lines); it is {100 * one.relative.value:.2g} % of the linear answer there.",
+        )
+        for one in found
+        if one.significant
+    ]
+
+
+def _name(one: DistortionSummary) -> str:
+    return "Nonlinear distortion" if one.kind == "all" else f"{one.kind.capitalize()} nonlinear distortion"
+
+
+def _decibels(ratio: float) -> str:
+    return f"{20 * math.log10(max(ratio, 1e-12)):+.0f} dB"
+
+
+def _summary(lines: DistortionLevels, kind: str, natural_frequency: float, angle_unit: str) -> DistortionSummary:
+    from scipy.special import fdtrc
+
+    octaves = np.abs(np.log2(lines.frequency / natural_frequency))
+    nearest = np.argsort(octaves, kind="stable")[: max(int(np.sum(octaves <= REACH)), FEWEST)]
+    near = lines.keep(np.sort(nearest))
+    count, noise = len(near.frequency), float(np.mean(near.noise**2))
+    freedom = float(np.min(near.noise_freedom))
+    power = float(np.mean(near.power))
+    own = 2 * np.maximum(near.power, 0.0) * near.noise**2 + near.noise**4
+    uncertainty = math.sqrt(float(np.sum(own)) / count**2 + 2 / freedom * noise**2)  # the lines share their noise level
+    ratio = float(np.mean(near.power / near.noise**2)) + 1
+    linear = float(np.mean(near.linear**2))
+    return DistortionSummary(
+        kind=kind,
+        amplitude=_root(power, uncertainty, angle_unit),
+        excess=_root(power / noise, uncertainty / noise, "1"),
+        relative=_root(power / linear, uncertainty / linear, "1"),
+        p_value=float(fdtrc(2 * count, freedom, ratio)),
+        lines=count,
+        band=(float(near.frequency[0]), float(near.frequency[-1])),
+    )
+
+
+def _root(power: float, uncertainty: float, unit: str) -> Quantity:
+    """Square root of a power: the ends of its 95 % interval are the roots of the power's (0 where that is negative)."""
+    value = math.sqrt(max(power, 0.0))
+    low, high = (math.sqrt(max(power + sign * 1.96 * uncertainty, 0.0)) for sign in (-1, 1))
+    high = max(high, value)
+    return Quantity(value=value, unit=unit, standard_uncertainty=(high - low) / 3.92, interval_95=(low, high))
