@@ -5,8 +5,9 @@ Importing the package is cheap: each public name is fetched from its module when
 
 from __future__ import annotations
 
-from importlib import import_module
-from typing import Any
+TYPE_CHECKING = False  # as typing has it, without importing typing
+if TYPE_CHECKING:
+    from typing import Any
 
 __version__ = "0.1.0"
 
@@ -45,6 +46,8 @@ __all__ = ["__version__", *_WHERE]
 def __getattr__(name: str) -> Any:
     if name not in _WHERE:
         raise AttributeError(f"module 'freqid' has no attribute {name!r}")
+    from importlib import import_module
+
     return getattr(import_module(_WHERE[name]), name)
 
 

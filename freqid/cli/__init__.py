@@ -1,24 +1,22 @@
-"""How does a command line become one library call, one answer and one exit status?
+"""What does the program `freqid` do with its words? Help and version at once, everything else through `boundary`.
 
-`main` is the only error boundary: a fault in the data, the rig sheet or the disk is one line on stderr
-and status 1, wrong usage is status 2, an interruption 130. No traceback reaches a user; with
-FREQID_DEBUG=1 in the environment an unexpected exception is raised again.
+The parser and its imports wait until a verb is called, so that `freqid --help` answers without delay.
 """
 
 from __future__ import annotations
 
 import os
 import sys
-from collections.abc import Sequence
 
-import click
-
-from freqid.cli.verbs import freqid_command
-from freqid.errors import FreqidError
+TYPE_CHECKING = False  # as typing has it, without importing typing
+if TYPE_CHECKING:
+    from collections.abc import Sequence
 
 __all__ = ["main"]
 
-FAULT, USAGE, INTERRUPTED = 1, 2, 130
+_USAGE = 2
+_COMPLETE = "_FREQID_COMPLETE"
+_SHELLS = ("bash", "zsh", "fish")
 
 
 def main(argv: Sequence[str] | None = None) -> int:
@@ -30,64 +28,36 @@ def main(argv: Sequence[str] | None = None) -> int:
         Exit status: 0 done, 1 a fault told in one line, 2 wrong usage, 130 interrupted; `crosscheck` adds
         3 (disagree) and 4 (unresolved).
     """
-    _survive_narrow_encodings()
-    if not (sys.argv[1:] if argv is None else argv):
-        return _show_help()
-    try:
-        status = freqid_command.main(
-            None if argv is None else list(argv), prog_name="freqid", standalone_mode=False
-        )
-        return status if isinstance(status, int) else 0
-    except click.UsageError as error:
-        return _tell(_usage_message(error), USAGE)
-    except click.ClickException as error:
-        return _tell(error.format_message(), FAULT)
-    except (click.Abort, KeyboardInterrupt):
-        return _tell("interrupted; nothing half-written was left", INTERRUPTED)
-    except SystemExit as error:  # the reader of our output has gone away
-        return error.code if isinstance(error.code, int) else FAULT
-    except Exception as error:
-        if os.environ.get("FREQID_DEBUG") == "1" and not _is_fault(error):
-            raise
-        return _tell(_message(error), FAULT)
+    words = list(sys.argv[1:] if argv is None else argv)
+    if _COMPLETE in os.environ:  # the shell asks, through the script that --completion prints
+        words = words or ["--help"]
+    elif not words or words in (["--help"], ["-h"]):
+        from freqid.cli.verbs import help_text
+
+        (sys.stdout if words else sys.stderr).write(help_text())
+        return 0 if words else _USAGE
+    elif words == ["--version"]:
+        from freqid import __version__
+
+        sys.stdout.write(f"freqid {__version__}\n")
+        return 0
+    elif words[0] == "--completion":
+        return _completion(words[1:])
+    from freqid.cli.boundary import run_verb
+
+    return run_verb(words)
 
 
-def _show_help() -> int:
-    context = click.Context(freqid_command, info_name="freqid", **freqid_command.context_settings)
-    click.echo(freqid_command.get_help(context), err=True)
-    return USAGE
+def _completion(words: list[str]) -> int:
+    """Print the script that makes a shell complete freqid's words."""
+    if len(words) != 1 or words[0] not in _SHELLS:
+        sys.stderr.write(f"freqid: --completion takes one of {', '.join(_SHELLS)}; see `freqid --help`\n")
+        return _USAGE
+    from click.shell_completion import get_completion_class
 
+    from freqid.cli.verb_group import freqid_command
 
-def _is_fault(error: Exception) -> bool:
-    if isinstance(error, (FreqidError, OSError)):
-        return True
-    from excitation.errors import ExcitationError  # numpy comes with it: only when something failed
-
-    return isinstance(error, ExcitationError)
-
-
-def _message(error: Exception) -> str:
-    if not _is_fault(error):
-        cause = f"{type(error).__name__}: {error}" if str(error) else type(error).__name__
-        return f"unexpected fault ({cause[:300]}); please report it with the command that led here"
-    if isinstance(error, OSError) and not isinstance(error, FreqidError) and error.strerror:
-        where = f"{error.filename}: " if error.filename else ""
-        return f"{where}{error.strerror}; make sure the place exists, may be written and has room, then run again"
-    return str(error)
-
-
-def _usage_message(error: click.UsageError) -> str:
-    command = error.ctx.command_path if error.ctx else "freqid"
-    return f"{error.format_message().rstrip('.')}; see `{command} --help`"
-
-
-def _tell(message: str, status: int) -> int:
-    click.echo(f"freqid: {' '.join(message.split())}", err=True)
-    return status
-
-
-def _survive_narrow_encodings() -> None:
-    """A character the terminal cannot show is replaced, never a reason to fail."""
-    for stream in (sys.stdout, sys.stderr):
-        if hasattr(stream, "reconfigure"):
-            stream.reconfigure(errors="replace")
+    shell = get_completion_class(words[0])
+    assert shell is not None
+    sys.stdout.write(shell(freqid_command, {}, "freqid", _COMPLETE).source() + "\n")
+    return 0

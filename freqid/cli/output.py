@@ -66,10 +66,11 @@ def progress_bar() -> Iterator[Progress]:
     if not sys.stderr.isatty():
         yield silent
         return
-    from rich.progress import BarColumn, TextColumn, TimeElapsedColumn
+    from rich.progress import BarColumn, TextColumn, TimeElapsedColumn, TimeRemainingColumn
     from rich.progress import Progress as Bar
 
-    columns = (TextColumn("{task.description}", markup=False), BarColumn(), TimeElapsedColumn())
+    columns = (TextColumn("{task.description}", markup=False), BarColumn(), TimeElapsedColumn(),
+               TextColumn("left"), TimeRemainingColumn())  # fmt: skip
     with Bar(*columns, console=_console(sys.stderr), transient=True) as bar:
         task = bar.add_task("", total=None)
 

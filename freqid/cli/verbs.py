@@ -1,29 +1,35 @@
-"""Which verbs are there, in the order of the work, and where is each?
+"""Which verbs are there, in the order of the work, what does each do, and where is it?
 
-A verb's module is imported only when the verb is called, so that `freqid --help` is quick. Each module
-offers its click command under the name `command`.
+Nothing heavy is imported here, not even the command line's parser: `freqid --help` has to be there at once. A verb's
+module is imported only when the verb is called; it offers its command under the name `command`.
 """
 
 from __future__ import annotations
 
-import difflib
-from dataclasses import dataclass
-from importlib import import_module
+__all__ = ["INTRODUCTION", "VERBS", "Verb", "help_text"]
 
-import click
+INTRODUCTION = """\
+Frequency-domain test of a rig that turns a voltage into an angle, cross-checked with its step test.
 
-from freqid import __version__
+One folder per test: `freqid new FOLDER` makes it, the other verbs fill it in the order below, and
+`freqid status FOLDER` says what comes next. Results go to stdout (--json for scripts), everything else to stderr."""
 
-__all__ = ["VERBS", "Verb", "freqid_command"]
+_OPTIONS = (
+    ("--version", "Show the version and exit."),
+    ("--completion SHELL", "Print what makes bash, zsh or fish complete verbs and options, and exit."),
+    ("-h, --help", "Show this message and exit; after a verb: its options and an example."),
+)
 
 
-@dataclass(frozen=True, slots=True)
 class Verb:
-    """One verb: its name, what it does, and the module of its command."""
+    """One verb: its name, what it does in one line, and the module of its command."""
 
-    name: str
-    does: str
-    module: str
+    __slots__ = ("does", "module", "name")
+
+    def __init__(self, name: str, does: str, module: str) -> None:
+        self.name = name
+        self.does = does
+        self.module = module
 
 
 VERBS = (
@@ -38,51 +44,19 @@ VERBS = (
     Verb("steptest", "step-test values and step model", "freqid.cli.steptest"),
     Verb("crosscheck", "the comparison, the verdict, causes, the next test", "freqid.cli.crosscheck"),
     Verb("report", "one self-contained HTML page with the figures", "freqid.cli.report"),
+    Verb("coefficients", "the transfer function for a controller: continuous, and discrete at its rate",
+         "freqid.cli.coefficients"),
+    Verb("status", "what is there, what is out of date, and the next command", "freqid.cli.status"),
     Verb("selfcheck", "recomputes the published values in reference_data on this machine", "freqid.cli.selfcheck"),
 )  # fmt: skip
 
 
-class VerbGroup(click.Group):
-    """A click group that knows its verbs by name and imports one only when it is called."""
-
-    def list_commands(self, ctx: click.Context) -> list[str]:
-        """Names in the order of the work."""
-        return [verb.name for verb in VERBS]
-
-    def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:
-        """The command of a verb, imported now; None for a name that is no verb."""
-        for verb in VERBS:
-            if verb.name == cmd_name:
-                command: click.Command = import_module(verb.module).command
-                return command
-        return None
-
-    def resolve_command(
-        self, ctx: click.Context, args: list[str]
-    ) -> tuple[str | None, click.Command | None, list[str]]:
-        """As click does, but an unknown verb is answered with the nearest known one."""
-        names = self.list_commands(ctx)
-        if args and not args[0].startswith("-") and args[0] not in names:
-            close = difflib.get_close_matches(args[0].lower(), names, n=1, cutoff=0.5)
-            hint = f"did you mean {close[0]!r}?" if close else f"verbs are {', '.join(names)}"
-            raise click.UsageError(f"no verb {args[0]!r}; {hint}", ctx)
-        return super().resolve_command(ctx, args)
-
-    def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
-        """The list of verbs, without importing any."""
-        with formatter.section("Verbs"):
-            formatter.write_dl([(verb.name, verb.does) for verb in VERBS])
-
-
-@click.group(
-    cls=VerbGroup,
-    subcommand_metavar="VERB FOLDER [OPTIONS]",
-    context_settings={"help_option_names": ["--help", "-h"], "max_content_width": 110},
-)
-@click.version_option(__version__, message="%(prog)s %(version)s")
-def freqid_command() -> None:
-    """Frequency-domain test of a rig that turns a voltage into an angle, cross-checked with its step test.
-
-    One folder per test: `freqid new FOLDER` makes it, the other verbs fill it in the order below.
-    Results go to stdout (--json for scripts), everything else to stderr.
-    """
+def help_text() -> str:
+    """What `freqid --help` shows."""
+    wide = max(len(verb.name) for verb in VERBS) + 2
+    options = max(len(option) for option, _ in _OPTIONS) + 2
+    lines = ["Usage: freqid VERB FOLDER [OPTIONS]", "", *INTRODUCTION.splitlines(), "", "Verbs:"]
+    lines += [f"  {verb.name:<{wide}}{verb.does}" for verb in VERBS]
+    lines += ["", "Options:", *(f"  {option:<{options}}{says}" for option, says in _OPTIONS)]
+    lines += ["", "Begin with `freqid rehearse`: the whole job on a simulated vane, in about a minute."]
+    return "\n".join(lines) + "\n"

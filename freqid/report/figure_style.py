@@ -32,6 +32,7 @@ __all__ = [
 
 WIDTH = 4.9  # inches: at this width the text is still readable on a telephone
 _FONTS = ["DejaVu Sans", "Verdana", "sans-serif"]
+_DOTS_PER_INCH = 200  # of a PNG
 _SALT = "freqid"  # makes the identifiers inside an SVG the same on every run
 
 
@@ -113,7 +114,7 @@ def svg_text(figure: Figure, *, name: str | None = None) -> str:
 
 
 def save_figure(figure: Figure, path: Path) -> None:
-    """Write the figure, whole or not at all; the ending of `path` chooses .svg or .png.
+    """Write the figure, whole or not at all; the ending of `path` chooses .svg, .pdf or .png.
 
     Raises
     ------
@@ -123,9 +124,10 @@ def save_figure(figure: Figure, path: Path) -> None:
     from freqid.test_folder import replacing
 
     ending = path.suffix.lower()
-    if ending not in (".svg", ".png"):
-        raise ValueError(f"{path.name}: figures are written as .svg or .png, not {ending or 'without an ending'!r}")
-    content = _rendered(figure, "svg" if ending == ".svg" else "png")
+    forms: dict[str, Literal["svg", "pdf", "png"]] = {".svg": "svg", ".pdf": "pdf", ".png": "png"}
+    if ending not in forms:
+        raise ValueError(f"{path.name}: figures are written as {', '.join(forms)}, not {ending or 'without ending'!r}")
+    content = _rendered(figure, forms[ending])
     with replacing(path) as temporary:
         temporary.write_bytes(content)
 
@@ -135,21 +137,25 @@ def colour_variables(palette: Palette) -> str:
     return " ".join(f"--{_css_name(source)}: {colour};" for source, colour in asdict(palette).items())
 
 
-def _rendered(figure: Figure, form: Literal["svg", "png"]) -> bytes:
+def _rendered(figure: Figure, form: Literal["svg", "pdf", "png"]) -> bytes:
     import matplotlib
     from matplotlib.backends.backend_agg import FigureCanvasAgg
+    from matplotlib.backends.backend_pdf import FigureCanvasPdf
     from matplotlib.backends.backend_svg import FigureCanvasSVG
 
     buffer = io.BytesIO()
     settings: dict[str, Any] = {
-        "svg.fonttype": "none", "svg.hashsalt": _SALT, "font.sans-serif": _FONTS, "path.simplify": True,
+        "svg.fonttype": "none", "pdf.fonttype": 42, "svg.hashsalt": _SALT, "font.sans-serif": _FONTS, "path.simplify": True,
     }  # fmt: skip
     with matplotlib.rc_context(cast(Any, settings)):  # rendering reads these; they are put back at once
         if form == "svg":
             nothing: dict[str, Any] = {"Date": None, "Creator": None, "Format": None, "Type": None}
             FigureCanvasSVG(figure).print_figure(buffer, format="svg", facecolor="auto", metadata=nothing)
             return _shorter(buffer.getvalue().decode("utf-8")).encode("utf-8")
-        FigureCanvasAgg(figure).print_figure(buffer, format="png", facecolor="auto")
+        if form == "pdf":
+            FigureCanvasPdf(figure).print_figure(buffer, format="pdf", facecolor="auto", metadata={"CreationDate": None})
+        else:
+            FigureCanvasAgg(figure).print_figure(buffer, format="png", facecolor="auto", dpi=_DOTS_PER_INCH)
     return buffer.getvalue()
 
 

@@ -5,6 +5,7 @@ All rounding follows `freqid.report.quantity_words`. The template escapes what i
 
 from __future__ import annotations
 
+import json
 import math
 from collections.abc import Iterable, Mapping
 from dataclasses import fields
@@ -55,6 +56,7 @@ def page_content(inputs: ReportInputs) -> dict[str, Any]:
         "settings": _settings(inputs),
         "rig_tables": _rig_tables(inputs.rig),
         "files": sorted(inputs.files.items()),
+        "sources": json.dumps(dict(inputs.files), ensure_ascii=False),
         "versions": sorted(inputs.versions.items()),
         "missing": _missing(inputs),
     }

@@ -7,13 +7,14 @@ from collections.abc import Iterable
 from datetime import UTC, datetime
 from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
-from typing import Any
+from typing import Any, Literal
 
 import freqid
 from excitation.hdf5_file import file_sha256
 from freqid.crosscheck.result_file import read_crosscheck
 from freqid.errors import TestFolderError
 from freqid.estimate.result_files import read_identification
+from freqid.freshness import changed_sources
 from freqid.records import Run
 from freqid.rig import read_rig
 from freqid.run_file import read_run
@@ -21,13 +22,18 @@ from freqid.stages import Progress, silent
 from freqid.step_test.result_file import read_step_result
 from freqid.test_folder import TestFolder, write_text
 
-__all__ = ["gather", "report_folder"]
+__all__ = ["FigureForm", "gather", "report_folder"]
 
+FigureForm = Literal["svg", "pdf", "png"]
 LIBRARIES = ("numpy", "scipy", "matplotlib", "h5py")
 
 
-def report_folder(folder: TestFolder, *, progress: Progress = silent) -> Path:
-    """Write report.html and figures/*.svg from what the folder holds; returns the page's path.
+def report_folder(
+    folder: TestFolder, *, forms: Iterable[FigureForm] = (), progress: Progress = silent
+) -> Path:
+    """Write report.html and the figures from what the folder holds; returns the page's path.
+
+    `forms` are those in which each figure is written besides SVG.
 
     Raises TestFolderError where there is nothing to report, or where results were computed from files that have
     changed since.
@@ -41,7 +47,8 @@ def report_folder(folder: TestFolder, *, progress: Progress = silent) -> Path:
     figures = draw_report(inputs)
     for name, made in figures.items():
         if made.figure is not None:
-            save_figure(made.figure, folder.figures / f"{name}.svg")
+            for form in ("svg", *forms):
+                save_figure(made.figure, folder.figures / f"{name}.{form}")
     progress("writing the page", 0.7)
     write_text(folder.report, write_report(inputs, figures=figures))
     return folder.report
@@ -90,11 +97,8 @@ def _run(folder: TestFolder, names: tuple[str, ...]) -> Run | None:
 
 def _refuse_stale(folder: TestFolder, path: Path, verb: str) -> None:
     """A result must have been computed from the files that stand beside it; the rig sheet may change afterwards."""
-    for name, sha256 in folder.read_json(path).get("computed_from", {}).items():
-        source = folder.path / name
-        if source == folder.rig or not source.exists():
-            continue
-        if file_sha256(source) != sha256:
+    for name in changed_sources(folder, path):
+        if folder.path / name != folder.rig:
             raise TestFolderError(
                 f"{path}: was computed from another {name} than the one there now; run `freqid {verb} "
                 f"{folder.quoted}` again"

@@ -223,7 +223,7 @@ def test_public_names_can_all_be_fetched() -> None:
 
 
 def test_figures_are_written_whole_or_not_at_all(inputs: ReportInputs, tmp_path: Path) -> None:
-    """SVG and PNG by ending, into a folder with spaces and umlauts; another ending is refused and leaves nothing."""
+    """SVG, PNG and PDF by ending, into a folder with spaces and umlauts; another ending is refused, leaving nothing."""
     figure = draw_report(inputs)["agreement_strip"].figure
     assert figure is not None
     folder = tmp_path / "Prüfung eins"
@@ -232,9 +232,11 @@ def test_figures_are_written_whole_or_not_at_all(inputs: ReportInputs, tmp_path:
     save_figure(figure, folder / "strip.png")
     assert (folder / "strip.svg").read_text(encoding="utf-8") == svg_text(figure)
     assert (folder / "strip.png").read_bytes().startswith(b"\x89PNG")
-    with pytest.raises(ValueError, match=r"\.svg or \.png"):
+    save_figure(figure, folder / "strip.pdf")
+    assert (folder / "strip.pdf").read_bytes().startswith(b"%PDF")
+    with pytest.raises(ValueError, match=r"\.svg, \.pdf, \.png"):
         save_figure(figure, folder / "strip.bmp")
-    assert sorted(path.name for path in folder.iterdir()) == ["strip.png", "strip.svg"]
+    assert sorted(path.name for path in folder.iterdir()) == ["strip.pdf", "strip.png", "strip.svg"]
 
 
 @pytest.mark.parametrize("palette", [LIGHT, DARK])
