@@ -4,11 +4,14 @@ Frames keep their slot number; lost ones are empty. `level` is the noise varianc
 would
 have, so white noise of variance s^2 has the level s^2 everywhere. Bins at the harmonics of a periodic excitation are
 left
-out: they hold the signal's own misfit. Windows are wide; towards low frequencies, where slow noise rises steeply, a
-narrow one is
-taken where it differs from the wide one beyond chance. Between whole periods the remaining bins carry the same
-information
-as the scatter from period to period (Parseval).
+out: they hold the signal's own misfit. Windows are wide; so that steep noise is not flattened in them, the periodogram
+is first
+divided by the spectrum of an autoregression fitted to it (prewhitening), smoothed, and multiplied again. Towards low
+frequencies a narrow window is taken where it differs from the wide one beyond chance. Between whole periods the
+remaining bins carry the same information as the scatter from period to period (Parseval).
+
+Source: R. Blackman & J. Tukey, *The Measurement of Power Spectra*, 1958 (prewhitening); Levinson-Durbin recursion and
+order by the Bayesian criterion: G. Schwarz, Ann. Statist. 6 (1978) 461-464.
 """
 
 from __future__ import annotations
@@ -29,6 +32,8 @@ MOST_ELEMENTS = 1_000_000  # of the fitted columns, for the exact account of wha
 NARROWEST = 8  # bins of the lowest window
 MOST_BINS = 60  # of a smoothing window: 120 degrees of freedom, yet narrow enough for coloured noise
 LARGEST_SHARE = 8  # a smoothing window holds at most an eighth of the bins
+HIGHEST_ORDER = 12  # of the autoregression that prewhitens
+FLATTEST = 1e-4  # of the largest value: the autoregression claims no deeper valley
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -87,17 +92,51 @@ def noise_spectrum(
         count = float(np.sum(grid.multiplicity[index]))
         left = np.full(len(frequency), min(1.0, (n - columns) * grid.size / (n * count)))
     widest = int(np.clip(len(index) // LARGEST_SHARE, FEWEST_BINS, MOST_BINS)) // 2
-    totals = [np.concatenate([[0.0], np.cumsum(v[index])]) for v in (power, left)]
+    shape = _shape(power / np.maximum(left, 0.1), index, grid)
+    totals = [np.concatenate([[0.0], np.cumsum(v[index])]) for v in (power / shape, left)]
     centre = np.searchsorted(index, np.arange(len(frequency)))
     wide, wide_freedom = _window_means(totals, centre, np.full(len(frequency), widest))
     narrow, narrow_freedom = _window_means(totals, centre, np.clip(centre // 3, NARROWEST // 2, widest))
     coloured = _differ(narrow / wide, narrow_freedom, wide_freedom)
     return NoiseSpectrum(
         frequency=frequency,
-        level=np.maximum(np.where(coloured, narrow, wide), 1e-300),
+        level=np.maximum(shape * np.where(coloured, narrow, wide), 1e-300),
         degrees_of_freedom=np.where(coloured, narrow_freedom, wide_freedom),
         usable=usable,
     )
+
+
+def _shape(power: Floats, index: NDArray[np.intp], grid: FrameGrid) -> Floats:
+    """Rough spectrum (B,), mean 1, of an autoregression fitted to the powers (B,) of the bins `index`; 1 where the
+    noise is white.
+    """
+    filled = np.interp(np.arange(len(power)), index, power[index])
+    lags = np.fft.irfft(filled, grid.size)
+    polynomial = _autoregression(lags[: HIGHEST_ORDER + 1], count=2 * len(index))
+    if len(polynomial) == 1:
+        return np.ones(len(power))
+    turn = np.exp(-2j * np.pi * np.outer(np.arange(len(power)) / grid.size, np.arange(len(polynomial))))
+    shape = 1 / np.abs(turn @ polynomial) ** 2
+    shape = np.maximum(shape, FLATTEST * np.max(shape))
+    return np.asarray(shape / np.mean(shape))
+
+
+def _autoregression(lags: Floats, *, count: int) -> Floats:
+    """Prediction-error filter (p + 1,) for the autocovariance `lags`, of the order with the smallest Bayesian
+    criterion.
+    """
+    polynomial, error = np.ones(1), float(lags[0])
+    best, smallest = polynomial, 0.0
+    for order in range(1, len(lags)):
+        reflection = -float(polynomial @ lags[order:0:-1]) / error
+        if not abs(reflection) < 1:
+            break
+        polynomial = np.append(polynomial, 0.0) + reflection * np.append(polynomial, 0.0)[::-1]
+        error *= 1 - reflection**2
+        criterion = count * np.log(error / float(lags[0])) + (order + 1) * np.log(count)
+        if criterion < smallest:
+            best, smallest = polynomial, criterion
+    return best
 
 
 def _window_means(totals: list[Floats], centre: NDArray[np.intp], half: NDArray[np.intp]) -> tuple[Floats, Floats]:
