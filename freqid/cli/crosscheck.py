@@ -52,7 +52,9 @@ def print_cross_check(check: CrossCheck) -> None:
     for cause in check.causes:
         click.echo(f"Cause? {cause.cause.replace('_', ' ')} ({cause.strength:.1f}): {cause.evidence}")
     if check.next_test is not None:
-        click.echo(f"Next: {check.next_test.command}\n      {check.next_test.reason}")
+        for command in check.next_test.commands or (check.next_test.command,):
+            click.echo(f"Next: {command}")
+        click.echo(f"      {check.next_test.reason}")
 
 
 def _cells(row: ComparedRow) -> tuple[str, ...]:

@@ -22,7 +22,7 @@ from freqid.crosscheck.causes import probable_causes
 from freqid.crosscheck.comparison_result import ComparedRow, CrossCheck, JointTest, RowVerdict, Verdict
 from freqid.crosscheck.evidence import Evidence, Recorded
 from freqid.crosscheck.findings import Findings, findings_of_model, findings_of_step
-from freqid.crosscheck.next_test import propose_next_test
+from freqid.crosscheck.next_test import Forecast, propose_next_test
 from freqid.errors import CrossCheckError
 from freqid.estimate.model import IdentifiedModel
 from freqid.estimate.resonance import ResonanceReading
@@ -76,17 +76,19 @@ def cross_check(
     resonance: ResonanceReading | str = "the measured curve was not given",
     folder: str = "FOLDER",
     recorded: Recorded | None = None,
+    forecast: Forecast | None = None,
 ) -> CrossCheck:
     """Compare the frequency test with the step test, with causes and the next test.
 
     `tolerance` is relative, by parameter name; `resonance` is the peak read off the measured curve (or why there is
-    none); `folder` names the test folder in the proposed command; `recorded` hands the raw runs to the causes.
+    none); `folder` names the test folder in the proposed command; `recorded` hands the raw runs to the causes;
+    `forecast` tells how well a further test will measure.
     Raises CrossCheckError where the angle units differ.
     """
     result = compare(findings_of_model(model, resonance), findings_of_step(step), tolerance=tolerance)
     evidence = Evidence(check=result, model=model, step=step, recorded=recorded or Recorded())
     result = replace(result, causes=probable_causes(evidence))
-    return replace(result, next_test=propose_next_test(result, model, step, folder=folder))
+    return replace(result, next_test=propose_next_test(result, model, step, folder=folder, forecast=forecast))
 
 
 def compare(first: Findings, second: Findings, *, tolerance: Mapping[str, float]) -> CrossCheck:

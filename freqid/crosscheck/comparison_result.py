@@ -5,7 +5,8 @@ Source: design of the verdict in DEVELOPERS.md; En: ISO/IEC 17043:2010, B.3.1.3.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Mapping
+from dataclasses import asdict, dataclass, field
 from typing import TYPE_CHECKING, Any, Literal
 
 from freqid.quantity import Caveat, Quantity
@@ -111,10 +112,29 @@ class Cause:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class NextTest:
-    """What to run next: a command to copy, and what it will settle."""
+    """What to run next: a command to copy, and what it will settle.
+
+    `commands` are all of them where both tests must be repeated. `duration` (s) and `amplitude` (V) are those of
+    `command`, None where the usual ones will do. `expected` tells, by quantity, the relative half width of the 95 %
+    interval that the difference will then have.
+    """
 
     command: str
     reason: str
+    kind: str = "multisine"
+    duration: float | None = None
+    amplitude: float | None = None
+    commands: tuple[str, ...] = ()
+    expected: Mapping[str, float] = field(default_factory=dict)
+
+    def as_json(self) -> dict[str, Any]:
+        """The form of "next_test" in results/crosscheck.json."""
+        return {**asdict(self), "commands": list(self.commands or (self.command,))}
+
+    @classmethod
+    def from_json(cls, data: dict[str, Any] | None) -> NextTest | None:
+        """Back from the form of results/crosscheck.json; None stays None."""
+        return None if data is None else cls(**{**data, "commands": tuple(data.get("commands", ()))})
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -34,7 +34,7 @@ def crosscheck_as_json(check: CrossCheck) -> dict[str, Any]:
         "compared": [row.as_json() for row in check.compared],
         "joint": None if check.joint is None else asdict(check.joint),
         "causes": [cause.as_json() for cause in check.causes],
-        "next_test": None if check.next_test is None else asdict(check.next_test),
+        "next_test": None if check.next_test is None else check.next_test.as_json(),
         "warnings": [c.as_json() for c in check.caveats],
     }
 
@@ -49,7 +49,7 @@ def read_crosscheck(folder: TestFolder) -> CrossCheck:
             compared=tuple(_row(row) for row in content["compared"]),
             joint=None if content["joint"] is None else JointTest(**content["joint"]),
             causes=tuple(Cause.from_json(cause) for cause in content["causes"]),
-            next_test=None if content["next_test"] is None else NextTest(**content["next_test"]),
+            next_test=NextTest.from_json(content["next_test"]),
             labels=_labels(content.get("labels", USUAL_LABELS)),
             caveats=Caveat.all_from_json(content["warnings"]),
         )

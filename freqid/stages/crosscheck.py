@@ -13,6 +13,7 @@ from freqid.estimate.result_files import read_identification
 from freqid.records import Run
 from freqid.rig import read_rig
 from freqid.run_file import read_run
+from freqid.stages.forecast import forecast_for
 from freqid.step_test.result_file import read_step_result
 from freqid.test_folder import TestFolder
 
@@ -36,6 +37,7 @@ def cross_check_folder(folder: TestFolder) -> CrossCheck:
             response=found.response,
             rig=rig,
         ),
+        forecast=forecast_for(rig, found, step),
     )
     sources = [folder.rig, folder.model, folder.response_h5, folder.step]
     write_crosscheck(folder, check, computed_from=sources)
