@@ -97,13 +97,16 @@ class Limits:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Output:
-    """[output]: what turns samples into voltage."""
+    """[output]: what turns samples into voltage; `loopback_full_scale` is that of the output unless given."""
 
     sample_rate: float = _key("of the output converter", "Hz", _RATES, 1000.0)
     hold: Literal["zero-order", "smooth"] = _key(
         "a staircase, or a smooth signal (sound interface)", "", ("zero-order", "smooth"), "zero-order"
     )
     full_scale: float = _key("voltage at digital full scale", "V", _VOLTS, 10.0)
+    loopback_full_scale: float | None = _key(
+        "of the input that records it (sound interface); as above unless given", "V", _VOLTS, None, default=None
+    )
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
