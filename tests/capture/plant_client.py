@@ -20,8 +20,11 @@ import os
 import signal
 import subprocess
 import threading
+import time
+from collections.abc import Callable
 from dataclasses import asdict, dataclass
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -29,6 +32,7 @@ from numpy.typing import NDArray
 __all__ = ["PlantSettings", "Vane", "read_record"]
 
 Floats = NDArray[np.float64]
+PATIENCE = 20.0  # s until the server must answer
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -122,14 +126,12 @@ def read_record(path: Path, *, period: int) -> tuple[NDArray[np.uint32], NDArray
 
 
 def _run_vane(settings: PlantSettings) -> None:
-    import jack
-
-    client = jack.Client("vane", use_exact_name=True, servername=settings.server, no_start_server=True)
+    vane = Vane(settings)
+    client = _client("vane", settings)
     drive = client.inports.register("drive")
     client.inports.register("spare")
     loopback = client.outports.register("loopback")
     angle = client.outports.register("angle")
-    vane = Vane(settings)
 
     def process(frames: int) -> None:
         sent_back, turned = vane.process(drive.get_array().astype(np.float64))
@@ -137,13 +139,11 @@ def _run_vane(settings: PlantSettings) -> None:
         angle.get_array()[:] = turned
 
     client.set_process_callback(process)
-    _serve(client, settings)
+    _serve(client, settings, lambda: None)
 
 
 def _run_recorder(settings: PlantSettings) -> None:
-    import jack
-
-    client = jack.Client("recorder", use_exact_name=True, servername=settings.server, no_start_server=True)
+    client = _client("recorder", settings)
     heard = client.inports.register("heard")
     record = os.open(settings.record, os.O_WRONLY | os.O_CREAT | os.O_TRUNC, 0o600)
 
@@ -152,19 +152,41 @@ def _run_recorder(settings: PlantSettings) -> None:
         os.write(record, frame + bytes(heard.get_buffer()))
 
     client.set_process_callback(process)
-    _serve(client, settings)
+    _serve(client, settings, lambda: _patiently(lambda: client.connect("vane:loopback", heard)))
 
 
-def _serve(client: object, settings: PlantSettings) -> None:
+def _client(name: str, settings: PlantSettings) -> Any:
+    """A client of the server, as soon as there is one."""
+    import jack
+
+    return _patiently(lambda: jack.Client(name, use_exact_name=True, servername=settings.server, no_start_server=True))
+
+
+def _patiently(act: Callable[[], Any]) -> Any:
+    """What `act` returns once it succeeds."""
+    import jack
+
+    end = time.monotonic() + PATIENCE
+    while True:
+        try:
+            return act()
+        except jack.JackError:
+            if time.monotonic() > end:
+                raise
+            time.sleep(0.05)
+
+
+def _serve(client: Any, settings: PlantSettings, begin: Callable[[], None]) -> None:
     """Run until the server goes away or the process is told to end."""
     over = threading.Event()
-    client.set_shutdown_callback(lambda status, reason: over.set())  # type: ignore[attr-defined]
+    client.set_shutdown_callback(lambda status, reason: os._exit(0))  # closing a client of a dead server can hang
     for number in (signal.SIGTERM, signal.SIGINT):
         signal.signal(number, lambda *_: over.set())
-    client.activate()  # type: ignore[attr-defined]
+    client.activate()
+    begin()
     Path(settings.ready).touch()
     over.wait()
-    os._exit(0)  # closing a client of a dead server can hang
+    client.close()
 
 
 def _run_pulse(settings: PlantSettings) -> None:
