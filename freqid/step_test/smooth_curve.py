@@ -20,6 +20,7 @@ __all__ = ["HALF_WIDTH_IN_PERIODS", "SmoothCurve"]
 Floats = NDArray[np.float64]
 HALF_WIDTH_IN_PERIODS = 0.15
 FEWEST_FRAMES = 4
+MOST_FRAMES_AT_ONCE = 200_000  # in all windows that are worked out together
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -40,13 +41,25 @@ class SmoothCurve:
         value, slope, spread = (np.full(len(instants), np.nan) for _ in range(3))
         low = np.searchsorted(self.time, instants - self.half_width)
         high = np.searchsorted(self.time, instants + self.half_width)
-        for i, (a, b, t) in enumerate(zip(low, high, instants, strict=True)):
-            if b - a < FEWEST_FRAMES:
-                continue
-            x = (self.time[a:b] - t) / self.half_width
-            design = np.stack([np.ones_like(x), x, x**2], axis=1)
-            gram = np.linalg.inv(design.T @ design)
-            coefficient = gram @ (design.T @ self.angle[a:b])
-            value[i], slope[i] = coefficient[0], coefficient[1] / self.half_width
-            spread[i] = self.noise * np.sqrt(gram[0, 0])
+        enough = np.flatnonzero(high - low >= FEWEST_FRAMES)
+        at_once = max(1, MOST_FRAMES_AT_ONCE // max(int(np.max(high - low, initial=1)), 1))
+        for begin in range(0, len(enough), at_once):
+            chosen = enough[begin : begin + at_once]
+            value[chosen], slope[chosen], spread[chosen] = self._parabolas(instants[chosen], low[chosen], high[chosen])
         return value, slope, spread
+
+    def _parabolas(
+        self, instants: Floats, low: NDArray[np.intp], high: NDArray[np.intp]
+    ) -> tuple[Floats, Floats, Floats]:
+        """Height, slope and standard uncertainty of the height of one parabola per instant, frames low to high - 1."""
+        width = int(np.max(high - low))
+        frames = low[:, None] + np.arange(width)
+        inside = frames < high[:, None]
+        frames = np.minimum(frames, len(self.time) - 1)
+        x = np.where(inside, (self.time[frames] - instants[:, None]) / self.half_width, 0.0)
+        design = np.stack([inside.astype(float), x, x**2], axis=-1)
+        # pseudo-inverse: frames with equal stamps leave a parabola undetermined
+        gram = np.linalg.pinv(np.einsum("qfi,qfj->qij", design, design), hermitian=True)
+        right = np.einsum("qfi,qf->qi", design, np.where(inside, self.angle[frames], 0.0))
+        coefficient = np.einsum("qij,qj->qi", gram, right)
+        return coefficient[:, 0], coefficient[:, 1] / self.half_width, self.noise * np.sqrt(gram[:, 0, 0])
