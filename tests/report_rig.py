@@ -10,6 +10,7 @@ import numpy as np
 from freqid.capture.clock_map import ClockMap
 from freqid.capture.simulated_rig import SimulatedRig, SimulatedSensor
 from freqid.crosscheck.comparison_result import Cause, ComparedRow, CrossCheck, JointTest, NextTest, RowVerdict
+from freqid.crosscheck.exhibit import Exhibit, Series
 from freqid.estimate.frequency_response import FrequencyResponse
 from freqid.estimate.identification import Identification
 from freqid.estimate.model import Adequacy, IdentifiedModel
@@ -150,6 +151,22 @@ def row(name: str, *, away: float, width: float, verdict: RowVerdict, tolerance:
     )  # fmt: skip
 
 
+def exhibit() -> Exhibit:
+    """A picture with every kind of series: points with bars, a line, a band, a limit."""
+    x = np.arange(1.0, 9.0)
+    fall = 20 * np.exp(-0.42 * x)
+    return Exhibit(
+        title="Peaks after a step", x_label="half cycle", x_unit="", y_label="amplitude", y_unit="deg",
+        logarithmic=("y",),
+        series=(
+            Series(kind="points", source="step test", label="peaks, 95 %", x=x, y=fall + 0.2, uncertainty=0.1 * fall),
+            Series(kind="line", source="model", label="viscous <decay>", x=x, y=fall),
+            Series(kind="band", source="noise", label="noise", x=x, y=np.full(8, 0.1), upper=np.full(8, 0.3)),
+            Series(kind="line", source="limit", label="stop", x=x, y=np.full(8, 25.0)),
+        ),
+    )  # fmt: skip
+
+
 def cross_check(*rows: ComparedRow) -> CrossCheck:
     """A comparison of the rows, or one of each verdict and a quantity that no test determined."""
     undetermined = ComparedRow(
@@ -167,7 +184,11 @@ def cross_check(*rows: ComparedRow) -> CrossCheck:
         sentence="The damping ratio differs by twice its tolerance.",
         compared=rows or usual,
         joint=JointTest(statistic=12.5, degrees_of_freedom=3, p_value=0.0058),
-        causes=(Cause(cause="amplitude_dependence", strength=0.7, evidence="Large steps are <damped> more & longer."),),
+        causes=(
+            Cause(cause="amplitude_dependence", strength=0.7, evidence="Large steps are <damped> more & longer.",
+                  against="Two <small> steps are not.", exhibit=exhibit(),
+                  settling_test="A test at half the amplitude."),
+        ),
         next_test=NextTest(command="freqid excite vane --kind step --duration 90", reason="More steps settle it."),
     )
 

@@ -57,6 +57,10 @@ def command(
 
     Either --log FILE with both columns, or --input FILE (or profile) with --angle FILE. Columns and units are
     found by their names where that is unambiguous; otherwise the columns are listed with the option to give.
+
+    \b
+    Example:
+      freqid import vane --input profile --angle camera.csv --time-unit ms --angle-unit deg
     """
     sources = _sources(log, input_, angle)
     test = TestFolder.existing(folder)

@@ -18,6 +18,10 @@ def command(folder: Path) -> None:
     """Make FOLDER with a commented rig.toml: the sheet that says what the rig may take.
 
     It describes the built-in vane; replace its values by those of your rig before anything moves.
+
+    \b
+    Example:
+      freqid new vane
     """
     made = create_folder(folder)
     click.echo(made.rig)

@@ -29,7 +29,11 @@ COLUMNS = ("row", "quantity", "published", "computed", "deviation", "allowed", "
 def command(as_json: bool, report: Path | None) -> int:
     """Recompute the published values in reference_data with this installation and print both.
 
-    Exit status 1 where one is missed. Example: freqid selfcheck --report selfcheck.html
+    Exit status 1 where one is missed.
+
+    \b
+    Example:
+      freqid selfcheck --report selfcheck.html
     """
     begun = time.perf_counter()
     checks = list(check_published_values())

@@ -72,17 +72,18 @@ def _draw_bar(axes: Axes, bar: Bar, height: float, *, source: str, palette: Pale
         axes.plot([bar.value], [height], marker=mark, color=colour, markersize=5.5, markeredgecolor=palette.paper
                   if source != "difference" else colour)  # fmt: skip
     else:
-        _arrow(axes, bar.value, height, colour)
+        _arrow(axes, bar.value, height, colour, palette)
 
 
-def _arrow(axes: Axes, value: float, height: float, colour: str) -> None:
+def _arrow(axes: Axes, value: float, height: float, colour: str, palette: Palette) -> None:
     """A value off the axis: an arrow at the edge with the value beside it."""
     side = 1 if value > 0 else -1
     edge = axes.get_xlim()[1] * side
     axes.plot([edge], [height], marker=5 if side > 0 else 4, color=colour, markersize=6, clip_on=False)
     axes.annotate(
         minus(f"{value:+.2g}"), (edge, height), xytext=(-7 * side, 0), textcoords="offset points", va="center",
-        ha="right" if side > 0 else "left", color=colour, fontsize=8,
+        ha="right" if side > 0 else "left", color=colour, fontsize=8, zorder=5,
+        bbox={"facecolor": palette.paper, "edgecolor": "none", "pad": 0.6},  # the number hides the end of its bar
     )  # fmt: skip
 
 

@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 
 from freqid.errors import FreqidError
 from freqid.report.agreement_strip import agreement_figure
+from freqid.report.cause_card import cause_figure
 from freqid.report.data_ribbon import ribbon_figure, ribbon_of
 from freqid.report.gain_and_phase import gain_and_phase_figure
 from freqid.report.quantity_words import label_of, with_uncertainty
@@ -51,7 +52,21 @@ def draw_report(inputs: ReportInputs) -> dict[str, ReportFigure]:
             made = ReportFigure(caption="", alternative="", reason=f"This figure could not be drawn: {error}")
         if made is not None:
             figures[name] = made
-    return figures
+    return {**figures, **_causes(inputs)}
+
+
+def _causes(inputs: ReportInputs) -> dict[str, ReportFigure]:
+    """A card for every cause that has an exhibit, named cause_ and its code."""
+    check = inputs.crosscheck
+    return {
+        f"cause_{cause.cause}": ReportFigure(
+            figure=cause_figure(cause.exhibit),
+            caption=f"{cause.exhibit.title.rstrip('.')}.",
+            alternative=f"{cause.exhibit.title.rstrip('.')}. {cause.evidence}",
+        )
+        for cause in (() if check is None else check.causes)
+        if cause.exhibit is not None
+    }
 
 
 def _agreement(inputs: ReportInputs) -> ReportFigure | None:

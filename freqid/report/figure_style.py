@@ -145,7 +145,8 @@ def _rendered(figure: Figure, form: Literal["svg", "pdf", "png"]) -> bytes:
 
     buffer = io.BytesIO()
     settings: dict[str, Any] = {
-        "svg.fonttype": "none", "pdf.fonttype": 42, "svg.hashsalt": _SALT, "font.sans-serif": _FONTS, "path.simplify": True,
+        "svg.fonttype": "none", "svg.hashsalt": _SALT, "pdf.fonttype": 42, "font.sans-serif": _FONTS,
+        "path.simplify": True,
     }  # fmt: skip
     with matplotlib.rc_context(cast(Any, settings)):  # rendering reads these; they are put back at once
         if form == "svg":
@@ -153,7 +154,8 @@ def _rendered(figure: Figure, form: Literal["svg", "pdf", "png"]) -> bytes:
             FigureCanvasSVG(figure).print_figure(buffer, format="svg", facecolor="auto", metadata=nothing)
             return _shorter(buffer.getvalue().decode("utf-8")).encode("utf-8")
         if form == "pdf":
-            FigureCanvasPdf(figure).print_figure(buffer, format="pdf", facecolor="auto", metadata={"CreationDate": None})
+            undated: dict[str, Any] = {"CreationDate": None}
+            FigureCanvasPdf(figure).print_figure(buffer, format="pdf", facecolor="auto", metadata=undated)
         else:
             FigureCanvasAgg(figure).print_figure(buffer, format="png", facecolor="auto", dpi=_DOTS_PER_INCH)
     return buffer.getvalue()

@@ -11,7 +11,7 @@ from collections.abc import Iterable, Mapping
 from dataclasses import fields
 from typing import Any
 
-from freqid.crosscheck.comparison_result import ComparedRow, CrossCheck
+from freqid.crosscheck.comparison_result import Cause, ComparedRow, CrossCheck
 from freqid.estimate.model import IdentifiedModel
 from freqid.quantity import Caveat, Quantity
 from freqid.records import Run
@@ -42,7 +42,7 @@ def page_content(inputs: ReportInputs) -> dict[str, Any]:
         "compared": [] if check is None else [_compared(row) for row in check.compared],
         "reasons": _reasons(check),
         "joint": _joint(check),
-        "causes": [] if check is None else [_cause(c.cause, c.strength, c.evidence) for c in check.causes],
+        "causes": [] if check is None else [_cause(cause) for cause in check.causes],
         "next_test": None if check is None else check.next_test,
         "adequacy": None if found is None else _adequacy(found.model),
         "model_numbers": [] if found is None else _numbers(found.model.parameters, found.model.derived),
@@ -65,7 +65,7 @@ def page_content(inputs: ReportInputs) -> dict[str, Any]:
 def _verdict(check: CrossCheck | None) -> dict[str, str]:
     if check is None:
         return {"code": "none", "words": "No verdict yet", "sentence": "The two tests have not been compared."}
-    return {"code": check.verdict, "words": _VERDICT_WORDS[check.verdict], "sentence": check.sentence}
+    return {"code": check.verdict, "words": _VERDICT_WORDS[check.verdict], "sentence": sentence_case(check.sentence)}
 
 
 def _compared(row: ComparedRow) -> dict[str, str]:
@@ -101,10 +101,22 @@ def _joint(check: CrossCheck | None) -> str:
     )
 
 
-def _cause(code: str, strength: float, evidence: str) -> dict[str, Any]:
-    word = next(word for least, word in _STRENGTHS if strength >= least)
-    name = code.replace("_", " ")
-    return {"name": name[:1].upper() + name[1:], "strength": f"{strength:.2f}", "word": word, "evidence": evidence}
+def _cause(cause: Cause) -> dict[str, Any]:
+    word = next(word for least, word in _STRENGTHS if cause.strength >= least)
+    return {
+        "figure": f"cause_{cause.cause}",
+        "name": sentence_case(cause.cause.replace("_", " ")),
+        "strength": f"{cause.strength:.2f}",
+        "word": word,
+        "evidence": cause.evidence,
+        "against": cause.against,
+        "settling_test": cause.settling_test,
+    }
+
+
+def sentence_case(text: str) -> str:
+    """The text with its first letter large."""
+    return text[:1].upper() + text[1:]
 
 
 def _adequacy(model: IdentifiedModel) -> str:

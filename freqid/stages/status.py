@@ -87,14 +87,14 @@ def _profile(folder: TestFolder, kind: RunKind) -> Part:
 
 
 def _runs(folder: TestFolder, kind: RunKind) -> list[Part]:
-    from freqid.run_file import read_run
+    from freqid.run_file import read_run_facts
 
     parts = []
     for name in folder.run_names(kind):
         path = folder.run(name)
         file = folder.relative_name(path)
         try:
-            run = read_run(path)
+            run = read_run_facts(path)
         except (FreqidError, OSError) as error:
             parts.append(Part(name=name, file=file, state="damaged", detail=str(error)))
             continue
