@@ -121,7 +121,7 @@ def write_run_in_blocks(
     return path
 
 
-def read_run(path: Path) -> Run:
+def read_run(path: Path | str) -> Run:
     """The run in the file `path`, its arrays read-only, with the sha256 of the file.
 
     Raises
@@ -135,11 +135,11 @@ def read_run(path: Path) -> Run:
             facts,
             input=replace(facts.input, time=read_only(opened.input.time()), voltage=read_only(opened.input.values())),
             angle=replace(facts.angle, time=read_only(opened.angle.time()), angle=read_only(opened.angle.values())),
-            file_sha256=file_sha256(path),
+            file_sha256=file_sha256(Path(path)),
         )
 
 
-def read_run_facts(path: Path) -> Run:
+def read_run_facts(path: Path | str) -> Run:
     """The run without its samples and without its sha256; raises TestFolderError as `read_run` does."""
     with open_run(path) as opened:
         return opened.facts

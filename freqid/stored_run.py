@@ -77,7 +77,7 @@ class OpenRun:
 
 
 @contextmanager
-def open_run(path: Path) -> Iterator[OpenRun]:
+def open_run(path: Path | str) -> Iterator[OpenRun]:
     """Open the run in the file `path` to read its streams by slices; closed when the block ends.
 
     Raises
@@ -85,6 +85,7 @@ def open_run(path: Path) -> Iterator[OpenRun]:
     TestFolderError
         The file is missing, damaged, no run, or of a newer format; also where samples cannot be read inside the block.
     """
+    path = Path(path)
     if not path.is_file():
         others = ", ".join(sorted(other.stem for other in path.parent.glob("*.h5"))) or "none"
         raise TestFolderError(f"{path}: no such run; runs in this folder: {others}")
