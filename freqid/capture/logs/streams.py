@@ -19,7 +19,7 @@ from freqid.capture.logs.import_settings import ImportSettings, RigFacts
 from freqid.capture.logs.input_hold import decide_hold
 from freqid.capture.logs.log_table import LogColumn, LogTable
 from freqid.capture.logs.periodicity import find_periodicity
-from freqid.capture.logs.time_axis import TimeSettings, read_time
+from freqid.capture.logs.time_axis import TimeSettings, counts_frames, read_time, runs_like_time
 from freqid.capture.logs.units import VOLTAGE_UNITS
 from freqid.errors import LogError
 from freqid.quantity import in_unit
@@ -145,19 +145,37 @@ def _exposure(time: NDArray[np.float64], settings: ImportSettings, rig: RigFacts
 
 def _time_column(table: LogTable, request: str | None, settings: TimeSettings) -> ChosenColumn | None:
     """The time column; None where the log has none and its rate is known."""
-    if request is None:
-        rate_known = settings.sample_rate is not None or table.sample_rate is not None
-        found = find_column(table, "time", frames=settings.sample_rate is not None)
-        if found is not None or rate_known:
-            return found
-        if len(table.columns) == 1:
-            raise LogError(f"{table.source}: one column and no times; give --sample-rate: {table.listing()}")
-    try:
+    if request is not None:
         return choose_column(table, "time", request=request)
+    asked = settings.sample_rate is not None
+    found = find_column(table, "time", frames=asked)
+    if found is not None or table.sample_rate is not None:
+        return found
+    return _time_without_name(table, asked=asked)
+
+
+def _time_without_name(table: LogTable, *, asked: bool) -> ChosenColumn | None:
+    """What serves as time where no header says so: counted frames, or rows at the rate asked for; never a guess."""
+    counting = [column for column in table.columns if column.numbers is not None and counts_frames(column.numbers)]
+    if asked and len(counting) == 1:
+        return ChosenColumn(column=counting[0], note=f'{table.source}: "{counting[0].name}" counts frames')
+    running = [column for column in table.columns if column.numbers is not None and runs_like_time(column.numbers)]
+    if asked and running:
+        raise LogError(
+            f'{table.source}: column {running[0].number} "{running[0].name}" runs like a time although '
+            f"--sample-rate is given; say which column is the time with --time-column: {table.listing()}"
+        )
+    if asked:
+        return None
+    if len(table.columns) == 1:
+        raise LogError(f"{table.source}: one column and no times; give --sample-rate: {table.listing()}")
+    hint = "give --sample-rate where the log has no times"
+    if len(counting) == 1:
+        hint = f'"{counting[0].name}" seems to count frames: give --sample-rate with the frame rate in Hz'
+    try:
+        return choose_column(table, "time", request=None)
     except LogError as fault:
-        if request is not None:
-            raise
-        raise LogError(f"{fault} (or give --sample-rate where the log has no times)") from fault
+        raise LogError(f"{fault} ({hint})") from fault
 
 
 def _in_volts(table: LogTable, column: LogColumn, rig: RigFacts) -> tuple[NDArray[np.float64], list[str]]:

@@ -20,8 +20,9 @@ from freqid.capture.logs.units import TIME_UNITS, canonical_unit
 from freqid.errors import LogError
 from freqid.quantity import in_unit
 
-__all__ = ["TimeAxis", "TimeSettings", "read_time"]
+__all__ = ["TimeAxis", "TimeSettings", "counts_frames", "read_time", "runs_like_time"]
 
+_MOSTLY = 0.8  # of the steps: lost frames and jitter spoil the rest
 _DAY = 86400.0  # s
 _SAME_DECADE = 0.15  # in log10: a step within a factor of 1.4 of the nominal one is that one
 
@@ -70,7 +71,7 @@ def read_time(table: LogTable, column: LogColumn | None, *, n_rows: int, setting
         stamps = read_stamps(table, column)
         return _checked(table, column, stamps.seconds, [f"{table.source}: {stamps.note}"])
     numbers = table.numbers(column)
-    if settings.sample_rate is not None and _are_frame_numbers(numbers) and column.unit not in TIME_UNITS:
+    if settings.sample_rate is not None and counts_frames(numbers) and column.unit not in TIME_UNITS:
         note = f'{table.source}: "{column.name}" holds frame numbers; time = number / {settings.sample_rate:g} Hz'
         return _checked(table, column, numbers / settings.sample_rate, [note])
     unit, why = _unit(table, column, settings.unit)
@@ -79,13 +80,30 @@ def read_time(table: LogTable, column: LogColumn | None, *, n_rows: int, setting
     if settings.sample_rate is not None:
         notes.append(f"{table.source}: has times; the sample rate {settings.sample_rate:g} Hz only checks their unit")
     axis = _checked(table, column, time, notes)
-    rates = (settings.sample_rate,) if settings.sample_rate else settings.nominal_rates
+    rates = (*(() if settings.sample_rate is None else (settings.sample_rate,)), *settings.nominal_rates)
     doubt = _wrong_unit(numbers, unit, rates, stated=settings.unit is not None or column.unit is not None)
     if doubt and settings.unit is None:
         raise LogError(f"{table.source}: {doubt}; give --time-unit s, ms, us or min, or correct the rate in rig.toml")
     if doubt:
         return TimeAxis(time=axis.time, notes=(*axis.notes, f"{table.source}: {doubt}; kept, as --time-unit says"))
     return axis
+
+
+def counts_frames(numbers: NDArray[np.float64]) -> bool:
+    """Whole numbers that never fall and mostly step by one (lost frames leave gaps)."""
+    known = numbers[np.isfinite(numbers)]
+    steps = np.diff(known)
+    whole = bool(np.all(known == np.round(known)))
+    return whole and steps.size > 0 and bool(np.all(steps >= 0)) and float(np.median(steps)) == 1.0
+
+
+def runs_like_time(numbers: NDArray[np.float64]) -> bool:
+    """Numbers that never fall and mostly go on by about the same step, as stamps do."""
+    steps = np.diff(numbers[np.isfinite(numbers)])
+    if steps.size < 3 or np.any(steps < 0):
+        return False
+    usual = float(np.median(steps))
+    return usual > 0 and float(np.mean(np.abs(steps / usual - 1) < 0.5)) > _MOSTLY
 
 
 def _counted(table: LogTable, n_rows: int, asked: float | None) -> TimeAxis:
@@ -111,14 +129,6 @@ def _unit(table: LogTable, column: LogColumn, asked: str | None) -> tuple[str, s
             f'{table.source}: the time column "{column.name}" is in "{column.unit}"; give --time-unit s, ms, us or min'
         )
     return "s", "no unit in the header"
-
-
-def _are_frame_numbers(numbers: NDArray[np.float64]) -> bool:
-    """Whole numbers that never fall and mostly step by one (lost frames leave gaps)."""
-    known = numbers[np.isfinite(numbers)]
-    steps = np.diff(known)
-    whole = bool(np.all(known == np.round(known)))
-    return whole and steps.size > 0 and bool(np.all(steps >= 0)) and float(np.median(steps)) == 1.0
 
 
 def _checked(table: LogTable, column: LogColumn, time: NDArray[np.float64], notes: list[str]) -> TimeAxis:
@@ -163,7 +173,7 @@ def _wrong_unit(numbers: NDArray[np.float64], unit: str, rates: tuple[float, ...
     doubt = f"the step between stamps is {step:g}, taken as {unit}, but the nominal rate is "
     if any(_same(step * TIME_UNITS[unit] * rate) for rate in rates):
         return None
-    if not stated and _are_frame_numbers(numbers):
+    if not stated and counts_frames(numbers):
         return doubt + f"{rates[0]:g} Hz (if these are frame numbers, give --sample-rate)"
     for rate in rates:
         if any(_same(step * TIME_UNITS[other] * rate) for other in ("s", "ms", "us") if other != unit):

@@ -1,8 +1,9 @@
 """Which unit does a log mean by the words in its header?
 
 Units of time convert to seconds, of voltage to volts, of angle to degrees or radians. A unit is read
-from brackets (`angle (deg)`, `u [mV]`) or behind a slash, an underscore or the word "in"
-(`t/ms`, `time_s`, `Zeit in ms`). Whatever is not in the tables below is kept as written.
+from brackets (`angle (deg)`, `u [mV]`), behind a slash, an underscore or the word "in" (`t/ms`, `time_s`,
+`Zeit in ms`), or before the words of a count (`ms since midnight`). Whatever is not in the tables below
+is kept as written.
 """
 
 from __future__ import annotations
@@ -38,6 +39,7 @@ _SPELLINGS: Mapping[str, str] = MappingProxyType(
 )
 _NOT_MILLI = frozenset({"MV", "MS", "MRAD"})  # mega is not milli: an upper-case M is no reading of these tables
 _BRACKETS = re.compile(r"\(([^()]*)\)|\[([^\[\]]*)\]|\{([^{}]*)\}|<([^<>]*)>")
+_COUNT = re.compile(r"^\s*(\S+)\s+(?:since|after|from|of|seit|ab|nach)\s", re.IGNORECASE)
 _TRAILING = re.compile(r"(?:_|/|\s+in\s+)\s*([^\s_/()\[\]{}<>]+)\s*$")
 
 
@@ -56,6 +58,8 @@ def unit_in_name(name: str) -> str | None:
         if known := canonical_unit(text):
             return known
     if (trailing := _TRAILING.search(name)) and (known := canonical_unit(trailing.group(1))):
+        return known
+    if (count := _COUNT.search(name)) and (known := canonical_unit(count.group(1))) in TIME_UNITS:
         return known
     return next((text for text in reversed(brackets) if text), None)
 
