@@ -52,12 +52,17 @@ def test_each_log_keeps_its_own_times(logs: tuple[TestFolder, Path, Path]) -> No
     np.testing.assert_allclose(run.angle.angle, np.sin(FRAMES / 9), atol=6e-4)
 
 
-def test_frame_numbers_under_any_name(logs: tuple[TestFolder, Path, Path]) -> None:
-    """A column that counts by one is the frame number, whatever it is called, once the rate is known."""
+def test_frame_numbers_under_a_name_that_says_nothing(
+    logs: tuple[TestFolder, Path, Path], capsys: pytest.CaptureFixture[str]
+) -> None:
+    """A column that counts under an unknown name is asked about; named as the time, it is the frame number."""
     folder, camera, converter = logs
     camera.write_text(camera.read_text(encoding="utf-8-sig").replace("Bildnummer", "Lfd. Nr."), encoding="utf-8")
     words = ["import", str(folder.path), "--input", str(converter), "--angle", str(camera), "--sample-rate", "60"]
-    assert main(words) == 0
+    capsys.readouterr()
+    assert main(words) == 1
+    assert '"Lfd. Nr." runs like a time' in capsys.readouterr().err
+    assert main([*words, "--time-column", "1"]) == 0
     np.testing.assert_allclose(read_run(folder.run("response-001")).angle.time, FRAMES / 60, rtol=1e-12)
 
 

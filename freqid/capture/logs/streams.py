@@ -155,10 +155,8 @@ def _time_column(table: LogTable, request: str | None, settings: TimeSettings) -
 
 
 def _time_without_name(table: LogTable, *, asked: bool) -> ChosenColumn | None:
-    """What serves as time where no header says so: counted frames, or rows at the rate asked for; never a guess."""
+    """What serves as time where no header says so: rows at the rate asked for, if nothing runs like a time."""
     counting = [column for column in table.columns if column.numbers is not None and counts_frames(column.numbers)]
-    if asked and len(counting) == 1:
-        return ChosenColumn(column=counting[0], note=f'{table.source}: "{counting[0].name}" counts frames')
     running = [column for column in table.columns if column.numbers is not None and runs_like_time(column.numbers)]
     if asked and running:
         raise LogError(
