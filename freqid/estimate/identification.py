@@ -18,7 +18,8 @@ from numpy.typing import NDArray
 
 from freqid.capture.clock_map import ClockMap
 from freqid.errors import EstimationError
-from freqid.estimate.adequacy import lack_of_fit
+from freqid.estimate.adequacy import direction_told, lack_of_fit, with_direction
+from freqid.estimate.feedthrough import Feedthrough, fit_feedthrough
 from freqid.estimate.frame_grid import FrameGrid
 from freqid.estimate.frequency_response import FrequencyResponse
 from freqid.estimate.local_polynomial import local_polynomial_response
@@ -68,14 +69,19 @@ def identify(run: Run, *, method: Method = "auto") -> Identification:
     motion = estimate_motion(record)
     record, weighted = motion.record, motion.weighted
     response, adequacy, independent = _response(motion)
+    feedthrough = fit_feedthrough(record, weighted)
+    adequacy = with_direction(adequacy, feedthrough)
     covariance = parameter_covariance(weighted)
     caveats = [*record.caveats, *motion.caveats, *response.caveats, *_sign_caveats(record, weighted.fit)]
     if np.isfinite(adequacy.p_value) and not adequacy.adequate:
         better = find_better_structure(response, weighted.fit.parameters.model, use=independent)
-        adequacy = replace(adequacy, better_structure=None if better is None else better.name)
+        told = feedthrough if direction_told(feedthrough) else None
         if response.method == "periodic":
             covariance = covariance * max(1.0, adequacy.statistic / adequacy.degrees_of_freedom)
-        caveats.append(_inadequate(adequacy, better))
+        if told is not None:
+            covariance = covariance + np.outer(told.shift, told.shift)
+        adequacy = replace(adequacy, better_structure=_better_name(better, told))
+        caveats.append(_inadequate(adequacy, better, told))
     if weighted.fit.explained < POORLY_EXPLAINED:
         caveats.append(
             Caveat(
@@ -134,22 +140,36 @@ def _pool_noise(measured: FrequencyResponse, independent: NDArray[np.bool_]) -> 
     return replace(measured, variance=variance, degrees_of_freedom=freedom)
 
 
-def _inadequate(adequacy: Adequacy, better: BetterStructure | None) -> Caveat:
+def _better_name(better: BetterStructure | None, told: Feedthrough | None) -> str | None:
+    if better is not None:
+        return better.name
+    return None if told is None else told.structure
+
+
+def _inadequate(adequacy: Adequacy, better: BetterStructure | None, told: Feedthrough | None) -> Caveat:
     excess = np.sqrt(adequacy.statistic / adequacy.degrees_of_freedom)
-    chance = f"= {adequacy.p_value:.2g}" if adequacy.p_value > 1e-6 else "< 1e-6"
-    hint = "look at the residuals for nonlinearity or further dynamics."
+    chance = f"p = {adequacy.p_value:.2g}" if adequacy.p_value > 1e-6 else "p < 1e-6"
+    size = f"the misfit is {excess:.3g} times what noise alone would give"
+    hint = "look at the residuals for nonlinearity or further dynamics"
+    if told is not None:
+        size = (
+            f"the misfit has the shape that {_a(told.structure)} near {told.corner:.2g} Hz leaves behind, "
+            f"{abs(told.deviation):.3g} standard uncertainties of it"
+        )
     if better is not None:
         hint = (
-            f"a model with {'an' if better.name[0] in 'ae' else 'a'} {better.name} (at {better.frequency:.3g} Hz) "
-            f"does better "
-            f"(information criterion smaller by {better.gained:.3g})."
+            f"a model with {_a(better.name)} (at {better.frequency:.3g} Hz) does better (information criterion smaller "
+            f"by {better.gained:.3g})"
         )
     return Caveat(
         "model_inadequate",
-        f"A second-order model does not describe the response within its noise: the misfit is {excess:.3g} times what "
-        f"noise "
-        f"alone would give (p {chance}). The intervals contain the misfit; {hint}",
+        f"A second-order model does not describe the response within its noise: {size} ({chance}). The intervals "
+        f"contain the misfit; {hint}.",
     )
+
+
+def _a(name: str) -> str:
+    return f"{'an' if name[0] in 'ae' else 'a'} {name}"
 
 
 def _sign_caveats(record: Record, fit: RecordFit) -> list[Caveat]:

@@ -26,19 +26,36 @@ from freqid.estimate.prediction import MotionParameters, predict
 from freqid.estimate.record import Record
 from freqid.estimate.record_fit import RecordFit
 
-__all__ = ["WeightedFit", "covariance_of", "fit_weighted"]
+__all__ = ["AddedColumn", "WeightedFit", "covariance_of", "fit_column", "fit_weighted"]
 
 Floats = NDArray[np.float64]
 ITERATIONS = 4
+MODEL = slice(0, 4)  # the columns of the model's own parameters
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class WeightedFit:
-    """The fit and the covariance (P, P) of its free parameters, numbered as in `fit.prediction.free`."""
+    """The fit and the covariance (P, P) of its free parameters, numbered as in `fit.prediction.free`.
+
+    `noise` is what the covariance rests on; `by_noise` tells whether the fit itself was weighted with it.
+    """
 
     fit: RecordFit
     covariance: Floats
     degrees_of_freedom: float
+    noise: NoiseSpectrum
+    by_noise: bool
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class AddedColumn:
+    """Coefficient of one more column with its standard uncertainty, and the `shift` (P,) it brings to the free
+    parameters."""
+
+    coefficient: float
+    standard_uncertainty: float
+    degrees_of_freedom: float
+    shift: Floats
 
 
 def fit_weighted(record: Record, fit: RecordFit, noise: NoiseSpectrum) -> WeightedFit:
@@ -62,7 +79,7 @@ def fit_weighted(record: Record, fit: RecordFit, noise: NoiseSpectrum) -> Weight
             break
     weighted = _weigh(grid, current.prediction.jacobian, level)
     covariance, degrees = _sandwich(grid, current.prediction.jacobian, weighted, (level, freedom))
-    return WeightedFit(fit=current, covariance=covariance, degrees_of_freedom=degrees)
+    return WeightedFit(fit=current, covariance=covariance, degrees_of_freedom=degrees, noise=noise, by_noise=True)
 
 
 def covariance_of(record: Record, fit: RecordFit) -> WeightedFit:
@@ -72,7 +89,24 @@ def covariance_of(record: Record, fit: RecordFit) -> WeightedFit:
     level, freedom = noise.at(grid.frequency)
     jacobian = fit.prediction.jacobian
     covariance, degrees = _sandwich(grid, jacobian, jacobian, (level, freedom))
-    return WeightedFit(fit=fit, covariance=covariance, degrees_of_freedom=degrees)
+    return WeightedFit(fit=fit, covariance=covariance, degrees_of_freedom=degrees, noise=noise, by_noise=False)
+
+
+def fit_column(record: Record, weighted: WeightedFit, column: Floats) -> AddedColumn:
+    """Fit one more column (N,) to the residual together with all free parameters, weighted as `weighted` was."""
+    grid = FrameGrid.from_stamps(record.stamp)
+    level, freedom = weighted.noise.at(grid.frequency)
+    jacobian = np.column_stack([weighted.fit.prediction.jacobian, column])
+    weighed = _weigh(grid, jacobian, level) if weighted.by_noise else jacobian
+    change = _solve_symmetric(jacobian.T @ weighed, weighed.T @ weighted.fit.residual)
+    last = jacobian.shape[1] - 1
+    covariance, degrees = _sandwich(grid, jacobian, weighed, (level, freedom), judged=slice(last, None))
+    return AddedColumn(
+        coefficient=float(change[-1]),
+        standard_uncertainty=float(np.sqrt(covariance[-1, -1])),
+        degrees_of_freedom=degrees,
+        shift=change[:-1],
+    )
 
 
 def _weigh(grid: FrameGrid, jacobian: Floats, level: Floats) -> Floats:
@@ -80,9 +114,14 @@ def _weigh(grid: FrameGrid, jacobian: Floats, level: Floats) -> Floats:
 
 
 def _sandwich(
-    grid: FrameGrid, jacobian: Floats, weighted: Floats, noise: tuple[Floats, Floats]
+    grid: FrameGrid,
+    jacobian: Floats,
+    weighted: Floats,
+    noise: tuple[Floats, Floats],
+    *,
+    judged: slice = MODEL,
 ) -> tuple[Floats, float]:
-    """Covariance of the parameters and the degrees of freedom of the least certain of its four first variances.
+    """Covariance of the parameters and the degrees of freedom of the least certain of the `judged` variances.
 
     `noise` is the level and its degrees of freedom at every bin. Each variance is a weighted sum of levels; its
     degrees of
@@ -93,7 +132,7 @@ def _sandwich(
     spectrum = grid.spectrum(weighted) @ outer
     power = (level * grid.multiplicity)[:, None]
     covariance = np.real(np.conj(spectrum).T @ (power * spectrum))
-    share = power * np.abs(spectrum[:, :4]) ** 2
+    share = power * np.abs(spectrum[:, judged]) ** 2
     width = max(int(np.median(freedom)) // 2, 1)
     pooled = np.add.reduceat(share, np.arange(0, len(share), width), axis=0)
     weakest = np.minimum.reduceat(freedom, np.arange(0, len(freedom), width))
@@ -104,6 +143,11 @@ def _sandwich(
 def _solve(normal: Floats, right: Floats) -> Floats:
     scale = 1 / np.sqrt(np.diag(normal))
     return np.asarray(scale * np.linalg.solve(normal * np.outer(scale, scale), scale * right))
+
+
+def _solve_symmetric(normal: Floats, right: Floats) -> Floats:
+    """As `_solve`, with a normal matrix that may be all but singular."""
+    return np.asarray(_inverse(normal) @ right)
 
 
 def _inverse(normal: Floats) -> Floats:
