@@ -60,6 +60,13 @@ def held_equivalent(
     ------
     ValueError
         The sample rate is not positive, or the delay is negative (the angle would come before the voltage).
+
+    Examples
+    --------
+    >>> vane = SecondOrder(gain=12.0, natural_frequency=3.0, damping_ratio=0.12, delay=0.02)
+    >>> at_controller = held_equivalent(vane, sample_rate=200.0)
+    >>> at_controller.delay_samples, [round(float(a), 5) for a in at_controller.denominator]
+    (4, [1.0, -1.96886, 0.97763])
     """
     if not sample_rate > 0 or not math.isfinite(sample_rate):
         raise ValueError(f"the controller's rate must be positive, not {sample_rate=} Hz")

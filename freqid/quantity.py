@@ -43,6 +43,14 @@ class Quantity:
     """A number with its unit and its uncertainty.
 
     `interval_95` is (low, high) and always holds `value`.
+
+    Examples
+    --------
+    >>> damping = Quantity.normal(0.118231, "1", 0.000412)
+    >>> print(damping)
+    0.11823 ± 0.00081
+    >>> damping.as_json()["unit"]
+    '1'
     """
 
     value: float

@@ -30,6 +30,12 @@ class SecondOrder:
     """Gain in angle unit per V, natural frequency in Hz, damping ratio, delay in s.
 
     Raises ValueError where natural frequency or damping ratio is not positive.
+
+    Examples
+    --------
+    >>> vane = SecondOrder(gain=12.0, natural_frequency=3.0, damping_ratio=0.12, delay=0.02)
+    >>> [round(float(abs(gain)), 3) for gain in vane.response([0.0, 3.0])]  # at rest, and at the natural frequency
+    [12.0, 50.0]
     """
 
     gain: float
