@@ -1,9 +1,12 @@
-"""What do several runs say together? The generalised mean of their parameters, and whether they agree.
+"""What do several runs say together? Their mean, whether they agree, and how they depend on amplitude.
 
 Every run is estimated alone; the parameter vectors are averaged with the inverse of their covariances. Where
-they scatter more than their uncertainties allow (chi-square at 5 %), the covariance is enlarged by that ratio and a
-caveat says so.
+they scatter more than their uncertainties allow (chi-square at 5 %), the uncertainties are enlarged by that ratio, from
+five runs on each parameter by its own, and rest on the degrees of freedom of that scatter; a caveat says so.
 On separate clocks each run has its own offset: then the delay is not averaged and stays that of the last run.
+Runs of different amplitude (rms voltages more than 20 % apart) are first held against each other
+(`amplitude_dependence`);
+where the rig depends on amplitude, only the runs at the amplitude of the last one are averaged.
 Source: JCGM 102:2011, and the Birge ratio (R. T. Birge, Phys. Rev. 40 (1932) 207) for the enlargement.
 """
 
@@ -13,62 +16,137 @@ from collections.abc import Sequence
 from dataclasses import replace
 
 import numpy as np
+from numpy.typing import NDArray
 
 from freqid.errors import EstimationError
+from freqid.estimate.adequacy import lack_of_fit
+from freqid.estimate.amplitude_dependence import (
+    APART,
+    DEPENDENT,
+    AmplitudeDependence,
+    AmplitudePoint,
+    amplitude_dependence,
+)
+from freqid.estimate.distortion_summary import distortion_caveats, summarize_realisations
+from freqid.estimate.frequency_response import FrequencyResponse
 from freqid.estimate.identification import Identification
+from freqid.estimate.measured_amplitude import mean_amplitude
+from freqid.estimate.model import Adequacy, IdentifiedModel
+from freqid.estimate.realisations import mean_response
 from freqid.quantity import Caveat
 from freqid.second_order import SecondOrder
 
 __all__ = ["combine"]
 
+Floats = NDArray[np.float64]
+ENOUGH = 5  # runs from which on each parameter's own scatter counts
+
 
 def combine(found: Sequence[Identification]) -> Identification:
-    """One identification from several runs of one rig; the response shown is that of the last run.
+    """One identification from several runs of one rig; the record shown is that of the last run.
 
     Raises EstimationError where the runs are in different angle units, or there is none.
     """
     if not found:
         raise EstimationError("no complete run to combine")
-    last = found[-1]
     if len(found) == 1:
-        return last
+        return found[0]
     if len({one.model.angle_unit for one in found}) > 1:
         raise EstimationError("the runs are in different angle units: import them with the same rig sheet")
-    common = all(one.model.clock.offset_known and not one.model.undetermined for one in found)
+    dependence = _dependence([one.model for one in found])
+    alike = list(found)
+    if dependence is not None and dependence.significant:
+        alike = [one for one in found if _same_amplitude(one.model, found[-1].model)]
+    result = _mean(alike) if len(alike) > 1 else alike[0]
+    told = () if dependence is None else dependence.caveats(result.model.angle_unit)
+    model = replace(result.model, dependence=dependence, caveats=(*result.model.caveats, *told))
+    return replace(result, model=model)
+
+
+def _same_amplitude(one: IdentifiedModel, other: IdentifiedModel) -> bool:
+    if one.amplitude is None or other.amplitude is None:
+        return True
+    first, second = one.amplitude.rms_voltage, other.amplitude.rms_voltage
+    return max(first, second) <= APART * min(first, second)
+
+
+def _dependence(models: Sequence[IdentifiedModel]) -> AmplitudeDependence | None:
+    points = []
+    for model in models:
+        quantities = {name: q for name in DEPENDENT if (q := model.parameters[name]) is not None}
+        if model.amplitude is None or len(quantities) < len(DEPENDENT):
+            return None
+        points.append(AmplitudePoint(run="+".join(model.runs), amplitude=model.amplitude, quantities=quantities))
+    freedom = min(model.degrees_of_freedom for model in models)
+    return amplitude_dependence(points, angle_unit=models[0].angle_unit, degrees_of_freedom=freedom)
+
+
+def _mean(found: Sequence[Identification]) -> Identification:
+    """The generalised mean of at least two runs."""
+    last, models = found[-1].model, [one.model for one in found]
+    common = all(model.clock.offset_known and not model.undetermined for model in models)
     kept = [0, 1, 2, 3] if common else [0, 1, 2]
-    values = np.array([one.model.model.vector[kept] for one in found])
-    weights = [np.linalg.inv(one.model.covariance[np.ix_(kept, kept)]) for one in found]
+    values = np.array([model.model.vector[kept] for model in models])
+    weights = [np.asarray(np.linalg.inv(model.covariance[np.ix_(kept, kept)])) for model in models]
     covariance = np.linalg.inv(np.sum(weights, axis=0))
     mean = covariance @ np.sum([w @ v for w, v in zip(weights, values, strict=True)], axis=0)
-    ratio, caveat = _scatter(values - mean, weights)
-    vector, joint = last.model.model.vector, last.model.covariance.copy()
+    covariance, freedom, caveat = _scattered(values - mean, weights, covariance)
+    vector, joint = last.model.vector, last.covariance.copy()
     vector[kept] = mean
     joint[:3, 3] = joint[3, :3] = 0.0
-    joint[np.ix_(kept, kept)] = covariance * ratio
-    model = replace(
-        last.model,
-        model=SecondOrder.from_vector(vector),
-        covariance=joint,
-        degrees_of_freedom=float(sum(one.model.degrees_of_freedom for one in found)),
-        runs=tuple(name for one in found for name in one.model.runs),
-        caveats=(*last.model.caveats, *caveat),
+    joint[np.ix_(kept, kept)] = covariance
+    fitted = SecondOrder.from_vector(vector)
+    combined = mean_response(
+        [one.response for one in found], [model.model for model in models], common_clock=last.clock.offset_known
     )
-    return replace(last, model=model)
+    scatter = summarize_realisations(combined, fitted.natural_frequency)
+    amplitudes = [model.amplitude for model in models if model.amplitude is not None]
+    model = replace(
+        last,
+        model=fitted,
+        covariance=joint,
+        degrees_of_freedom=sum(one.degrees_of_freedom for one in models) if freedom is None else freedom,
+        adequacy=_adequacy(combined.response, fitted, models),
+        amplitude=mean_amplitude(amplitudes) if amplitudes else None,
+        distortion=(*last.distortion, *scatter),
+        runs=tuple(name for one in models for name in one.runs),
+        caveats=(*last.caveats, *distortion_caveats(scatter), *caveat),
+    )
+    return replace(found[-1], model=model, response=combined.response)
 
 
-def _scatter(deviation: np.ndarray, weights: list[np.ndarray]) -> tuple[float, list[Caveat]]:
-    from scipy.stats import chi2
+def _adequacy(response: FrequencyResponse, model: SecondOrder, models: Sequence[IdentifiedModel]) -> Adequacy:
+    """The test against the mean of periodic responses; else that of the run that the model describes worst."""
+    worst = min((one.adequacy for one in models), key=lambda one: one.p_value if one.p_value == one.p_value else 2.0)
+    if response.method != "periodic":
+        return worst
+    freedom = float(np.sum(response.degrees_of_freedom))
+    return replace(
+        lack_of_fit(response, model, noise_freedom=freedom), better_structure=worst.better_structure
+    )
+
+
+def _scattered(
+    deviation: Floats, weights: Sequence[Floats], covariance: Floats
+) -> tuple[Floats, float | None, list[Caveat]]:
+    """Covariance of the mean, enlarged where the runs scatter more than they claim; then its degrees of freedom."""
+    from scipy.special import chdtrc
 
     statistic = float(sum(d @ w @ d for d, w in zip(deviation, weights, strict=True)))
-    degrees = deviation.size - deviation.shape[1]
-    if chi2.sf(statistic, degrees) >= 0.05:
-        return 1.0, []
-    ratio = statistic / degrees
-    return ratio, [
+    count, width = deviation.shape
+    degrees = (count - 1) * width
+    if chdtrc(degrees, statistic) >= 0.05:
+        return covariance, None, []
+    ratio, freedom = np.full(width, statistic / degrees), float(degrees)
+    if count >= ENOUGH:
+        own = np.array([np.diag(np.linalg.inv(weight)) for weight in weights])
+        ratio, freedom = np.maximum(np.sum(deviation**2 / own, axis=0) / (count - 1), 1.0), float(count - 1)
+    enlarged = covariance * np.sqrt(np.outer(ratio, ratio))
+    return enlarged, freedom, [
         Caveat(
             "runs_differ",
-            f"The runs scatter {np.sqrt(ratio):.2g} times more than their uncertainties allow; the intervals were "
-            f"widened by "
-            "that factor. Something changes from run to run: amplitude, temperature, operating point.",
+            f"The runs scatter {np.sqrt(statistic / degrees):.2g} times more than their uncertainties allow; the "
+            "intervals were widened accordingly. Something changes from run to run: the phases of the excitation and "
+            "with them nonlinear distortion, temperature, operating point.",
         )
     ]

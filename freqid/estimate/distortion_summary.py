@@ -3,7 +3,8 @@
 Powers are averaged over the detection lines within half an octave of the natural frequency (at least the three
 nearest). `excess` is the rms distortion of a line over its rms noise, `relative` the same over the linear answer there.
 The distortion is called significant where noise alone would give as much power in less than 1 of 200 records: the
-mean of |A|^2 / s^2 over n lines is Fisher's F with 2 n and v degrees of freedom.
+mean of |A|^2 / s^2 over n lines is Fisher's F with 2 n and v degrees of freedom. From several realisations the
+stochastic distortion of a single run is read in the same way at the excited lines.
 
 Source: Pintelon & Schoukens, *System Identification*, 2nd ed. 2012, ch. 4.
 """
@@ -15,12 +16,15 @@ from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from freqid.estimate.distortion import EVEN, ODD, UNDIVIDED, DistortionLevels
+from freqid.estimate.realisations import CombinedResponse
 from freqid.quantity import Caveat, Quantity
 
-__all__ = ["DistortionSummary", "distortion_caveats", "summarize_distortion"]
+__all__ = ["DistortionSummary", "distortion_caveats", "summarize_distortion", "summarize_realisations"]
 
+Floats = NDArray[np.float64]
 REACH = 0.5  # octaves either side of the natural frequency
 FEWEST = 3
 SIGNIFICANT = 0.005
@@ -29,10 +33,11 @@ NAMES = {ODD: "odd", EVEN: "even", UNDIVIDED: "all"}
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class DistortionSummary:
-    """Distortion of one kind ("odd", "even", or "all" where they cannot be told apart) around the resonance.
+    """Distortion of one kind around the resonance.
 
-    `amplitude` is that of one line (rms times sqrt 2, angle unit), `band` the lowest and the highest of the `lines`
-    detection lines looked at, Hz.
+    `kind` is "odd", "even", "all" (where even harmonics are excited too and the two cannot be told apart) or
+    "stochastic" (from the scatter of several realisations). `amplitude` is that of one line (rms times sqrt 2, angle
+    unit), `band` the lowest and the highest of the `lines` lines looked at, Hz.
     """
 
     kind: str
@@ -94,7 +99,7 @@ def distortion_caveats(found: tuple[DistortionSummary, ...]) -> list[Caveat]:
         Caveat(
             f"distortion_{one.kind}",
             f"{_name(one)} exceeds the noise {one.excess.value:.2g} times around the resonance "
-            f"({_decibels(one.excess.value)}; from {one.band[0]:.3g} to {one.band[1]:.3g} Hz, {one.lines} detection "
+            f"({_decibels(one.excess.value)}; from {one.band[0]:.3g} to {one.band[1]:.3g} Hz, {one.lines} "
             f"lines); it is {100 * one.relative.value:.2g} % of the linear answer there.",
         )
         for one in found
@@ -103,6 +108,8 @@ def distortion_caveats(found: tuple[DistortionSummary, ...]) -> list[Caveat]:
 
 
 def _name(one: DistortionSummary) -> str:
+    if one.kind == "stochastic":
+        return "Nonlinear distortion that changes with the phases of the excitation"
     return "Nonlinear distortion" if one.kind == "all" else f"{one.kind.capitalize()} nonlinear distortion"
 
 
@@ -113,9 +120,7 @@ def _decibels(ratio: float) -> str:
 def _summary(lines: DistortionLevels, kind: str, natural_frequency: float, angle_unit: str) -> DistortionSummary:
     from scipy.special import fdtrc
 
-    octaves = np.abs(np.log2(lines.frequency / natural_frequency))
-    nearest = np.argsort(octaves, kind="stable")[: max(int(np.sum(octaves <= REACH)), FEWEST)]
-    near = lines.keep(np.sort(nearest))
+    near = lines.keep(_around(lines.frequency, natural_frequency))
     count, noise = len(near.frequency), float(np.mean(near.noise**2))
     freedom = float(np.min(near.noise_freedom))
     power = float(np.mean(near.power))
@@ -140,3 +145,40 @@ def _root(power: float, uncertainty: float, unit: str) -> Quantity:
     low, high = (math.sqrt(max(power + sign * 1.96 * uncertainty, 0.0)) for sign in (-1, 1))
     high = max(high, value)
     return Quantity(value=value, unit=unit, standard_uncertainty=(high - low) / 3.92, interval_95=(low, high))
+
+
+def summarize_realisations(combined: CombinedResponse, natural_frequency: float) -> tuple[DistortionSummary, ...]:
+    """The stochastic distortion of a single run from the scatter of several; () where they do not tell it.
+
+    That takes lines, and at least two runs that were driven with different voltages.
+    """
+    from scipy.special import fdtrc
+
+    mean, count = combined.response, combined.realisations
+    if count < 2 or mean.method != "periodic":
+        return ()
+    near = _around(mean.frequency, natural_frequency)
+    recorded = mean.noise[near] ** 2 / mean.noise_variance[near]
+    noise = count * float(np.mean(mean.noise[near] ** 2))
+    total = count * float(np.mean(mean.variance[near] * recorded))
+    linear = float(np.mean((mean.gain[near] * mean.input_amplitude[near]) ** 2))
+    freedom = 2.0 * (count - 1) * len(near)
+    power, uncertainty = total - noise, math.sqrt(2 / freedom) * total
+    return (
+        DistortionSummary(
+            kind="stochastic",
+            amplitude=_root(power, uncertainty, mean.angle_unit),
+            excess=_root(power / noise, uncertainty / noise, "1"),
+            relative=_root(power / linear, uncertainty / linear, "1"),
+            p_value=float(fdtrc(freedom, float(np.min(combined.noise_freedom[near])), total / noise)),
+            lines=len(near),
+            band=(float(mean.frequency[near[0]]), float(mean.frequency[near[-1]])),
+        ),
+    )
+
+
+def _around(frequency: Floats, natural_frequency: float) -> NDArray[np.intp]:
+    """Numbers of the lines within `REACH` of the natural frequency, at least the `FEWEST` nearest."""
+    octaves = np.abs(np.log2(frequency / natural_frequency))
+    nearest = np.argsort(octaves, kind="stable")[: max(int(np.sum(octaves <= REACH)), FEWEST)]
+    return np.sort(nearest)

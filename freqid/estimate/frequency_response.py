@@ -8,7 +8,7 @@ Source: Pintelon & Schoukens, *System Identification*, 2nd ed. 2012, ch. 2 and 4
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
@@ -25,9 +25,11 @@ class FrequencyResponse:
     """Response at `frequency` (F,), ascending; all arrays share that shape.
 
     `noise` is the amplitude of a sine as large as the noise of one line (rms times sqrt 2, angle unit),
-    `input_amplitude` that
-    of the voltage at the line; `coherence` is the share of the recorded power at the line that the input explains.
-    `degrees_of_freedom` belongs to `variance`. `method` is "periodic" or "local-polynomial".
+    `input_amplitude` that of the voltage at the line and `input_phase` its phase on the input's clock (None for a
+    voltage without lines); `coherence` is the share of the recorded power at the line that the input explains.
+    `nonlinear` is the amplitude of the nonlinear distortion that comes and goes with the phases of the excitation and
+    that `variance` contains beside the noise, None where none is known. `degrees_of_freedom` belongs to `variance`.
+    `method` is "periodic" or "local-polynomial".
     """
 
     frequency: Floats = in_unit("Hz")
@@ -37,6 +39,8 @@ class FrequencyResponse:
     noise: Floats = in_unit("angle_unit")
     input_amplitude: Floats = in_unit("V")
     degrees_of_freedom: Floats = in_unit("1")
+    nonlinear: Floats | None = field(default=None, metadata={"unit": "angle_unit"})
+    input_phase: Floats | None = field(default=None, metadata={"unit": "rad"})
     angle_unit: str
     method: str
     caveats: tuple[Caveat, ...] = ()
@@ -66,6 +70,13 @@ class FrequencyResponse:
     def coverage(self) -> Floats:
         """Factor from standard uncertainty to half a 95 % interval, line by line (Student's t)."""
         return np.array([coverage_factor(float(v)) for v in self.degrees_of_freedom])
+
+    @property
+    def noise_variance(self) -> Floats:
+        """The part of `variance` that is noise: less the nonlinear distortion, where that is known."""
+        if self.nonlinear is None:
+            return self.variance
+        return np.asarray(self.variance * self.noise**2 / np.maximum(self.noise**2 + self.nonlinear**2, 1e-300))
 
     def without_delay(self, delay: float) -> NDArray[np.complex128]:
         """Response with a delay of `delay` seconds taken out, for showing the phase of a lagging log."""

@@ -7,7 +7,7 @@ with `degrees_of_freedom` of the noise estimate.
 from __future__ import annotations
 
 from dataclasses import dataclass, field
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,6 +17,11 @@ from freqid.derived import derived_quantities
 from freqid.parameter_quantities import quantities_of
 from freqid.quantity import Caveat, Quantity
 from freqid.second_order import SecondOrder
+
+if TYPE_CHECKING:
+    from freqid.estimate.amplitude_dependence import AmplitudeDependence
+    from freqid.estimate.distortion_summary import DistortionSummary
+    from freqid.estimate.measured_amplitude import MeasuredAmplitude
 
 __all__ = ["Adequacy", "IdentifiedModel"]
 
@@ -42,8 +47,10 @@ class Adequacy:
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class IdentifiedModel:
-    """Model, joint covariance (4, 4) in `PARAMETER_ORDER` (gain in angle unit per V, Hz, 1, s), and what it rests
-    on.
+    """Model, joint covariance (4, 4) in `PARAMETER_ORDER` (gain in angle unit per V, Hz, 1, s), and what it rests on.
+
+    `amplitude` is that of the measurement, `dependence` how several runs depend on it, `distortion` what is known of
+    nonlinear distortion around the resonance.
     """
 
     model: SecondOrder
@@ -57,6 +64,9 @@ class IdentifiedModel:
     undetermined: tuple[str, ...] = ()
     runs: tuple[str, ...] = ()
     settings: dict[str, Any] = field(default_factory=dict)
+    amplitude: MeasuredAmplitude | None = None
+    dependence: AmplitudeDependence | None = None
+    distortion: tuple[DistortionSummary, ...] = ()
 
     @property
     def parameters(self) -> dict[str, Quantity | None]:

@@ -212,6 +212,7 @@ def periodic_response(
         coherence=signal**2 / (signal**2 + lines.periods * variance_of_line),
         noise=np.sqrt(variance_of_line),
         input_amplitude=np.abs(drive),
+        input_phase=np.angle(drive),
         degrees_of_freedom=freedom,
         angle_unit=record.angle_unit,
         method="periodic",
