@@ -23,7 +23,15 @@ from excitation.errors import ExcitationError
 from excitation.profile import Floats
 from excitation.rig_model import Complexes
 
-__all__ = ["crest_factor_of", "lower_peak", "multisine_waveform", "random_phases", "schroeder_phases"]
+__all__ = [
+    "crest_factor_of",
+    "largest_peak",
+    "logarithmic_norm",
+    "lower_peak",
+    "multisine_waveform",
+    "random_phases",
+    "schroeder_phases",
+]
 
 _WORK = 6e7  # points times iterations: some seconds, however many lines
 _NEGLIGIBLE = 1e-15  # a power of the waveform below this is nothing, and may be slow to compute
@@ -134,7 +142,7 @@ def _descend(
 
     n_samples = 1 << math.ceil(math.log2(effort.oversampling * int(harmonics.max())))
     iterations = int(np.clip(_WORK / (n_samples * len(signals) * len(effort.powers)), 3, effort.iterations))
-    best, best_peak = start, _peak(start, harmonics, signals, n_samples)
+    best, best_peak = start, largest_peak(signals * np.exp(1j * start), harmonics, n_samples)
     current = best
     for power in effort.powers:
         result = minimize(
@@ -146,35 +154,48 @@ def _descend(
             options={"maxiter": iterations, "ftol": 1e-6},
         )
         current = np.asarray(result.x)
-        peak = _peak(current, harmonics, signals, n_samples)
+        peak = largest_peak(signals * np.exp(1j * current), harmonics, n_samples)
         if peak < best_peak:
             best, best_peak = current, peak
     return best, best_peak
 
 
-def _waveforms(phases: Floats, harmonics: NDArray[np.int64], signals: Complexes, n_samples: int) -> Floats:
-    spectrum = np.zeros((len(signals), n_samples // 2 + 1), dtype=np.complex128)
-    spectrum[:, harmonics] = signals * np.exp(1j * phases) * (n_samples / 2)
-    return np.asarray(np.fft.irfft(spectrum, n_samples, axis=1))
+def largest_peak(signals: Complexes, harmonics: NDArray[np.int64], n_samples: int) -> float:
+    """Largest magnitude among the signals with the complex amplitudes (S, F), over `n_samples` points of a period."""
+    return float(np.max(np.abs(_waveforms(signals, harmonics, n_samples))))
 
 
-def _peak(phases: Floats, harmonics: NDArray[np.int64], signals: Complexes, n_samples: int) -> float:
-    return float(np.max(np.abs(_waveforms(phases, harmonics, signals, n_samples))))
+def logarithmic_norm(
+    signals: Complexes, power: int, harmonics: NDArray[np.int64], n_samples: int
+) -> tuple[float, Complexes]:
+    """Logarithm of the L_p norm of all signals (S, F) together, and its derivative to each line, (F,) complex.
 
-
-def _log_norm(
-    phases: Floats, power: int, harmonics: NDArray[np.int64], signals: Complexes, n_samples: int
-) -> tuple[float, Floats]:
-    """Logarithm of the L_p norm of all signals together, and its gradient in the phases."""
-    waveform = _waveforms(phases, harmonics, signals, n_samples)
+    The real part is the derivative to the logarithm of the line's size, common to all signals; minus the imaginary
+    part that to its phase. p is a power of two.
+    """
+    waveform = _waveforms(signals, harmonics, n_samples)
     peak = np.max(np.abs(waveform))
     relative = waveform / peak
     odd_power = _odd_power(relative, power)
     total = float(np.sum(odd_power * relative))
     # d x[i] / d phi_k = Re(j c_k exp(j(2 pi n_k i / N + phi_k))): one transform for all lines
     transform = np.fft.rfft(odd_power, axis=1)[:, harmonics]
-    slope = np.sum(np.real(1j * signals * np.exp(1j * phases) * np.conj(transform)), axis=0)
-    return math.log(peak) + math.log(total) / power, slope / (peak * total)
+    by_line = np.sum(signals * np.conj(transform), axis=0) / (peak * total)
+    return math.log(peak) + math.log(total) / power, np.asarray(by_line)
+
+
+def _waveforms(signals: Complexes, harmonics: NDArray[np.int64], n_samples: int) -> Floats:
+    spectrum = np.zeros((len(signals), n_samples // 2 + 1), dtype=np.complex128)
+    spectrum[:, harmonics] = signals * (n_samples / 2)
+    return np.asarray(np.fft.irfft(spectrum, n_samples, axis=1))
+
+
+def _log_norm(
+    phases: Floats, power: int, harmonics: NDArray[np.int64], signals: Complexes, n_samples: int
+) -> tuple[float, Floats]:
+    """Logarithm of the L_p norm of all signals together, and its gradient in the phases."""
+    norm, by_line = logarithmic_norm(signals * np.exp(1j * phases), power, harmonics, n_samples)
+    return norm, -by_line.imag
 
 
 def _odd_power(relative: Floats, power: int) -> Floats:

@@ -26,7 +26,7 @@ from numpy.typing import NDArray
 
 from excitation.errors import ExcitationError
 from excitation.hdf5_file import file_sha256, write_hdf5
-from excitation.profile import Profile
+from excitation.profile import Floats, Profile
 from excitation.quantisation import CountScale, quantise
 
 __all__ = ["CSV_HEADER", "FORMAT", "FORMAT_VERSION", "ProfileFiles", "write_profile"]
@@ -92,7 +92,7 @@ def write_profile(
         _write_samples(stage, names, rounded, counts)
         write_hdf5(
             stage / names["h5"],
-            datasets={"voltage": (rounded.voltage, "V"), "lines": (rounded.lines, "Hz")},
+            datasets=_datasets(rounded),
             attributes={**stamp, "design": json.dumps(_finite_terms(_design(rounded, scale, full_scale))[0])},
         )
         hashes = {names[kind]: file_sha256(stage / names[kind]) for kind in ("h5", "csv", "wav")}
@@ -103,6 +103,16 @@ def write_profile(
     return ProfileFiles(
         profile=rounded, hdf5=paths["h5"], csv=paths["csv"], wav=paths["wav"], json=paths["json"]
     )
+
+
+def _datasets(profile: Profile) -> dict[str, tuple[Floats, str]]:
+    even, odd = profile.detection_lines
+    return {
+        "voltage": (profile.voltage, "V"),
+        "lines": (profile.lines, "Hz"),
+        "even_detection_lines": (even, "Hz"),
+        "odd_detection_lines": (odd, "Hz"),
+    }
 
 
 def _finite_terms(value: Any, place: str = "") -> tuple[Any, list[str]]:
@@ -151,6 +161,7 @@ def _design(profile: Profile, scale: CountScale, full_scale: float) -> dict[str,
         "steady_stop": profile.steady_stop,
         "n_periods": profile.n_periods,
         "lines": profile.lines,
+        "detection_lines": dict(zip(("even", "odd"), profile.detection_lines, strict=True)),
         "seed": profile.seed,
         "full_scale": full_scale,
         "wav_reference_voltage": scale.reference_voltage,

@@ -12,6 +12,7 @@ chapters 2 and 5.
 
 from __future__ import annotations
 
+from collections.abc import Iterator, Sequence
 from dataclasses import replace
 
 import numpy as np
@@ -19,16 +20,19 @@ import numpy as np
 from excitation.amplitude import scaled_to_limits
 from excitation.crest_factor import lower_peak, multisine_waveform, random_phases, schroeder_phases
 from excitation.errors import ExcitationError
+from excitation.information_criterion import LineInformation
+from excitation.joint_descent import PeakLimits, lower_jointly
 from excitation.multisine_layout import MultisineLayout, MultisineSettings, lay_out_multisine
-from excitation.power_allocation import informative_amplitudes, logarithmic_variance
+from excitation.power_allocation import informative_amplitudes
 from excitation.profile import Floats, Profile
-from excitation.rig_model import Complexes, response_of
+from excitation.rig_model import Complexes, RigModel, response_of
 from excitation.swing import hold_response, worst_swing
 from excitation.timing import fade_in
 
 __all__ = ["design_multisine"]
 
-_ROUNDS = (6, 20)  # of the allocation: smooth, and close to what smooth phases still allow
+_ROUNDS = (0, 6)  # of the allocation, for the starts of the descent
+_DISTURBANCE = 0.3  # rad rms, of Schroeder's phases: another one for each start and seed
 _ONSETS = 16  # places of the period tried to begin with
 _ONSET_POINTS = 16  # per period of the highest line, while these are compared
 _RIGS_WEIGHED = 9  # whose angle the phases take into account
@@ -45,18 +49,18 @@ def design_multisine(settings: MultisineSettings) -> Profile:
         The amplitude asked for passes a limit.
     """
     layout = lay_out_multisine(settings)
-    designs = [_with_amplitudes(settings, layout, amplitudes) for amplitudes in _amplitudes_to_try(settings, layout)]
-    if len(designs) == 1:
-        return designs[0]
-    return min(designs, key=lambda profile: _uncertainty(profile, layout, settings))
+    if settings.power == "flat" or not settings.rigs or settings.line_amplitudes is not None:
+        amplitudes = _given_amplitudes(settings, layout.lines.size)
+        phases = _choose_phases(settings, layout, amplitudes)
+        return _with_lines(settings, layout, amplitudes * np.exp(1j * phases))
+    information = LineInformation(layout.lines, _rigs_weighed(settings))
+    designs = [_with_lines(settings, layout, lines) for lines in _informative_lines(settings, layout, information)]
+    return min(designs, key=lambda profile: _told_by(profile, layout, information))
 
 
-def _with_amplitudes(settings: MultisineSettings, layout: MultisineLayout, amplitudes: Floats) -> Profile:
-    """The multisine with the given relative amplitudes (F,), as large as allowed."""
-    phases = _choose_phases(settings, layout, amplitudes)
-    period = multisine_waveform(
-        amplitudes * np.exp(1j * phases), harmonics=layout.harmonics, n_samples=layout.period_samples
-    )
+def _with_lines(settings: MultisineSettings, layout: MultisineLayout, lines: Complexes) -> Profile:
+    """The multisine with the given complex amplitudes (F,), as large as allowed."""
+    period = multisine_waveform(lines, harmonics=layout.harmonics, n_samples=layout.period_samples)
     if settings.phases == "low-peak" and settings.rigs:
         period = np.roll(period, -_quietest_onset(period, layout, settings))
     unscaled = Profile(
@@ -78,26 +82,32 @@ def _with_amplitudes(settings: MultisineSettings, layout: MultisineLayout, ampli
     )
 
 
-def _amplitudes_to_try(settings: MultisineSettings, layout: MultisineLayout) -> list[Floats]:
-    """Relative amplitudes of the lines, (F,) each: which is best shows once they have phases."""
-    n_lines = layout.lines.size
-    if settings.line_amplitudes is not None:
-        return [_given_amplitudes(settings, n_lines)]
-    if settings.power == "flat" or not settings.rigs:
-        return [np.ones(n_lines)]
-    costs = np.abs(_limited_signals(settings, layout, np.ones(n_lines))) ** 2
-    rigs = settings.rigs[:_RIGS_WEIGHED]
-    return [informative_amplitudes(layout.lines, rigs, costs=costs, rounds=rounds) for rounds in _ROUNDS]
+def _informative_lines(
+    settings: MultisineSettings, layout: MultisineLayout, information: LineInformation
+) -> Iterator[Complexes]:
+    """Complex amplitudes (F,) to choose from: which is best shows once the ramps are there."""
+    rng = np.random.default_rng([settings.seed, 0])
+    signals = _limited_signals(settings, layout)
+    for rounds in _ROUNDS:
+        amplitudes = informative_amplitudes(information, costs=np.abs(signals) ** 2, rounds=rounds)
+        if settings.phases == "low-peak":
+            phases = schroeder_phases(amplitudes) + rng.normal(0.0, _DISTURBANCE, amplitudes.size)
+            limits = PeakLimits(signals=signals, harmonics=layout.harmonics)
+            yield lower_jointly(amplitudes * np.exp(1j * phases), limits=limits, information=information)
+        else:
+            yield amplitudes * np.exp(1j * _choose_phases(settings, layout, amplitudes))
 
 
-def _uncertainty(profile: Profile, layout: MultisineLayout, settings: MultisineSettings) -> float:
-    """What the allocation minimises, at the amplitudes that the limits let through."""
+def _told_by(profile: Profile, layout: MultisineLayout, information: LineInformation) -> float:
+    """What the design minimises, at the amplitudes that the limits let through."""
     period = profile.voltage[profile.steady_start : profile.steady_start + layout.period_samples] - profile.bias
     amplitudes = np.abs(np.fft.rfft(period))[layout.harmonics] * (2 / period.size)
-    return logarithmic_variance(amplitudes, layout.lines, settings.rigs[:_RIGS_WEIGHED])
+    return information.criterion(amplitudes**2)
 
 
 def _given_amplitudes(settings: MultisineSettings, n_lines: int) -> Floats:
+    if settings.line_amplitudes is None:
+        return np.ones(n_lines)
     amplitudes = np.asarray(settings.line_amplitudes, dtype=np.float64)
     if amplitudes.shape != (n_lines,):
         raise ExcitationError(
@@ -114,19 +124,27 @@ def _choose_phases(settings: MultisineSettings, layout: MultisineLayout, amplitu
     phases = random_phases(layout.lines.size, rng=np.random.default_rng([settings.seed, 0]))
     if settings.phases == "random":
         return phases
-    return lower_peak(phases, harmonics=layout.harmonics, signals=_limited_signals(settings, layout, amplitudes))
+    signals = amplitudes * _limited_signals(settings, layout)
+    return lower_peak(phases, harmonics=layout.harmonics, signals=signals)
 
 
-def _limited_signals(settings: MultisineSettings, layout: MultisineLayout, amplitudes: Floats) -> Complexes:
-    """Voltage, its slope and the angle of each rig, all in units of their limits, (S, F)."""
+def _limited_signals(settings: MultisineSettings, layout: MultisineLayout) -> Complexes:
+    """Voltage, its slope where it can bind and the angle of each rig, for 1 V, in units of their limits, (S, F)."""
     limits, lines = settings.limits, layout.lines
     held = hold_response(lines, step=1 / settings.sample_rate, hold=settings.hold)
-    angles = [
-        response_of(rig, lines) * held / (settings.margin * limits.angle) for rig in settings.rigs[:_RIGS_WEIGHED]
+    signals: list[Complexes] = [
+        response_of(rig, lines) * held / (settings.margin * limits.angle) for rig in _rigs_weighed(settings)
     ]
-    voltage = np.full(lines.size, 1 / (limits.voltage - abs(limits.bias)))
-    slope = 2j * np.pi * lines / limits.slew_rate
-    return np.asarray(amplitudes * np.array([voltage, slope, *angles]), dtype=np.complex128)
+    room = limits.voltage - abs(limits.bias)
+    signals.append(np.full(lines.size, 1 / room, dtype=np.complex128))
+    # a signal within ±V of frequencies up to f is nowhere steeper than 2 pi f V (S. Bernstein)
+    if 2 * np.pi * lines[-1] * room > limits.slew_rate:
+        signals.append(np.asarray(2j * np.pi * lines / limits.slew_rate, dtype=np.complex128))
+    return np.array(signals)
+
+
+def _rigs_weighed(settings: MultisineSettings) -> Sequence[RigModel]:
+    return settings.rigs[:_RIGS_WEIGHED]
 
 
 def _quietest_onset(period: Floats, layout: MultisineLayout, settings: MultisineSettings) -> int:
@@ -146,7 +164,7 @@ def _quietest_onset(period: Floats, layout: MultisineLayout, settings: Multisine
         departure = _with_ramps(np.roll(coarse, -round(n_coarse * place / _ONSETS)), short)
         rate = settings.sample_rate * part
         profile = Profile(voltage=departure, sample_rate=rate, hold="smooth", bias=0.0, kind="multisine")
-        return worst_swing(profile, settings.rigs[:_RIGS_WEIGHED])
+        return worst_swing(profile, _rigs_weighed(settings))
 
     return layout.period_samples * min(range(_ONSETS), key=swing) // _ONSETS
 

@@ -1,8 +1,10 @@
 """Which lines does a multisine hold, and how often does its period fit?
 
-The lines are multiples of 1/period within the band: all of them ("full"), the odd ones ("odd": the even
-ones then show even distortion), or the odd ones with one of every four left out at random ("odd-gapped":
-those show odd distortion). With a rig, the period is chosen so that the resonance is resolved.
+The lines are multiples of 1/period within the band: the odd ones with one of every four left out at random
+("odd-gapped": the even multiples then show even distortion, those left out odd distortion, see
+`Profile.detection_lines`), all odd ones ("odd"), or all ("full": no distortion is seen). A drive of odd lines only is
+the same half a period later with the sign turned: only its onset and its end tell a reversed sensor from such a shift.
+With a rig, the period is chosen so that the resonance is resolved.
 
 Source: R. Pintelon, J. Schoukens, System Identification: A Frequency Domain Approach (2nd ed., 2012),
 chapters 2 and 4.
@@ -26,14 +28,14 @@ from excitation.timing import check_timing, lead_in_samples, ring_down_time
 
 __all__ = ["Grid", "MultisineLayout", "MultisineSettings", "Phases", "Power", "lay_out_multisine"]
 
-Grid = Literal["full", "odd", "odd-gapped"]
+Grid = Literal["odd-gapped", "odd", "full"]
 Phases = Literal["low-peak", "random", "schroeder"]
 Power = Literal["flat", "informative"]
 
 _RAMP = 0.25  # of a period, each way, at most
 _RAMP_WIDTHS = 1.0  # over the half-power width of the resonance: about 3 of its time constants, at most
 _MOST_PERIODS, _FEWEST_PERIODS, _PERIODS_WITHOUT_RIG = 6, 3, 4
-_LONGEST_PERIOD = 3  # times the one that resolves the resonance: a longer one only holds more lines, and more work
+_LONGEST_PERIOD = 2  # times the one that resolves the resonance: a longer one only holds more lines, and more work
 _LINES_PER_WIDTH = 4.0  # lines within the half-power width of the resonance, where the duration allows
 _FEWEST_LINES = 3
 _GAP_GROUP = 4  # one of so many odd lines is left out
@@ -55,8 +57,8 @@ class MultisineSettings:
         Of the rig; the bias is among them.
     hold : "zero-order" or "smooth"
         What the output does between the samples.
-    grid : "full", "odd" or "odd-gapped"
-        Which multiples of 1/period are excited.
+    grid : "odd-gapped", "odd" or "full"
+        Which multiples of 1/period are excited; those within the band that are not show distortion.
     phases : "low-peak", "random" or "schroeder"
         "low-peak" starts from random phases and lowers the peak of whatever limits the amplitude.
     power : "flat" or "informative"
@@ -81,7 +83,7 @@ class MultisineSettings:
     sample_rate: float = field(metadata={"unit": "Hz"})
     limits: Limits
     hold: Hold = "zero-order"
-    grid: Grid = "odd"
+    grid: Grid = "odd-gapped"
     phases: Phases = "low-peak"
     power: Power = "flat"
     rigs: Sequence[RigModel] = ()
@@ -129,7 +131,7 @@ def lay_out_multisine(settings: MultisineSettings) -> MultisineLayout:
     rest = round(ring_down_time(settings.rigs, band=settings.band, duration=settings.duration) * rate)
     period, n_periods = _choose_period(settings, available=n_samples - lead - rest)
     harmonics = _choose_harmonics(settings, period)
-    ramp = min(round(_RAMP * period), _longest_ramp(settings))
+    ramp = _ramp(settings, period)
     return MultisineLayout(
         n_samples=n_samples,
         period_samples=period,
@@ -156,7 +158,7 @@ def _choose_period(settings: MultisineSettings, *, available: int) -> tuple[int,
     ramps = 2 * _RAMP
     if settings.period is not None:
         period = round(settings.period * settings.sample_rate)
-        n_periods = math.floor(available / max(period, 1) - ramps)
+        n_periods = (available - 2 * _ramp(settings, period)) // max(period, 1)
         if period < 2 or n_periods < 2:
             most = available / (2 + ramps) / settings.sample_rate
             raise ExcitationError(
@@ -172,6 +174,11 @@ def _choose_period(settings: MultisineSettings, *, available: int) -> tuple[int,
         n_periods = min(most, max(_FEWEST_PERIODS, fitting))
     quarters = math.floor(available / (n_periods + ramps))
     return max(quarters, math.floor((available - 2 * _longest_ramp(settings)) / n_periods)), n_periods
+
+
+def _ramp(settings: MultisineSettings, period: int) -> int:
+    """Samples of each ramp."""
+    return min(round(_RAMP * period), _longest_ramp(settings))
 
 
 def _longest_ramp(settings: MultisineSettings) -> int:
@@ -209,9 +216,10 @@ def _choose_harmonics(settings: MultisineSettings, period: int) -> NDArray[np.in
 
 
 def _with_gaps(harmonics: NDArray[np.int64], seed: int) -> NDArray[np.int64]:
-    """Leave one line of each whole group out, at random, but neither the first nor the last of all."""
+    """Leave one line of each whole group out, at random: neither the first nor the last of all, nor two neighbours."""
     rng = np.random.default_rng([seed, 1])
-    n_groups = harmonics.size // _GAP_GROUP
-    left_out = _GAP_GROUP * np.arange(n_groups) + rng.integers(0, _GAP_GROUP, n_groups)
-    left_out = left_out[(left_out > 0) & (left_out < harmonics.size - 1)]
+    left_out: list[int] = []
+    for start in range(0, harmonics.size - _GAP_GROUP + 1, _GAP_GROUP):
+        inner = range(max(start, 1), min(start + _GAP_GROUP, harmonics.size - 1))
+        left_out.append(int(rng.choice([place for place in inner if place - 1 not in left_out])))
     return np.delete(harmonics, left_out)

@@ -128,6 +128,19 @@ class Profile:
         return 0 if self.period_samples is None else (self.steady_stop - self.steady_start) // self.period_samples
 
     @property
+    def detection_lines(self) -> tuple[Floats, Floats]:
+        """Frequencies in Hz that a distorting rig answers at and the voltage does not hold: (even, odd multiples).
+
+        All multiples of 1/period between the first and the last line that are not excited; empty when not periodic.
+        """
+        if self.period_samples is None or self.lines.size == 0:
+            return _no_lines(), _no_lines()
+        spacing = self.sample_rate / self.period_samples
+        excited = np.round(self.lines / spacing).astype(np.int64)
+        free = np.setdiff1d(np.arange(excited[0], excited[-1]), excited)
+        return spacing * free[free % 2 == 0], spacing * free[free % 2 == 1]
+
+    @property
     def peak_voltage(self) -> float:
         """Largest departure from the bias, V."""
         return float(np.max(np.abs(self.voltage - self.bias)))

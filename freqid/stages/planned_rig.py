@@ -150,7 +150,7 @@ def rigs_of_the_box(rig: Rig) -> tuple[SecondOrder, ...]:
         ]
         corners += [rigs[0], rigs[-1]]
         between += rigs[1:-1]
-    return expected, *corners, *between
+    return tuple(dict.fromkeys((expected, *corners, *between)))  # one of each, where an uncertainty is 0
 
 
 def check_against_limits(profile: Profile, rig: Rig) -> float | None:

@@ -155,7 +155,11 @@ def test_json_says_what_was_designed_and_predicted(tmp_path: Path, limits: Limit
     assert content["lines"] == files.profile.lines.tolist()
     assert content["warnings"] == []
     stored = read_hdf5(files.hdf5)
-    assert stored.units == {"voltage": "V", "lines": "Hz"}
+    names = ("lines", "even_detection_lines", "odd_detection_lines")
+    assert stored.units == {"voltage": "V", **dict.fromkeys(names, "Hz")}
+    for parity, lines in zip(("even", "odd"), files.profile.detection_lines, strict=True):
+        assert content["detection_lines"][parity] == lines.tolist()
+        assert np.array_equal(stored.datasets[f"{parity}_detection_lines"], lines)
     assert {"format", "format_version", "freqid_version", "created", "sources"} <= stored.attributes.keys()
 
 

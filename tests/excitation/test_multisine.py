@@ -60,16 +60,40 @@ def test_odd_grid_is_half_wave_symmetric(limits: Limits) -> None:
     np.testing.assert_allclose(second, -first, rtol=0, atol=1e-12)
 
 
-def test_gaps_leave_out_one_odd_line_of_four(limits: Limits) -> None:
-    """The gapped grid is a subset of the odd one, with its ends, and about a quarter less."""
-    odd = lay_out_multisine(_settings(limits))
-    gapped = lay_out_multisine(_settings(limits, grid="odd-gapped"))
-    assert set(gapped.harmonics) < set(odd.harmonics)
-    assert gapped.harmonics[[0, -1]].tolist() == odd.harmonics[[0, -1]].tolist()
-    missing = sorted(set(odd.harmonics) - set(gapped.harmonics))
-    assert odd.harmonics.size // 4 - 2 <= len(missing) <= odd.harmonics.size // 4
-    other_seed = lay_out_multisine(_settings(limits, grid="odd-gapped", seed=2))
-    assert not np.array_equal(other_seed.harmonics, gapped.harmonics)
+@pytest.mark.parametrize("seed", range(5))
+def test_gaps_leave_out_one_odd_line_of_four(limits: Limits, seed: int) -> None:
+    """By default one odd line of each four is missing, at random, but neither an end nor two neighbours."""
+    odd = lay_out_multisine(_settings(limits, grid="odd")).harmonics
+    gapped = lay_out_multisine(_settings(limits, seed=seed)).harmonics
+    assert set(gapped) < set(odd)
+    missing = np.flatnonzero(~np.isin(odd, gapped))
+    assert (missing // 4).tolist() == list(range(odd.size // 4))
+    assert np.min(np.diff(missing)) > 1 and missing[0] > 0 and missing[-1] < odd.size - 1
+    assert not np.array_equal(gapped, lay_out_multisine(_settings(limits, seed=seed + 5)).harmonics)
+
+
+@pytest.mark.parametrize("grid", ["odd-gapped", "odd", "full"])
+def test_detection_lines_are_what_the_drive_leaves_free(limits: Limits, grid: str) -> None:
+    """Lines and detection lines are all multiples of 1/period between the ends, sorted by parity."""
+    profile = design_multisine(_settings(limits, grid=grid, period=8.0))
+    even, odd = (np.round(lines * 8).astype(int) for lines in profile.detection_lines)
+    excited = np.round(profile.lines * 8).astype(int)
+    together = np.concatenate([excited, even, odd])
+    assert sorted(together) == list(range(excited[0], excited[-1] + 1))
+    assert np.all(even % 2 == 0) and np.all(odd % 2 == 1)
+    assert (even.size > 0, odd.size > 0) == {"odd-gapped": (True, True), "odd": (True, False)}.get(grid, (False, False))
+    assert design_multisine(_settings(limits, grid="full", phases="random")).detection_lines[0].size == 0
+
+
+def test_distortion_shows_on_the_detection_lines(limits: Limits, vane: Vane) -> None:
+    """Behind a rig that distorts, squares stand on even lines alone, cubes on odd ones, the omitted ones among them."""
+    profile = design_multisine(_settings(limits, period=8.0, rigs=[vane], power="informative"))
+    period = profile.voltage[profile.steady_start : profile.steady_start + 1600]
+    even, odd = (np.round(lines * 8).astype(int) for lines in profile.detection_lines)
+    square, cube = (np.abs(np.fft.rfft(period**power)) / 800 for power in (2, 3))
+    rounding = 1e-12 * profile.peak_voltage**3  # transforms of 1600 samples round at some 1e-15 of the largest
+    assert np.max(square[odd]) < rounding < 1e-3 < np.sqrt(np.mean(square[even] ** 2))
+    assert np.max(cube[even]) < rounding < 1e-3 < np.sqrt(np.mean(cube[odd] ** 2))
 
 
 @pytest.mark.parametrize("bias", [0.0, -1.3])
