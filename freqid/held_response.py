@@ -7,7 +7,8 @@ lines between samples of a smooth signal. Within each piece the second-order equ
 
 has the particular solution theta_p = u + s (t - 2 zeta / wn) for slope s, and what deviates from it decays as
 exp(A t) with the closed 2 x 2 matrix exponential. So there is no time-stepping error; rounding is the
-only error (about 1e-16 / (wn dt)^2 of the swing). Exposure averages use the integral of the same equation:
+only error (about 1e-16 / (wn dt)^2 of the swing). The derivatives by natural frequency and damping ratio are exact in
+the same way (`freqid.second_order_motion`). Exposure averages use the integral of the same equation:
 
     wn^2 * integral(theta) = wn^2 * integral(u) - [theta'] - 2 zeta wn [theta].
 
@@ -24,7 +25,10 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["Drive", "HeldResponse", "free_decay"]
+from freqid.block_recursion import BlockRecursion
+from freqid.second_order_motion import damped_waves, moved, transition_matrix
+
+__all__ = ["Drive", "HeldResponse", "MeanMotion", "free_decay", "free_decay_slopes"]
 
 Floats = NDArray[np.float64]
 
@@ -98,30 +102,38 @@ class Drive:
         return np.where(end < self.start, 0.0, self.value[index] + self.slope[index] * since)
 
 
-def _transition(wn: float, zeta: float, time: Floats) -> tuple[Floats, Floats]:
-    """c and s with exp(A t) = [[c + zeta wn s, s], [-wn^2 s, c - zeta wn s]]."""
-    decay = np.exp(-zeta * wn * time)
-    if zeta < 1:
-        wd = wn * math.sqrt((1 - zeta) * (1 + zeta))
-        argument = wd * time
-        return decay * np.cos(argument), decay * time * np.sinc(argument / np.pi)
-    alpha = wn * math.sqrt((zeta - 1) * (zeta + 1))
-    argument = alpha * time
-    if alpha == 0:
-        return decay, decay * time
-    fast = np.exp(-(zeta * wn + alpha) * time)
-    slow = np.exp(-wn**2 / (zeta * wn + alpha) * time)  # (zeta wn - alpha), without cancellation
-    sinh_over = np.where(argument < 1e-4, time * (1 + argument**2 / 6) * decay, (slow - fast) / (2 * alpha))
-    return (slow + fast) / 2, sinh_over
-
-
 def free_decay(wn: float, zeta: float, time: Floats) -> Floats:
     """Free motion from unit angle and from unit rate (rad/s times wn) at t = 0, shape (N, 2); zero before."""
     later = np.maximum(time, 0.0)
-    c, s = _transition(wn, zeta, later)
-    columns = np.stack([c + zeta * wn * s, wn * s], axis=-1)
+    cosine, sine = damped_waves(wn, zeta, later)
+    columns = np.stack([cosine + zeta * wn * sine, wn * sine], axis=-1)
     columns[time < 0] = 0.0
     return columns
+
+
+def free_decay_slopes(wn: float, zeta: float, time: Floats, start: tuple[float, float]) -> Floats:
+    """Derivatives (N, 2) of `free_decay` times `start` by natural frequency (per Hz) and damping ratio; zero before."""
+    later = np.maximum(time, 0.0)
+    state = np.zeros((len(later), 4))
+    state[:, 0], state[:, 1] = start[0], wn * start[1]
+    q, speed = moved(wn, zeta, later, state)[:, 2:].T
+    # the rate at the start is in units of wn, and q' alone does not know of it
+    by_wn = 2 / wn * (speed + zeta * wn * q) - start[1] * damped_waves(wn, zeta, later)[1]
+    columns = np.stack([2 * math.pi * by_wn, -2 * wn * q], axis=-1)
+    columns[time < 0] = 0.0
+    return columns
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class MeanMotion:
+    """Mean angle per unit gain over each exposure, and its derivatives by the exposure's end (1/s), the natural
+    frequency (1/Hz) and the damping ratio, each (N,).
+    """
+
+    angle: Floats
+    rate: Floats
+    by_natural_frequency: Floats
+    by_damping_ratio: Floats
 
 
 class HeldResponse:
@@ -134,70 +146,83 @@ class HeldResponse:
         self._drive = drive
         self._wn = 2 * math.pi * natural_frequency
         self._zeta = damping_ratio
-        self._angle, self._rate = self._states()
+        self._sloping = bool(np.any(drive.slope))
+        self._recursions: dict[int, BlockRecursion] = {}
 
-    def _states(self) -> tuple[Floats, Floats]:
-        """Angle and rate at the drive's own instants, by the second-order recursion both components obey."""
-        from scipy.signal import lfilter
+    def _recursion(self, n: int) -> BlockRecursion:
+        """States of angle and rate (n = 2), and of q and its rate (n = 4), at the drive's own instants."""
+        if n not in self._recursions:
+            d, slopes = self._drive, self._slope_state()
+            step = transition_matrix(self._wn, self._zeta, d.interval)
+            unit = np.array([1.0, 0.0, 0.0, 0.0])
+            # what a piece adds: where its own motion ends, less what becomes of where it began
+            gains = [unit - step @ unit, slopes + d.interval * unit - step @ slopes]
+            inputs = [d.value, d.slope] if self._sloping else [d.value]
+            self._recursions[n] = BlockRecursion(step[:n, :n], inputs, [g[:n] for g in gains[: len(inputs)]])
+        return self._recursions[n]
 
-        d, wn, zeta = self._drive, self._wn, self._zeta
-        c, s = (float(v) for v in _transition(wn, zeta, np.asarray(d.interval)))
-        p11, p12, p21, p22 = c + zeta * wn * s, s, -(wn**2) * s, c - zeta * wn * s
-        offset = 2 * zeta / wn
-        begin_angle, begin_rate = d.value - d.slope * offset, d.slope
-        end_angle = begin_angle + d.slope * d.interval
-        force_angle = end_angle - (p11 * begin_angle + p12 * begin_rate)
-        force_rate = begin_rate - (p21 * begin_angle + p22 * begin_rate)
-        denominator = [1.0, -(p11 + p22), p11 * p22 - p12 * p21]
+    def _slope_state(self) -> Floats:
+        """What angle, rate, q and its rate are, beside the voltage, in steady motion with a slope of 1 V/s."""
+        return np.array([-2 * self._zeta / self._wn, 1.0, 1 / self._wn**2, 0.0])
 
-        def recursion(own: Floats, other: Floats, cross: float, diagonal_other: float) -> Floats:
-            # x[m+2] = tr x[m+1] - det x[m] + own[m+1] - p_other own[m] + cross other[m]
-            drive = np.zeros(len(own))
-            drive[1:] = own[:-1]
-            drive[2:] += cross * other[:-2] - diagonal_other * own[:-2]
-            return np.asarray(lfilter([1.0], denominator, drive))
-
-        return (
-            recursion(force_angle, force_rate, p12, p22),
-            recursion(force_rate, force_angle, p21, p11),
-        )
-
-    def _at(self, time: Floats) -> tuple[Floats, Floats]:
-        d, wn, zeta = self._drive, self._wn, self._zeta
+    def _at(self, time: Floats, n: int = 2) -> Floats:
+        """Angle and rate, with n = 4 also q and its rate, at each instant: (N, n)."""
+        d = self._drive
         index, since = d.locate(time)
-        c, s = _transition(wn, zeta, since)
-        slope, offset = d.slope[index], 2 * zeta / wn
-        begin = d.value[index] - slope * offset
-        angle0, rate0 = self._angle[index] - begin, self._rate[index] - slope
-        angle = (c + zeta * wn * s) * angle0 + s * rate0 + begin + slope * since
-        rate = -(wn**2) * s * angle0 + (c - zeta * wn * s) * rate0 + slope
-        before = time < d.start
-        angle[before], rate[before] = 0.0, 0.0
-        return angle, rate
+        steady = np.zeros((len(index), n))
+        if self._sloping:
+            steady += d.slope[index][:, None] * self._slope_state()[:n]
+        steady[:, 0] += d.value[index]
+        state = moved(self._wn, self._zeta, since, self._recursion(n).at(index) - steady) + steady
+        if self._sloping:
+            state[:, 0] += d.slope[index] * since
+        state[time < d.start] = 0.0
+        return state
 
     def at(self, time: Floats) -> Floats:
         """Angle per unit gain at each instant (N,), counted from rest."""
-        return self._at(np.asarray(time, dtype=float))[0]
+        return self._at(np.asarray(time, dtype=float))[:, 0]
 
     def rate_at(self, time: Floats) -> Floats:
         """Angular rate per unit gain at each instant (N,), 1/s."""
-        return self._at(np.asarray(time, dtype=float))[1]
+        return self._at(np.asarray(time, dtype=float))[:, 1]
 
     def mean_and_rate(self, end: Floats, exposure: float) -> tuple[Floats, Floats]:
         """Mean angle over [end - exposure, end] and its derivative by `end`, both (N,); exposure 0 is the angle
         itself.
         """
-        end = np.asarray(end, dtype=float)
-        angle1, rate1 = self._at(end)
-        if exposure <= 0:
-            return angle1, rate1
-        begin = end - exposure
-        angle0, rate0 = self._at(begin)
-        d, wn, zeta = self._drive, self._wn, self._zeta
-        voltage = d.integral_at(end) - d.integral_at(begin)
-        inertia = (rate1 - rate0) / wn**2 + 2 * zeta / wn * (angle1 - angle0)
-        return (voltage - inertia) / exposure, (angle1 - angle0) / exposure
+        mean, rate = self._means(np.asarray(end, dtype=float), exposure, 2)
+        return mean[0], rate[0]
 
     def mean(self, end: Floats, exposure: float) -> Floats:
         """Mean angle over [end - exposure, end], (N,)."""
         return self.mean_and_rate(end, exposure)[0]
+
+    def mean_motion(self, end: Floats, exposure: float) -> MeanMotion:
+        """Mean angle over [end - exposure, end] with its derivatives, exact too."""
+        wn, zeta = self._wn, self._zeta
+        mean, rate = self._means(np.asarray(end, dtype=float), exposure, 4)
+        return MeanMotion(
+            angle=mean[0],
+            rate=rate[0],
+            by_natural_frequency=4 * math.pi / wn * (rate[1] + zeta * wn * mean[1]),
+            by_damping_ratio=-2 * wn * mean[1],
+        )
+
+    def _means(self, end: Floats, exposure: float, n: int) -> tuple[list[Floats], list[Floats]]:
+        """Means over each exposure, and their derivatives by its end, of the angle and, with n = 4, of q."""
+        state1 = self._at(end, n)
+        if exposure <= 0:
+            return [state1[:, k] for k in range(0, n, 2)], [state1[:, k] for k in range(1, n, 2)]
+        begin = end - exposure
+        state0 = self._at(begin, n)
+        d, wn, zeta = self._drive, self._wn, self._zeta
+        driven = d.integral_at(end) - d.integral_at(begin)  # of the voltage; for q, of the rate
+        means, rates = [], []
+        for k in range(0, n, 2):
+            angle, rate = state1[:, k] - state0[:, k], state1[:, k + 1] - state0[:, k + 1]
+            inertia = (rate + 2 * zeta * wn * angle) / wn**2
+            means.append((driven - inertia) / exposure)
+            rates.append(angle / exposure)
+            driven = angle / wn**2
+        return means, rates

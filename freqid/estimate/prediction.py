@@ -4,29 +4,24 @@ The angle recorded at stamp s (end of exposure) is
 
     y(s) = rest + K * mean over exposure of unit_response(ratio * s - lag) + free decay of the start
 
-with lag = delay - clock offset. On a common clock the ratio is 1 and the lag is the delay. Derivatives by K,
-lag, ratio, rest and start are exact; those by natural frequency and damping ratio are differences of the exact
-response: forward with a relative step of 1e-6 (truncation about 1e-6 Q), central with 1e-4 (truncation about 2e-9 Q^2)
-where the voltage is
-sampled so finely that rounding would show.
+with lag = delay - clock offset. On a common clock the ratio is 1 and the lag is the delay. All derivatives are exact
+(`freqid.held_response`).
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from freqid.estimate.record import Record
-from freqid.held_response import HeldResponse, free_decay
+from freqid.held_response import HeldResponse, free_decay, free_decay_slopes
 from freqid.second_order import SecondOrder
 
 __all__ = ["NUISANCE", "MotionParameters", "Prediction", "predict"]
 
 Floats = NDArray[np.float64]
-FORWARD_STEP, CENTRAL_STEP = 1e-6, 1e-4
-FINE = 3e-3  # rad of the natural frequency per sample: below, rounding (1e-16 / FINE^2) needs the larger step
 NUISANCE = ("clock_ratio", "rest_angle", "start_angle", "start_rate")
 
 
@@ -79,41 +74,52 @@ def free_parameters(record: Record) -> tuple[int, ...]:
 
 def angle_only(record: Record, p: MotionParameters) -> Floats:
     """Predicted angle (N,) without derivatives."""
-    return _motion(record, p)[0]
+    return _angle(p, _response(record, p).mean(*_exposures(record, p)), _decay(record, p))
 
 
 def predict(record: Record, p: MotionParameters) -> Prediction:
     """Predicted angle and derivatives at every stamp of the record."""
     free = free_parameters(record)
     m = p.model
-    angle, unit, rate, decay = _motion(record, p)
-    columns = [unit]
-    fine = 2 * np.pi * m.natural_frequency * record.drive.interval < FINE
-    for name in ("natural_frequency", "damping_ratio"):
-        value = getattr(m, name)
-        step = value * (CENTRAL_STEP if fine else FORWARD_STEP)
-        high = _motion(record, replace(p, model=replace(m, **{name: value + step})))[0]
-        low = _motion(record, replace(p, model=replace(m, **{name: value - step})))[0] if fine else angle
-        columns.append((high - low) / (2 * step if fine else step))
+    motion = _response(record, p).mean_motion(*_exposures(record, p))
+    decay = _decay(record, p)
+    columns = [motion.angle, m.gain * motion.by_natural_frequency, m.gain * motion.by_damping_ratio]
+    if record.free_start:
+        start = p.start_angle, p.start_rate
+        slopes = free_decay_slopes(2 * np.pi * m.natural_frequency, m.damping_ratio, _since_start(record), start)
+        columns[1] += slopes[:, 0]
+        columns[2] += slopes[:, 1]
     if 3 in free:
-        columns.append(-m.gain * rate)
+        columns.append(-m.gain * motion.rate)
     if 4 in free:
         # the exposure scales along, so the mean belongs to its middle
-        columns.append(m.gain * rate * (record.stamp - record.exposure / 2))
-    columns.append(np.ones_like(angle))
+        columns.append(m.gain * motion.rate * (record.stamp - record.exposure / 2))
+    columns.append(np.ones_like(motion.angle))
     if 6 in free:
-        columns.extend([decay[:, 0], decay[:, 1]])
-    return Prediction(angle=angle, jacobian=np.stack(columns, axis=1), free=free)
+        columns.extend(decay.T)
+    return Prediction(angle=_angle(p, motion.angle, decay), jacobian=np.stack(columns, axis=1), free=free)
 
 
-def _motion(record: Record, p: MotionParameters) -> tuple[Floats, Floats, Floats, Floats]:
-    m = p.model
-    response = HeldResponse(record.drive, m.natural_frequency, m.damping_ratio)
-    unit, rate = response.mean_and_rate(
-        p.clock_ratio * record.stamp - m.delay, record.exposure * p.clock_ratio
-    )
+def _response(record: Record, p: MotionParameters) -> HeldResponse:
+    return HeldResponse(record.drive, p.model.natural_frequency, p.model.damping_ratio)
+
+
+def _exposures(record: Record, p: MotionParameters) -> tuple[Floats, float]:
+    """End (N,) of each exposure on the input's clock, before the delay, and its width."""
+    return p.clock_ratio * record.stamp - p.model.delay, record.exposure * p.clock_ratio
+
+
+def _decay(record: Record, p: MotionParameters) -> Floats:
+    """Free decay (N, 2) of the start; no columns where the rig was at rest."""
     if not record.free_start:
-        return p.rest_angle + m.gain * unit, unit, rate, np.empty((0, 2))
-    decay = free_decay(2 * np.pi * m.natural_frequency, m.damping_ratio, record.stamp - record.stamp[0])
-    angle = p.rest_angle + m.gain * unit + p.start_angle * decay[:, 0] + p.start_rate * decay[:, 1]
-    return angle, unit, rate, decay
+        return np.empty((len(record.stamp), 0))
+    return free_decay(2 * np.pi * p.model.natural_frequency, p.model.damping_ratio, _since_start(record))
+
+
+def _since_start(record: Record) -> Floats:
+    return np.asarray(record.stamp - record.stamp[0])
+
+
+def _angle(p: MotionParameters, unit: Floats, decay: Floats) -> Floats:
+    start = np.array([p.start_angle, p.start_rate])[: decay.shape[1]]
+    return np.asarray(p.rest_angle + p.model.gain * unit + decay @ start)
