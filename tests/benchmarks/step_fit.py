@@ -73,7 +73,7 @@ def main() -> None:
     parser.add_argument("--seeds", type=int, default=300)
     n_seeds: int = parser.parse_args().seeds
     doubt, share = 100 / np.sqrt(2 * n_seeds), 100 * np.sqrt(0.05 * 0.95 / n_seeds)
-    print(f"{n_seeds} seeds: rms error over the Cramér-Rao bound (known to {doubt:.0f} %), coverage of the 95 % intervals "
+    print(f"{n_seeds} seeds: rms error over the Cramér-Rao bound (known to {doubt:.0f} %), coverage of 95 % intervals "
           f"(known to {share:.1f} %)", flush=True)  # fmt: skip
     print(f"{'':38s}" + "".join(f"{name:>20s}" for name in PARAMETER_ORDER), flush=True)
     errors, held = [], []
