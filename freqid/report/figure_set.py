@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 
 from freqid.errors import FreqidError
 from freqid.report.agreement_strip import agreement_figure
+from freqid.report.amplitude_ladder import amplitude_figure, rungs_of
 from freqid.report.cause_card import cause_figure
 from freqid.report.data_ribbon import ribbon_figure, ribbon_of
 from freqid.report.gain_and_phase import gain_and_phase_figure
@@ -41,6 +42,7 @@ def draw_report(inputs: ReportInputs) -> dict[str, ReportFigure]:
         "agreement_strip": _agreement,
         "gain_and_phase": _gain_and_phase,
         "step": _step,
+        "amplitude_ladder": _amplitudes,
         "residual_ladder": _residuals,
         "data_ribbon": _ribbon,
     }
@@ -118,6 +120,24 @@ def _step(inputs: ReportInputs) -> ReportFigure | None:
         caption=caption,
         alternative=f"Step response, {len(result.steps)} steps. Read off: {read}.",
     )
+
+
+def _amplitudes(inputs: ReportInputs) -> ReportFigure | None:
+    model = None if inputs.identification is None else inputs.identification.model
+    rungs = rungs_of(model, inputs.step_result)
+    if not rungs:
+        return None
+    unit = inputs.rig.angle_unit
+    return ReportFigure(
+        figure=amplitude_figure(rungs, angle_unit=unit),
+        caption="Natural frequency and damping ratio against the swing: a linear rig gives a level row of marks. A "
+        "step's values follow from its decrement and its first peak.",
+        alternative="Amplitude ladder. " + "; ".join(
+            f"{rung.source.replace('_', ' ')}, {rung.swing:.3g} {unit}: {with_uncertainty(rung.natural_frequency)}, "
+            f"damping ratio {with_uncertainty(rung.damping_ratio)}"
+            for rung in rungs
+        ) + ".",
+    )  # fmt: skip
 
 
 def _residuals(inputs: ReportInputs) -> ReportFigure | None:
