@@ -2,13 +2,11 @@
 
 from __future__ import annotations
 
-from dataclasses import asdict
-
 import click
 
 from freqid.cli.options import json_option
 from freqid.cli.output import print_json, print_table, say
-from freqid.stages.devices import SoundInterface, list_sound_interfaces
+from freqid.stages.devices import SoundDevice, list_sound_interfaces
 
 __all__ = ["command"]
 
@@ -16,10 +14,13 @@ __all__ = ["command"]
 @click.command("devices")
 @json_option
 def command(as_json: bool) -> None:
-    """List the sound interfaces with what they can do."""
+    """List the sound interfaces with what they can do.
+
+    `freqid capture FOLDER --device` takes a number, a name or a part of a name of this list. Example: freqid devices
+    """
     found = list_sound_interfaces()
     if as_json:
-        print_json({"devices": [{**asdict(device), "full_duplex": device.full_duplex} for device in found]})
+        print_json({"devices": [device.as_json() for device in found]})
     elif found:
         print_table([_row(device) for device in found],
                     columns=("", "name", "through", "out", "in", "rate Hz", "plays and records"))  # fmt: skip
@@ -27,7 +28,7 @@ def command(as_json: bool) -> None:
         say("No sound interface was found: connect one, or work with the exported profile and `freqid import`.")
 
 
-def _row(device: SoundInterface) -> tuple[str, ...]:
+def _row(device: SoundDevice) -> tuple[str, ...]:
     return (
         str(device.number),
         device.name,

@@ -9,6 +9,7 @@ import click
 
 from freqid.cli.options import folder_argument, json_option
 from freqid.cli.output import print_caveats, print_json, print_table, progress_bar, quantity_rows
+from freqid.cli.recovered import tell_recovered
 from freqid.estimate.identification import Identification
 from freqid.estimate.result_files import model_as_json
 from freqid.stages.estimate import estimate_folder
@@ -32,6 +33,7 @@ def command(
     Writes results/response.h5, results/response.csv and results/model.json. Example: freqid estimate vane
     """
     test = TestFolder.existing(folder)
+    tell_recovered(test)
     with progress_bar() as progress:
         found = estimate_folder(test, run=run, method=method, progress=progress)
     if as_json:

@@ -11,20 +11,21 @@ from freqid.cli.output import print_json, print_table, say
 from freqid.records import Run
 from freqid.test_folder import TestFolder
 
-__all__ = ["print_run"]
+__all__ = ["print_run", "run_as_json"]
 
 
 def print_run(folder: TestFolder, run: Run, *, as_json: bool) -> None:
     """The run as a table (its notes on stderr), or everything as JSON."""
     if as_json:
-        print_json(_as_json(folder, run))
+        print_json(run_as_json(folder, run))
         return
     print_table(_rows(folder, run))
     for note in run.notes:
         say(f"note: {note}")
 
 
-def _as_json(folder: TestFolder, run: Run) -> dict[str, Any]:
+def run_as_json(folder: TestFolder, run: Run) -> dict[str, Any]:
+    """Everything but the samples, for scripts."""
     periodicity = run.input.periodicity
     return {
         "run": run.name,

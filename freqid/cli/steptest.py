@@ -8,6 +8,7 @@ import click
 
 from freqid.cli.options import folder_argument, json_option
 from freqid.cli.output import print_caveats, print_json, print_table, progress_bar, quantity_rows
+from freqid.cli.recovered import tell_recovered
 from freqid.stages.steptest import step_test_folder
 from freqid.step_test.result_file import step_as_json
 from freqid.step_test.step_result import StepResult
@@ -26,6 +27,7 @@ def command(folder: Path, run: str | None, as_json: bool) -> None:
     Times count from the onset of the response. Writes results/step.json. Example: freqid steptest vane
     """
     test = TestFolder.existing(folder)
+    tell_recovered(test)
     with progress_bar() as progress:
         result = step_test_folder(test, run=run, progress=progress)
     if as_json:

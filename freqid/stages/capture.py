@@ -7,7 +7,6 @@ from __future__ import annotations
 
 import secrets
 from dataclasses import replace
-from typing import NoReturn
 
 import numpy as np
 
@@ -15,7 +14,7 @@ from excitation.hdf5_file import file_sha256
 from excitation.profile import Profile
 from excitation.profile_file import read_profile
 from freqid.capture.simulated_rig import simulate_run
-from freqid.errors import CaptureError, RigSheetError
+from freqid.errors import RigSheetError
 from freqid.records import Origin, Run, RunKind
 from freqid.rig import Rig, read_rig
 from freqid.run_file import read_run, write_run
@@ -23,16 +22,23 @@ from freqid.stages import Progress, silent
 from freqid.stages.planned_rig import check_against_limits
 from freqid.test_folder import TestFolder
 
-__all__ = ["capture_simulated", "capture_through_sound_interface", "folder_profile"]
+__all__ = ["capture_simulated", "check_simulated", "folder_profile", "scaled"]
 
 
 def capture_simulated(
-    folder: TestFolder, *, kind: RunKind = "response", seed: int | None = None, progress: Progress = silent
+    folder: TestFolder,
+    *,
+    kind: RunKind = "response",
+    level: float = 1.0,
+    seed: int | None = None,
+    progress: Progress = silent,
 ) -> Run:
     """Play the profile of this kind on the rig of [simulated] and keep the run in runs/.
 
     Parameters
     ----------
+    level
+        The voltage is played at so many times its departure from the bias.
     seed
         Of the noise, the lost frames and the jitter; drawn and noted in the run where None.
 
@@ -46,9 +52,9 @@ def capture_simulated(
         The profile breaks a limit of the rig sheet as it is now.
     """
     rig = read_rig(folder.rig)
-    profile = folder_profile(folder, kind)
+    profile = scaled(folder_profile(folder, kind), level)
     check_against_limits(profile, rig)
-    _check_simulated(folder, rig)
+    check_simulated(folder, rig)
     seed = secrets.randbits(32) if seed is None else seed
     progress("simulating the rig")
     recorded = simulate_run(
@@ -57,35 +63,9 @@ def capture_simulated(
     run = replace(
         recorded,
         origins=(_profile_origin(folder, kind), Origin(source="simulated rig", sha256=None, content="angle")),
-        notes=(*recorded.notes, f"simulated with seed {seed}"),
+        notes=(*recorded.notes, *_level_note(profile, level), f"simulated with seed {seed}"),
     )
     return read_run(write_run(folder, run))
-
-
-def capture_through_sound_interface(
-    folder: TestFolder, *, kind: RunKind = "response", device: str | None = None
-) -> NoReturn:
-    """Always refuses in this version, with what the folder lacks for it and the way that works.
-
-    Raises
-    ------
-    CaptureError
-        Always.
-    """
-    rig = read_rig(folder.rig)
-    missing = [what for what, lacks in (
-        (f"a profile ({folder.profile(kind).name})", not folder.profile(kind).exists()),
-        ('[output] hold = "smooth"', rig.output.hold != "smooth"),
-        ("[angle_sensor] full_scale", rig.angle_sensor.full_scale is None),
-    ) if lacks]  # fmt: skip
-    lacks = f" (this folder would also lack {', '.join(missing)})" if missing else ""
-    on_device = f" on {device!r}" if device else ""
-    stem = folder.profile_stem(kind)
-    raise CaptureError(
-        f"capture through a sound interface{on_device} is not in this version{lacks}; play {stem}.wav or {stem}.csv"
-        f" with your own output, log the angle, and bring it in with `freqid import {folder.quoted} --kind {kind}"
-        " --input profile --angle FILE`; or use --simulate"
-    )
 
 
 def folder_profile(folder: TestFolder, kind: RunKind) -> Profile:
@@ -96,12 +76,24 @@ def folder_profile(folder: TestFolder, kind: RunKind) -> Profile:
     return read_profile(path)
 
 
+def scaled(profile: Profile, level: float) -> Profile:
+    """The profile with its departure from the bias times `level`."""
+    return replace(profile, voltage=profile.bias + level * (profile.voltage - profile.bias)) if level != 1 else profile
+
+
+def _level_note(profile: Profile, level: float) -> tuple[str, ...]:
+    if level == 1:
+        return ()
+    return (f"played at {level:g} times the designed voltage, at most {profile.peak_voltage:.4g} V from the bias",)
+
+
 def _profile_origin(folder: TestFolder, kind: RunKind) -> Origin:
     path = folder.profile(kind)
     return Origin(source=folder.relative_name(path), sha256=file_sha256(path), content="voltage as sent")
 
 
-def _check_simulated(folder: TestFolder, rig: Rig) -> None:
+def check_simulated(folder: TestFolder, rig: Rig) -> None:
+    """Raise RigSheetError where the sheet does not describe a rig that could be simulated."""
     for name in ("gain", "natural_frequency", "damping_ratio", "delay"):
         if getattr(rig.simulated, name) is None:
             raise RigSheetError(

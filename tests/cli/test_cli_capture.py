@@ -98,22 +98,6 @@ def test_rig_that_cannot_be_simulated_is_told(
     assert "[simulated] damping_ratio is missing and [step_test] has none either" in capsys.readouterr().err
 
 
-def test_sound_interface_is_honestly_refused(
-    folder: TestFolder, change_rig: Any, capsys: pytest.CaptureFixture[str]
-) -> None:
-    """Without --simulate the way that works in this version is told, with what the folder lacks, after the cautions."""
-    change_rig("full_scale = 45.0", "#")
-    assert main(["capture", str(folder.path), "--device", "USB"]) == 1
-    out, err = capsys.readouterr()
-    assert out == ""
-    line = err.splitlines()[-1]
-    assert "capture through a sound interface on 'USB' is not in this version" in line
-    for words in ("a profile (profile.h5)", '[output] hold = "smooth"', "[angle_sensor] full_scale", "profile.wav",
-                  "--input profile --angle FILE", "--simulate"):  # fmt: skip
-        assert words in line
-    assert "hard-wired stop" in err
-
-
 def test_failed_writing_leaves_no_run(
     planned: TestFolder, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
 ) -> None:
