@@ -130,9 +130,7 @@ class AmplitudeDependence:
         points = [
             AmplitudePoint(
                 run=row["run"],
-                amplitude=MeasuredAmplitude(
-                    rms_voltage=row["rms_voltage"], rms_angle=row["rms_angle"], peak_angle=row["peak_angle"]
-                ),
+                amplitude=MeasuredAmplitude.from_json(row),
                 quantities={name: _stated(row[name]) for name in DEPENDENT},
             )
             for row in data["points"]

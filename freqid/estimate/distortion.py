@@ -71,6 +71,16 @@ class DistortionLevels:
         """The lines of one parity."""
         return self.keep(self.parity == parity)
 
+    def at(self, frequency: Floats, parity: int) -> Floats:
+        """Level (F,) of one parity at other frequencies, its power joined by straight lines; NaN where none is known.
+
+        A level of undivided distortion stands for both parities.
+        """
+        seen = self.of(parity) if np.any(self.parity == parity) else self.of(UNDIVIDED)
+        if len(seen.frequency) == 0:
+            return np.full(len(frequency), np.nan)
+        return np.asarray(np.sqrt(np.interp(frequency, seen.frequency, np.maximum(seen.power, 0.0))))
+
     def keep(self, chosen: NDArray[np.bool_] | NDArray[np.intp]) -> DistortionLevels:
         """The chosen lines."""
         return DistortionLevels(

@@ -4,8 +4,10 @@
 (`record_fit`).
 2. The noise, measured between the harmonics where the excitation is periodic (`noise_spectrum`).
 3. The four parameters with their joint covariance (`weighted_fit`).
-4. The frequency response around that fit: least squares at the lines, or the local polynomial method.
-5. The model held against that response (`adequacy`); what is doubtful becomes a caveat.
+4. The frequency response around that fit: least squares at the lines, where distortion shows as well, or the local
+polynomial method (`measured_response`).
+5. The model held against that response (`adequacy`); where it does not fit, the uncertainty of what does not fit
+(`misfit_covariance`). What is doubtful becomes a caveat.
 """
 
 from __future__ import annotations
@@ -18,14 +20,17 @@ from numpy.typing import NDArray
 
 from freqid.capture.clock_map import ClockMap
 from freqid.errors import EstimationError
-from freqid.estimate.adequacy import direction_told, lack_of_fit, with_direction
+from freqid.estimate.adequacy import direction_told, with_direction
+from freqid.estimate.distortion import DistortionLevels
+from freqid.estimate.distortion_summary import distortion_caveats, summarize_distortion
 from freqid.estimate.feedthrough import Feedthrough, fit_feedthrough
 from freqid.estimate.frame_grid import FrameGrid
 from freqid.estimate.frequency_response import FrequencyResponse
-from freqid.estimate.local_polynomial import local_polynomial_response
+from freqid.estimate.measured_amplitude import measured_amplitude
+from freqid.estimate.measured_response import measure_response
+from freqid.estimate.misfit_covariance import enlarged_by_misfit
 from freqid.estimate.model import Adequacy, IdentifiedModel
-from freqid.estimate.motion import Motion, estimate_motion, parameter_covariance
-from freqid.estimate.periodic import periodic_response
+from freqid.estimate.motion import Motion, estimate_motion
 from freqid.estimate.prediction import angle_only
 from freqid.estimate.record import Record
 from freqid.estimate.record_fit import RecordFit
@@ -39,13 +44,12 @@ Floats = NDArray[np.float64]
 Method = Literal["auto", "periodic", "local-polynomial"]
 
 POORLY_EXPLAINED = 0.5
-POOLED = 4  # independent points on either side that share their noise estimate
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Identification:
-    """What one run tells: response, model (with the clock map), and the residual (N,) at `time` (N,) on the input's
-    clock.
+    """What one run tells: response, model (with the clock map), distortion at the lines without voltage, and the
+    residual (N,) at `time` (N,) on the input's clock.
     """
 
     response: FrequencyResponse
@@ -53,6 +57,7 @@ class Identification:
     time: Floats
     residual: Floats
     angle: Floats
+    distortion: DistortionLevels | None = None
 
 
 def identify(run: Run, *, method: Method = "auto") -> Identification:
@@ -68,16 +73,21 @@ def identify(run: Run, *, method: Method = "auto") -> Identification:
         record = replace(record, periodicity=None)
     motion = estimate_motion(record)
     record, weighted = motion.record, motion.weighted
-    response, adequacy, independent = _response(motion)
-    feedthrough = fit_feedthrough(record, weighted)
-    adequacy = with_direction(adequacy, feedthrough)
-    covariance = parameter_covariance(weighted)
+    measured = measure_response(motion)
+    response, adequacy = measured.response, measured.adequacy
+    feedthrough = None if measured.distorted else fit_feedthrough(record, weighted)  # its test knows of noise only
+    if feedthrough is not None:
+        adequacy = with_direction(adequacy, feedthrough)
+    covariance, degrees = measured.covariance, measured.degrees_of_freedom
+    fitted = weighted.fit.parameters.model
+    distortion = summarize_distortion(measured.distortion, fitted.natural_frequency, angle_unit=record.angle_unit)
     caveats = [*record.caveats, *motion.caveats, *response.caveats, *_sign_caveats(record, weighted.fit)]
+    caveats += distortion_caveats(distortion)
     if np.isfinite(adequacy.p_value) and not adequacy.adequate:
-        better = find_better_structure(response, weighted.fit.parameters.model, use=independent)
-        told = feedthrough if direction_told(feedthrough) else None
-        if response.method == "periodic":
-            covariance = covariance * max(1.0, adequacy.statistic / adequacy.degrees_of_freedom)
+        better = find_better_structure(response, fitted, use=measured.independent)
+        told = feedthrough if feedthrough is not None and direction_told(feedthrough) else None
+        enlarged = enlarged_by_misfit(motion, measured)
+        covariance, degrees = enlarged.covariance, enlarged.degrees_of_freedom
         if told is not None:
             covariance = covariance + np.outer(told.shift, told.shift)
         adequacy = replace(adequacy, better_structure=_better_name(better, told))
@@ -91,9 +101,9 @@ def identify(run: Run, *, method: Method = "auto") -> Identification:
             )
         )
     model = IdentifiedModel(
-        model=weighted.fit.parameters.model,
+        model=fitted,
         covariance=covariance,
-        degrees_of_freedom=weighted.degrees_of_freedom,
+        degrees_of_freedom=degrees,
         angle_unit=record.angle_unit,
         adequacy=adequacy,
         clock=clock_map(run, motion),
@@ -102,6 +112,8 @@ def identify(run: Run, *, method: Method = "auto") -> Identification:
         undetermined=motion.undetermined,
         runs=(run.name,),
         settings={"method": response.method, "free_start": record.free_start, "hold": run.input.hold},
+        amplitude=measured_amplitude(record, weighted.fit),
+        distortion=distortion,
     )
     p = weighted.fit.parameters
     return Identification(
@@ -110,34 +122,8 @@ def identify(run: Run, *, method: Method = "auto") -> Identification:
         time=p.clock_ratio * record.stamp - (0.0 if record.common_clock else p.model.delay),
         residual=weighted.fit.residual,
         angle=record.angle,
+        distortion=measured.distortion,
     )
-
-
-def _response(motion: Motion) -> tuple[FrequencyResponse, Adequacy, NDArray[np.bool_]]:
-    """The response, the test of the model against it, and which of its points are independent of each other."""
-    record, fit = motion.record, motion.weighted.fit
-    model = fit.parameters.model
-    if motion.lines is not None:
-        measured, freedom = periodic_response(record, fit, motion.lines)
-        every = np.ones(len(measured.frequency), dtype=bool)
-        return measured, lack_of_fit(measured, model, noise_freedom=freedom), every
-    measured, independent = local_polynomial_response(record, fit)
-    pooled = _pool_noise(measured, independent)
-    freedom = float(np.sum(measured.degrees_of_freedom[independent]))
-    return measured, lack_of_fit(pooled, model, noise_freedom=freedom, use=independent), independent
-
-
-def _pool_noise(measured: FrequencyResponse, independent: NDArray[np.bool_]) -> FrequencyResponse:
-    """Noise of each point averaged with its independent neighbours: nine complex degrees of freedom are few."""
-    power = measured.noise[independent] ** 2
-    total = np.concatenate([[0.0], np.cumsum(power)])
-    order = np.arange(len(power))
-    low, high = np.maximum(order - POOLED, 0), np.minimum(order + POOLED + 1, len(power))
-    smooth = (total[high] - total[low]) / (high - low)
-    variance, freedom = measured.variance.copy(), measured.degrees_of_freedom.copy()
-    variance[independent] *= smooth / power
-    freedom[independent] *= high - low
-    return replace(measured, variance=variance, degrees_of_freedom=freedom)
 
 
 def _better_name(better: BetterStructure | None, told: Feedthrough | None) -> str | None:

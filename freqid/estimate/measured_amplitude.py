@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
@@ -29,6 +30,11 @@ class MeasuredAmplitude:
     def as_json(self) -> dict[str, float]:
         """The form of "amplitude" in results/model.json."""
         return {"rms_voltage": self.rms_voltage, "rms_angle": self.rms_angle, "peak_angle": self.peak_angle}
+
+    @classmethod
+    def from_json(cls, data: dict[str, Any]) -> MeasuredAmplitude:
+        """Back from `as_json`; other keys are left alone."""
+        return cls(rms_voltage=data["rms_voltage"], rms_angle=data["rms_angle"], peak_angle=data["peak_angle"])
 
 
 def measured_amplitude(record: Record, fit: RecordFit) -> MeasuredAmplitude:

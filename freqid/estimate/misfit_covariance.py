@@ -22,10 +22,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from freqid.estimate.frequency_response import FrequencyResponse
+from freqid.estimate.measured_response import MeasuredResponse
+from freqid.estimate.motion import Motion
 from freqid.estimate.weighted_fit import WeightedFit
 from freqid.second_order import SecondOrder
 
-__all__ = ["EnlargedCovariance", "enlarged_by_lines", "enlarged_by_stretches"]
+__all__ = ["EnlargedCovariance", "enlarged_by_lines", "enlarged_by_misfit", "enlarged_by_stretches"]
 
 Floats = NDArray[np.float64]
 STRETCHES = 8
@@ -37,6 +39,20 @@ class EnlargedCovariance:
 
     covariance: Floats
     degrees_of_freedom: float
+
+
+def enlarged_by_misfit(motion: Motion, measured: MeasuredResponse) -> EnlargedCovariance:
+    """The covariance of `measured` enlarged by what its inadequate model leaves over.
+
+    At lines it is first enlarged by the misfit's mean square (Birge's ratio), which a misfit that changes from line to
+    line needs; then each variance is raised to that from the stretches where this is larger.
+    """
+    covariance, model = measured.covariance, motion.weighted.fit.parameters.model
+    if motion.lines is None:
+        return enlarged_by_stretches(motion.weighted, covariance)
+    ratio = max(1.0, measured.adequacy.statistic / measured.adequacy.degrees_of_freedom)
+    held = tuple(number for number in range(4) if number not in motion.weighted.fit.prediction.free)
+    return enlarged_by_lines(measured.response, model, covariance * ratio, held=held)
 
 
 def enlarged_by_stretches(weighted: WeightedFit, covariance: Floats) -> EnlargedCovariance:

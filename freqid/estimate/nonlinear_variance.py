@@ -34,12 +34,24 @@ NEIGHBOURS = 2  # on either side
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class NonlinearVariance:
-    """`relative` (F,) is the distortion's complex variance over the squared linear answer at each line; it rests on
-    `lines` detection lines.
+    """`relative` (F,) is the distortion's complex variance over the squared linear answer at each line, read at the
+    detection lines `at` (D,) Hz.
     """
 
     relative: Floats
-    lines: int
+    at: Floats
+
+    @property
+    def lines(self) -> int:
+        """How many detection lines it rests on."""
+        return len(self.at)
+
+    def freedom_near(self, frequency: float) -> float:
+        """Degrees of freedom of the level around `frequency`: two for each detection line within half an octave, and
+        for at least as many as are averaged.
+        """
+        near = int(np.sum(np.abs(np.log2(self.at / frequency)) <= 0.5))
+        return 2.0 * min(max(near, 2 * NEIGHBOURS + 1), self.lines)
 
     def added_to(self, measured: FrequencyResponse, freedom: float) -> tuple[FrequencyResponse, float]:
         """The response with noise and distortion in its variance, and the degrees of freedom of all lines together.
@@ -93,4 +105,4 @@ def nonlinear_variance(levels: DistortionLevels | None, measured: FrequencyRespo
     relative = seen.power / seen.linear**2
     mean = np.array([np.mean(relative[max(i - NEIGHBOURS, 0) : i + NEIGHBOURS + 1]) for i in range(count)])
     at_lines = np.interp(measured.frequency, seen.frequency, np.maximum(mean, 0.0))
-    return NonlinearVariance(relative=at_lines, lines=count)
+    return NonlinearVariance(relative=at_lines, at=seen.frequency)

@@ -1,7 +1,9 @@
 """How does an estimate get into results/ and back? response.h5, response.csv and model.json.
 
-response.h5 also holds the residual of the fit against time, so that the report needs no second estimate. Phases in
-response.csv are as recorded (an unknown clock offset is still in them).
+response.h5 also holds the residual of the fit against time, so that the report needs no second estimate, and the
+distortion at the lines without voltage. Phases in response.csv are as recorded (an unknown clock offset is still in
+them); its distortion is that of the neighbouring detection lines, between which powers are joined by straight lines. A
+column of which nothing is known is left out.
 """
 
 from __future__ import annotations
@@ -22,10 +24,14 @@ from excitation.hdf5_file import read_hdf5, write_hdf5
 from freqid.capture.clock_map import ClockMap
 from freqid.derived import undefined_reasons
 from freqid.errors import TestFolderError
+from freqid.estimate.amplitude_dependence import AmplitudeDependence
+from freqid.estimate.distortion import EVEN, ODD, DistortionLevels
+from freqid.estimate.distortion_summary import DistortionSummary
 from freqid.estimate.frequency_response import FrequencyResponse
 from freqid.estimate.identification import Identification
+from freqid.estimate.measured_amplitude import MeasuredAmplitude
 from freqid.estimate.model import Adequacy, IdentifiedModel
-from freqid.quantity import Caveat, unit_of
+from freqid.quantity import Caveat
 from freqid.second_order import PARAMETER_ORDER, SecondOrder
 from freqid.test_folder import check_format, write_text
 
@@ -36,22 +42,14 @@ __all__ = ["MODEL_FORMAT", "RESPONSE_FORMAT", "model_as_json", "read_identificat
 
 MODEL_FORMAT = "freqid model"
 RESPONSE_FORMAT = "freqid response"
-CSV_HEADER = (
-    "frequency_Hz",
-    "gain",
-    "gain_standard_uncertainty",
-    "phase_deg",
-    "phase_standard_uncertainty_deg",
-    "coherence",
-    "input_amplitude_V",
-)
+DISTORTION = "distortion/"
 
 
 def write_identification(folder: TestFolder, found: Identification, *, computed_from: Iterable[Path]) -> None:
     """Write response.h5, response.csv and model.json of the folder, each whole or not at all."""
     sources = list(computed_from)
     _write_response(folder, found, sources)
-    write_text(folder.response_csv, _csv(found.response))
+    write_text(folder.response_csv, _csv(found))
     content = folder.provenance(format=MODEL_FORMAT, computed_from=[*sources, folder.response_h5])
     folder.write_json(folder.model, {**content, **model_as_json(found.model)})
 
@@ -90,6 +88,8 @@ def model_as_json(model: IdentifiedModel) -> dict[str, Any]:
             "better_structure": model.adequacy.better_structure,
         },
         "clock": model.clock.as_json(),
+        "amplitude": _amplitude(model),
+        "distortion": [one.as_json() for one in model.distortion],
         "explained": model.explained,
         "undetermined": list(model.undetermined),
         "runs": list(model.runs),
@@ -100,6 +100,13 @@ def model_as_json(model: IdentifiedModel) -> dict[str, Any]:
 
 def _reasons(model: IdentifiedModel) -> list[Caveat]:
     return undefined_reasons(model.model.vector, model.covariance, degrees_of_freedom=model.degrees_of_freedom)
+
+
+def _amplitude(model: IdentifiedModel) -> dict[str, Any] | None:
+    if model.amplitude is None:
+        return None
+    dependence = None if model.dependence is None else model.dependence.as_json()
+    return {**model.amplitude.as_json(), "angle_unit": model.angle_unit, "dependence": dependence}
 
 
 def _parameter(model: IdentifiedModel, name: str) -> dict[str, Any] | None:
@@ -127,6 +134,8 @@ def _model(content: dict[str, Any]) -> IdentifiedModel:
         return math.nan if value is None else value
 
     caveats = Caveat.all_from_json(content["warnings"])
+    amplitude = content.get("amplitude")  # files of the first days hold neither
+    dependence = None if amplitude is None else amplitude["dependence"]
     model = IdentifiedModel(
         model=fitted,
         covariance=np.array(content["covariance"]),
@@ -144,35 +153,52 @@ def _model(content: dict[str, Any]) -> IdentifiedModel:
         undetermined=tuple(content["undetermined"]),
         runs=tuple(content["runs"]),
         settings=content["settings"],
+        amplitude=None if amplitude is None else MeasuredAmplitude.from_json(amplitude),
+        dependence=None if dependence is None else AmplitudeDependence.from_json(dependence),
+        distortion=tuple(DistortionSummary.from_json(row) for row in content.get("distortion", [])),
     )
     return model
 
 
 def _write_response(folder: TestFolder, found: Identification, sources: list[Path]) -> None:
-    measured, unit = found.response, found.response.angle_unit
-
-    def stated(name: str) -> str:
-        return unit_of(FrequencyResponse, name).replace("angle_unit", unit)
-
-    datasets = {
-        name: (np.asarray(getattr(measured, name)), stated(name))
-        for name in ("frequency", "variance", "coherence", "noise", "input_amplitude", "degrees_of_freedom")
-    }
-    datasets["response_real"] = (measured.response.real, stated("response"))
-    datasets["response_imaginary"] = (measured.response.imag, stated("response"))
-    datasets["record/time"] = (found.time, "s")
-    datasets["record/angle"] = (found.angle, unit)
-    datasets["record/residual"] = (found.residual, unit)
+    unit = found.response.angle_unit
+    measured = _arrays(found.response, "", unit)
+    distortion = {} if found.distortion is None else _arrays(found.distortion, DISTORTION, unit)
+    record = {"record/time": (found.time, "s"), "record/angle": (found.angle, unit)}
+    record["record/residual"] = (found.residual, unit)
+    datasets = {**measured, **distortion, **record}
     provenance = folder.provenance(format=RESPONSE_FORMAT, computed_from=sources)
     attributes = {
         **provenance,
         "computed_from": json.dumps(provenance["computed_from"], ensure_ascii=False),
         "angle_unit": unit,
-        "method": measured.method,
-        "warnings": json.dumps([c.as_json() for c in measured.caveats], ensure_ascii=False),
+        "method": found.response.method,
+        "warnings": json.dumps([c.as_json() for c in found.response.caveats], ensure_ascii=False),
     }
     folder.results.mkdir(parents=True, exist_ok=True)
     write_hdf5(folder.response_h5, datasets=datasets, attributes=attributes)
+
+
+def _arrays(owner: FrequencyResponse | DistortionLevels, group: str, unit: str) -> dict[str, tuple[Any, str]]:
+    """Each array of a value object with its unit, real and imaginary part apart."""
+    arrays: dict[str, tuple[Any, str]] = {}
+    for one in fields(owner):
+        value = getattr(owner, one.name)
+        if "unit" not in one.metadata or value is None:
+            continue
+        stated = one.metadata["unit"].replace("angle_unit", unit)
+        if np.iscomplexobj(value):
+            arrays[f"{group}{one.name}_real"] = (value.real, stated)
+            arrays[f"{group}{one.name}_imaginary"] = (value.imag, stated)
+        else:
+            arrays[f"{group}{one.name}"] = (np.asarray(value), stated)
+    return arrays
+
+
+def _distortion(datasets: dict[str, Any]) -> DistortionLevels | None:
+    if f"{DISTORTION}frequency" not in datasets:
+        return None
+    return DistortionLevels(**{one.name: datasets[f"{DISTORTION}{one.name}"] for one in fields(DistortionLevels)})
 
 
 def _read_response(folder: TestFolder, model: IdentifiedModel) -> Identification:
@@ -195,6 +221,7 @@ def _read_response(folder: TestFolder, model: IdentifiedModel) -> Identification
             time=d["record/time"],
             residual=d["record/residual"],
             angle=d["record/angle"],
+            distortion=_distortion(d),
         )
     except FileNotFoundError:
         raise folder.missing(path) from None
@@ -204,19 +231,25 @@ def _read_response(folder: TestFolder, model: IdentifiedModel) -> Identification
         raise TestFolderError(f"{path}: damaged ({error!r}); run `freqid estimate {folder.quoted}` again") from None
 
 
-def _csv(measured: FrequencyResponse) -> str:
+def _csv(found: Identification) -> str:
+    measured, levels = found.response, found.distortion
+    unit = measured.angle_unit
+    columns = {
+        "frequency_Hz": measured.frequency,
+        f"gain_{unit}_per_V": measured.gain,
+        f"gain_standard_uncertainty_{unit}_per_V": measured.gain_uncertainty,
+        "phase_deg": measured.phase,
+        "phase_standard_uncertainty_deg": measured.phase_uncertainty,
+        "coherence": measured.coherence,
+        "input_amplitude_V": measured.input_amplitude,
+        f"noise_{unit}": measured.noise,
+        f"nonlinear_{unit}": measured.nonlinear,
+        f"even_distortion_{unit}": None if levels is None else levels.at(measured.frequency, EVEN),
+        f"odd_distortion_{unit}": None if levels is None else levels.at(measured.frequency, ODD),
+    }
+    known = {name: column for name, column in columns.items() if column is not None and np.all(np.isfinite(column))}
     text = io.StringIO()
     writer = csv.writer(text, lineterminator="\n")
-    unit = measured.angle_unit
-    writer.writerow([f"{h}_{unit}_per_V" if h.startswith("gain") else h for h in CSV_HEADER])
-    columns = (
-        measured.frequency,
-        measured.gain,
-        measured.gain_uncertainty,
-        measured.phase,
-        measured.phase_uncertainty,
-        measured.coherence,
-        measured.input_amplitude,
-    )
-    writer.writerows([f"{v:.9g}" for v in row] for row in zip(*columns, strict=True))
+    writer.writerow(known)
+    writer.writerows([f"{v:.9g}" for v in row] for row in zip(*known.values(), strict=True))
     return text.getvalue()
