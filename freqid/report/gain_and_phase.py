@@ -1,8 +1,9 @@
 """What did the frequency test measure, and does the model run through it? Gain and phase against frequency.
 
-Gain log-log with 95 % intervals, the model as a line with its band, the noise level beneath as the gain it would be
-mistaken for; phase below. At the resonance, enlarged: the box in which the step test puts the peak (95 % in frequency
-and in height) beside that of the frequency test.
+Gain log-log with 95 % intervals, the model as a line with its band; beneath, as the gain they would be mistaken for,
+the noise level and the nonlinear distortion where it stands clear of the noise; phase below. At the resonance,
+enlarged: the box in which the step test puts the peak (95 % in frequency and in height) beside that of the frequency
+test.
 """
 
 from __future__ import annotations
@@ -18,7 +19,14 @@ from freqid.report.envelope import thinned
 from freqid.report.figure_style import LIGHT, MARK, Palette, dress, new_figure
 from freqid.report.peak_box import draw_peaks, has_peak
 from freqid.report.quantity_words import minus
-from freqid.report.response_display import ModelCurve, ShownResponse, model_curve, shown_response
+from freqid.report.response_display import (
+    ModelCurve,
+    ShownDistortion,
+    ShownResponse,
+    model_curve,
+    shown_distortion,
+    shown_response,
+)
 from freqid.step_test.step_result import StepResult
 
 if TYPE_CHECKING:
@@ -28,6 +36,7 @@ if TYPE_CHECKING:
 __all__ = ["draw_gain", "draw_phase", "gain_and_phase_figure"]
 
 Floats = NDArray[np.float64]
+_DISTORTION_MARKS = {"odd": ("^", "▲"), "even": ("v", "▼"), "any order": ("D", "◆"), "from several runs": ("s", "■")}
 _MOST_BARS = 160  # lines with a bar of their own; more are drawn as a band
 
 
@@ -56,6 +65,8 @@ def draw_gain(
     curve = model_curve(identification.model, _band(lines))
     axes.set(xscale="log", yscale="log", ylabel=f"gain ({identification.model.angle_unit}/V)", xlabel="frequency (Hz)")
     _noise(axes, lines, palette)
+    levels = shown_distortion(identification)
+    _distortion(axes, levels, palette)
     _model(axes, curve.frequency, curve.gain, curve.gain_half, palette=palette)
     lower = np.minimum(lines.gain_half, 0.999 * lines.gain)  # an interval down to zero has no foot on this axis
     _measured(axes, lines.frequency, (lines.gain, lower, lines.gain_half), palette=palette)
@@ -64,6 +75,7 @@ def draw_gain(
     if step_result is not None:
         _predicted_peak(axes, step_result, palette)
     _direct_labels(axes, curve, lines, palette)
+    _name_distortion(axes, levels, palette)
 
 
 def draw_phase(axes: Axes, identification: Identification, *, palette: Palette = LIGHT) -> None:
@@ -129,6 +141,19 @@ def _noise(axes: Axes, lines: ShownResponse, palette: Palette) -> None:
     known = lines.noise_gain > 0
     x, y = thinned(lines.frequency[known], lines.noise_gain[known], points=600)
     axes.plot(x, y, color=palette.noise, linewidth=0.9, marker="." if len(x) < 2 else "")
+
+
+def _distortion(axes: Axes, levels: tuple[ShownDistortion, ...], palette: Palette) -> None:
+    for level in levels:
+        axes.plot(level.frequency, level.gain, marker=_DISTORTION_MARKS[level.kind][0], color=palette.distortion,
+                  markersize=3.4, linewidth=0, markeredgewidth=0, zorder=3)  # fmt: skip
+
+
+def _name_distortion(axes: Axes, levels: tuple[ShownDistortion, ...], palette: Palette) -> None:
+    """Which mark is which order, once, above the axes."""
+    if levels:
+        words = "   ".join(f"{_DISTORTION_MARKS[level.kind][1]} {level.kind}" for level in levels)
+        axes.set_title(f"distortion, as gain:  {words}", loc="right", color=palette.distortion, fontsize=8.5)
 
 
 def _limit_decades(axes: Axes, lines: ShownResponse) -> None:

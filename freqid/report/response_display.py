@@ -13,13 +13,16 @@ import numpy as np
 from numpy.typing import NDArray
 
 from freqid.errors import EstimationError
+from freqid.estimate.distortion import EVEN, ODD, UNDIVIDED
 from freqid.estimate.frequency_response import FrequencyResponse
+from freqid.estimate.identification import Identification
 from freqid.estimate.model import IdentifiedModel
 from freqid.quantity import coverage_factor
 
-__all__ = ["ModelCurve", "ShownResponse", "model_curve", "shown_response"]
+__all__ = ["ModelCurve", "ShownDistortion", "ShownResponse", "model_curve", "shown_distortion", "shown_response"]
 
 Floats = NDArray[np.float64]
+_CLEAR = 2.0  # standard uncertainties of its power, from which a line's distortion is shown
 _CURVE_POINTS = 500
 
 
@@ -73,6 +76,37 @@ def shown_response(response: FrequencyResponse, model: IdentifiedModel) -> Shown
         phase_half=np.minimum(coverage * response.phase_uncertainty, 180.0)[usable],
         noise_gain=noise[usable],
     )
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class ShownDistortion:
+    """Lines (L,) at which distortion of one kind stands clear of the noise, as the gain it would be mistaken for."""
+
+    kind: str
+    frequency: Floats
+    gain: Floats
+
+
+def shown_distortion(identification: Identification) -> tuple[ShownDistortion, ...]:
+    """Odd and even distortion at the lines without voltage, and that of several runs; kinds with nothing left out.
+
+    A line counts where its power exceeds twice its own standard uncertainty.
+    """
+    found: list[ShownDistortion] = []
+    levels = identification.distortion
+    if levels is not None:
+        clear = levels.keep((levels.power > _CLEAR * levels.power_uncertainty) & (levels.linear > 0))
+        model = identification.model.model
+        for kind, parity in (("odd", ODD), ("even", EVEN), ("any order", UNDIVIDED)):
+            one = clear.of(parity)
+            gain = one.relative * np.abs(model.response(one.frequency))
+            found.append(ShownDistortion(kind=kind, frequency=one.frequency, gain=gain))
+    response = identification.response
+    if response.nonlinear is not None and levels is None:  # with levels it is what they say, carried to the lines
+        seen = (response.nonlinear > 0) & (response.input_amplitude > 0)
+        gain = response.nonlinear[seen] / response.input_amplitude[seen]
+        found.append(ShownDistortion(kind="from several runs", frequency=response.frequency[seen], gain=gain))
+    return tuple(one for one in found if len(one.frequency))
 
 
 def model_curve(model: IdentifiedModel, band: tuple[float, float]) -> ModelCurve:

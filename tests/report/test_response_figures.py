@@ -7,16 +7,19 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+from matplotlib.colors import same_color
 from report_rig import OVERDAMPED, VANE, identification, response_run, step_result
 
 from excitation import Limits, MultisineSettings, StepSettings, design_multisine, design_step_sequence
 from freqid.errors import EstimationError
+from freqid.estimate.distortion import EVEN, ODD, DistortionLevels
 from freqid.estimate.identification import Identification
 from freqid.report import gain_and_phase_figure, profile_card_figure, residual_figure, ribbon_figure, svg_text
 from freqid.report.data_ribbon import ribbon_of
 from freqid.report.envelope import thinned
+from freqid.report.figure_style import LIGHT
 from freqid.report.residual_ladder import scaled_residuals
-from freqid.report.response_display import model_curve, shown_response
+from freqid.report.response_display import model_curve, shown_distortion, shown_response
 from freqid.second_order import SecondOrder
 
 LIMITS = Limits(voltage=5.0, slew_rate=500.0, angle=30.0)
@@ -161,3 +164,33 @@ def test_thinning_keeps_every_extreme() -> None:
     kept_x, kept_y = thinned(x, y, points=1000)
     assert len(kept_x) <= 1000 and np.all(np.diff(kept_x) > 0)
     assert kept_y.max() == 50.0 and kept_y.min() == np.nanmin(y)
+
+
+def _levels(power: list[float], parity: list[int]) -> DistortionLevels:
+    """Detection lines from 1 Hz upwards, powers known to 0.01, each with a linear answer of 2 deg."""
+    n = len(power)
+    return DistortionLevels(
+        frequency=np.arange(1.0, n + 1), power=np.array(power), power_uncertainty=np.full(n, 0.01),
+        noise=np.full(n, 0.1), linear=np.full(n, 2.0), noise_freedom=np.full(n, 20.0), parity=np.array(parity),
+    )  # fmt: skip
+
+
+def test_distortion_is_shown_where_it_stands_clear_of_the_noise() -> None:
+    """Only lines whose power exceeds twice its uncertainty are shown, as amplitude over linear answer times gain."""
+    found = replace(identification(), distortion=_levels([0.04, 0.015, 0.09, -0.01], [ODD, ODD, EVEN, EVEN]))
+    odd, even = shown_distortion(found)
+    assert (odd.kind, even.kind) == ("odd", "even")
+    np.testing.assert_allclose(odd.frequency, [1.0])
+    np.testing.assert_allclose(even.frequency, [3.0])
+    gain = np.abs(found.model.model.response(np.array([1.0, 3.0])))
+    np.testing.assert_allclose([odd.gain[0], even.gain[0]], gain * np.sqrt([0.04, 0.09]) / 2)
+
+
+def test_distortion_has_a_mark_and_a_name_of_its_own() -> None:
+    """The figure names the order that is there, and draws its marks in plum."""
+    found = replace(identification(), distortion=_levels([0.04, 0.0], [ODD, EVEN]))
+    axes = gain_and_phase_figure(found).axes[0]
+    assert "▲ odd" in axes.get_title(loc="right") and "even" not in axes.get_title(loc="right")
+    marks = [line for line in axes.get_lines() if line.get_marker() == "^"]
+    assert len(marks) == 1 and same_color(marks[0].get_color(), LIGHT.distortion)
+    assert gain_and_phase_figure(identification()).axes[0].get_title(loc="right") == ""
