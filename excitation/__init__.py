@@ -17,6 +17,7 @@ from excitation.profile import Profile
 from excitation.profile_file import read_profile
 from excitation.rig_model import Resonance, RigModel, find_resonance
 from excitation.step_sequence import StepSettings, design_step_sequence, settling_time
+from excitation.sweep_rate import SweepDistortion, distortion_at_rate, fastest_rate, slowest_resonance, sweep_time
 from excitation.swept_sine import SweptSineSettings, design_swept_sine, exponential_sweep, linear_sweep
 from excitation.swing import PredictedAngle, check_swing, predicted_angle, predicted_swing, worst_swing
 
@@ -35,13 +36,16 @@ __all__ = [
     "RigModel",
     "SensorSettings",
     "StepSettings",
+    "SweepDistortion",
     "SweptSineSettings",
     "check_swing",
     "crest_factor_of",
     "design_multisine",
     "design_step_sequence",
     "design_swept_sine",
+    "distortion_at_rate",
     "exponential_sweep",
+    "fastest_rate",
     "find_resonance",
     "largest_allowance",
     "lay_out_multisine",
@@ -56,6 +60,8 @@ __all__ = [
     "scaled_to_limits",
     "schroeder_phases",
     "settling_time",
+    "slowest_resonance",
+    "sweep_time",
     "worst_swing",
     "write_profile",
 ]

@@ -4,7 +4,9 @@
 
 The exponential sweep is the synchronised one, x(t) = sin(2 pi f1 L exp(t / L)) with L = T / ln(f2 / f1):
 shifted by L ln m it is its own m-th harmonic, sin(m theta(t)) = x(t + L ln m), so distortion of order m
-arrives as a copy ahead by L ln m. The linear sweep is sin(2 pi (f1 t + (f2 - f1) t^2 / (2 T))).
+arrives as a copy ahead by L ln m. The linear sweep is sin(2 pi (f1 t + (f2 - f1) t^2 / (2 T))). The amplitude follows
+what the limits allow at each frequency (`excitation.sweep_shape`); how fast a resonance may be passed says
+`excitation.sweep_rate`.
 
 Source: A. Novak, P. Lotton, L. Simon, J. Audio Engineering Society 63 (2015) 786-798,
 doi:10.17743/jaes.2015.0071.
@@ -14,8 +16,8 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass, field
-from typing import Literal, get_args
+from dataclasses import dataclass, field, replace
+from typing import get_args
 
 import numpy as np
 
@@ -24,11 +26,11 @@ from excitation.errors import ExcitationError
 from excitation.limits import Limits
 from excitation.profile import Floats, Hold, Profile
 from excitation.rig_model import RigModel
+from excitation.sweep_rate import Course
+from excitation.sweep_shape import SweepCourse, safe_envelope
 from excitation.timing import check_timing, fade_in, lead_in_samples, ring_down_time
 
 __all__ = ["Course", "SweptSineSettings", "design_swept_sine", "exponential_sweep", "linear_sweep"]
-
-Course = Literal["exponential", "linear"]
 
 _LONGEST_FADE = 0.05  # of the sweep
 
@@ -82,7 +84,7 @@ def linear_sweep(time: Floats, *, band: tuple[float, float], duration: float) ->
 
 
 def design_swept_sine(settings: SweptSineSettings) -> Profile:
-    """Design the sweep: over the whole band once, at the bias on both ends, within all limits.
+    """Design the sweep: over the whole band once, at the bias on both ends, within all limits at every frequency.
 
     `settings` of the profile record what an evaluation needs: the course, where the sweep starts, how long it
     is and how long it fades.
@@ -105,7 +107,7 @@ def design_swept_sine(settings: SweptSineSettings) -> Profile:
     sweep, (n_in, n_out) = _faded_sweep(settings, n_sweep)
     departure = np.zeros(n_samples)
     departure[lead : lead + n_sweep] = sweep
-    unscaled = Profile(
+    unit = Profile(
         voltage=bias + departure,
         sample_rate=rate,
         hold=settings.hold,
@@ -121,9 +123,31 @@ def design_swept_sine(settings: SweptSineSettings) -> Profile:
             "fade_out_s": n_out / rate,
         },
     )
+    shaped = _shaped(unit, settings, lead, n_sweep)
     return scaled_to_limits(
-        unscaled, settings.limits, settings.rigs, margin=settings.margin, amplitude=settings.amplitude
+        shaped, settings.limits, settings.rigs, margin=settings.margin, amplitude=settings.amplitude
     )
+
+
+def _shaped(unit: Profile, settings: SweptSineSettings, start: int, n_sweep: int) -> Profile:
+    """The sweep with the amplitude that the limits allow at each frequency."""
+    limits = settings.limits
+    time = np.arange(n_sweep, dtype=np.float64) / settings.sample_rate
+    course = SweepCourse(unit=unit, start=start, frequency=_frequency(settings, time, n_sweep / settings.sample_rate))
+    room = limits.voltage - abs(limits.bias)
+    largest = room if settings.amplitude is None or not settings.amplitude > 0 else min(room, settings.amplitude)
+    envelope = safe_envelope(course, limits, settings.rigs, margin=settings.margin, largest=largest)
+    voltage = unit.voltage.copy()
+    voltage[start : start + n_sweep] = unit.bias + (voltage[start : start + n_sweep] - unit.bias) * envelope
+    return replace(unit, voltage=voltage)
+
+
+def _frequency(settings: SweptSineSettings, time: Floats, duration: float) -> Floats:
+    """Frequency of the sweep in Hz at the times (N,) in s."""
+    low, high = settings.band
+    if settings.course == "linear":
+        return low + (high - low) * time / duration
+    return np.asarray(low * np.exp(time / duration * math.log(high / low)))
 
 
 def _faded_sweep(settings: SweptSineSettings, n_sweep: int) -> tuple[Floats, tuple[int, int]]:

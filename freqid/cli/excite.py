@@ -3,15 +3,19 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Any, Literal
+from typing import TYPE_CHECKING, Any, Literal
 
 import click
 
 from freqid.cli.cautions import print_cautions
 from freqid.cli.options import folder_argument, json_option
 from freqid.cli.output import print_caveats, print_json, print_table, progress_bar, quantity_rows
-from freqid.stages.excite import Design, ExciteSettings, design_excitation, draw_profile_card
+from freqid.stages.excite import Design, ExciteSettings, design_excitation
 from freqid.test_folder import TestFolder
+
+if TYPE_CHECKING:
+    from excitation.multisine_layout import Grid
+    from excitation.sweep_rate import Course
 
 __all__ = ["command"]
 
@@ -31,6 +35,11 @@ _ABOVE_ZERO = click.FloatRange(min=0, min_open=True)
 @click.option("--amplitude", type=_ABOVE_ZERO, metavar="V",
               help="Peak voltage from the bias; refused where it would pass a limit. The largest safe one unless "
                    "given.")
+@click.option("--grid", type=click.Choice(["odd-gapped", "odd", "full"]), default="odd-gapped", show_default=True,
+              help="Lines of a multisine: odd multiples of 1/period with random gaps, so that even and odd distortion"
+                   " can be seen; all odd ones; all.")
+@click.option("--course", type=click.Choice(["exponential", "linear"]), default="exponential", show_default=True,
+              help="How the frequency of a swept sine runs.")
 @click.option("--seed", type=click.IntRange(min=0), default=1, show_default=True, help="Of the random phases.")
 @click.option("--from-model", is_flag=True, help="Plan from results/model.json in place of [step_test].")
 @json_option
@@ -41,6 +50,8 @@ def command(
     duration: float | None,
     wanted_damping: float | None,
     amplitude: float | None,
+    grid: Grid,
+    course: Course,
     seed: int,
     from_model: bool,
     as_json: bool,
@@ -52,21 +63,29 @@ def command(
     """
     if kind == "step" and band is not None:
         raise click.UsageError("--band has no meaning for --kind step; leave it out")
+    _refuse_meaningless(kind)
     test = TestFolder.existing(folder)
     settings = ExciteSettings(
         kind=kind, band=band, duration=duration, wanted_damping=wanted_damping, amplitude=amplitude, seed=seed,
-        from_model=from_model,
+        from_model=from_model, grid=grid, course=course,
     )  # fmt: skip
     with progress_bar() as progress:
         design = design_excitation(test, settings, progress=progress)
-        card = draw_profile_card(test, design, progress=progress)
     if as_json:
-        print_json({**_as_json(test, design), "figure": test.relative_name(card)})
+        print_json(_as_json(test, design))
     else:
-        print_table([*_profile_rows(test, design), ("figure", test.relative_name(card))])
+        print_table(_profile_rows(test, design))
         print_table(quantity_rows(design.prediction.expected), columns=("to be measured", "at best, 95 %", "unit"))
     print_caveats(design.prediction.caveats)
     print_cautions()
+
+
+def _refuse_meaningless(kind: str) -> None:
+    """Refuse an option that was given but means nothing for this kind."""
+    given = click.get_current_context().get_parameter_source
+    for option, its_kind in (("grid", "multisine"), ("course", "swept-sine")):
+        if kind != its_kind and given(option) is not click.core.ParameterSource.DEFAULT:
+            raise click.UsageError(f"--{option} has no meaning for --kind {kind}; leave it out")
 
 
 def _profile_rows(folder: TestFolder, design: Design) -> list[tuple[str, str]]:
@@ -82,6 +101,8 @@ def _profile_rows(folder: TestFolder, design: Design) -> list[tuple[str, str]]:
                         f" {unit}"),
         ("files", ", ".join(folder.relative_name(file) for file in design.files)),
     ]  # fmt: skip
+    if design.card is not None:
+        rows.append(("figure", folder.relative_name(design.card)))
     if profile.band is not None:
         rows.insert(1, ("band", f"{profile.band[0]:g} to {profile.band[1]:g} Hz{_periods(design)}"))
     return rows
@@ -92,7 +113,9 @@ def _periods(design: Design) -> str:
     if profile.period_samples is None:
         return ""
     period = profile.period_samples / profile.sample_rate
-    return f", {profile.lines.size} lines, {profile.n_periods} periods of {period:.4g} s"
+    even, odd = (lines.size for lines in profile.detection_lines)
+    free = f", {even} even and {odd} odd ones left free to show distortion" if even or odd else ""
+    return f", {profile.lines.size} lines{free}, {profile.n_periods} periods of {period:.4g} s"
 
 
 def _limited_by(design: Design) -> str:
@@ -105,11 +128,13 @@ def _as_json(folder: TestFolder, design: Design) -> dict[str, Any]:
     profile = design.profile
     return {
         "kind": profile.kind,
+        "figure": None if design.card is None else folder.relative_name(design.card),
         "files": [folder.relative_name(file) for file in design.files],
         "duration": profile.duration,
         "sample_rate": profile.sample_rate,
         "band": profile.band,
         "n_lines": profile.lines.size,
+        "n_detection_lines": dict(zip(("even", "odd"), (f.size for f in profile.detection_lines), strict=True)),
         "period": profile.period_samples / profile.sample_rate if profile.period_samples else None,
         "n_periods": profile.n_periods,
         "peak_voltage": profile.peak_voltage,

@@ -17,9 +17,10 @@ from excitation.errors import ExcitationError
 from excitation.export import write_profile
 from excitation.hdf5_file import file_sha256
 from excitation.multisine import design_multisine
-from excitation.multisine_layout import MultisineSettings
+from excitation.multisine_layout import Grid, MultisineSettings
 from excitation.profile import Profile
 from excitation.step_sequence import StepSettings, design_step_sequence
+from excitation.sweep_rate import Course, slowest_resonance, sweep_time
 from excitation.swept_sine import SweptSineSettings, design_swept_sine
 from freqid.records import RunKind
 from freqid.rig import Rig, read_rig
@@ -36,13 +37,14 @@ from freqid.stages.planned_rig import (
 from freqid.stages.prediction import Prediction, predict, relative_damping_uncertainty, rig_to_plan_with
 from freqid.test_folder import TestFolder
 
-__all__ = ["Design", "ExciteSettings", "design_excitation", "designed_profile", "draw_profile_card"]
+__all__ = ["Design", "ExciteSettings", "design_excitation", "designed_profile"]
 
 _USUAL_DURATION, _LONGEST_USUAL, _LONGEST = 60.0, 600.0, 3600.0  # s
 _TIME_CONSTANTS = 150  # of the ring-down in a usual test: enough for periods that resolve the resonance
 _BAND_ABOUT_RESONANCE = (0.1, 4.0)  # of the natural frequency
 _SCOUTING_SPAN, _SCOUTING_PERIODS = 300, 12  # highest over lowest frequency at most; periods of the lowest at least
 _CAUTIOUS_PART = 0.1  # of the voltage room, where no swing can be predicted
+_SWEEPING_PART = 0.83  # of the duration, at least: rests at both ends take the remainder
 _LENGTHENINGS = 8
 _SPARE = 1.05  # the duration asked of the next try, over what the last one suggests
 
@@ -55,7 +57,9 @@ class ExciteSettings:
     chosen where None. `wanted_damping` is the half-width of the 95 % interval wanted for the damping ratio,
     relative: the test is made as long as that takes, but no longer than `duration` where that is given. `amplitude`
     (V from the bias) is refused where it would pass a limit; the largest safe one is taken where None. `from_model`
-    plans from results/model.json in place of [step_test].
+    plans from results/model.json in place of [step_test]. `grid` says which multiples of 1/period a multisine holds
+    (those within the band that it leaves free show distortion), `course` how the frequency of a sweep runs; a sweep
+    whose `duration` is None takes long enough to pass the resonance as slowly as `excitation.sweep_rate` says.
     """
 
     kind: Literal["multisine", "swept-sine", "step"] = "multisine"
@@ -65,6 +69,8 @@ class ExciteSettings:
     amplitude: float | None = field(default=None, metadata={"unit": "V"})
     seed: int = 1
     from_model: bool = False
+    grid: Grid = "odd-gapped"
+    course: Course = "exponential"
 
     @property
     def run_kind(self) -> RunKind:
@@ -74,16 +80,21 @@ class ExciteSettings:
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Design:
-    """The profile as it was written, what it predicts, and the files (.h5, .csv, .wav, .json)."""
+    """The profile as it was written, what it predicts, the files (.h5, .csv, .wav, .json) and the card drawn of it."""
 
     profile: Profile
     prediction: Prediction
     rig: Rig  # as it was planned for
     files: tuple[Path, ...]
+    card: Path | None = None
 
 
-def design_excitation(folder: TestFolder, settings: ExciteSettings, *, progress: Progress = silent) -> Design:
+def design_excitation(
+    folder: TestFolder, settings: ExciteSettings, *, draw: bool = True, progress: Progress = silent
+) -> Design:
     """Design the profile and write it to profile.* (step_profile.* for a step test), replacing an earlier one.
+
+    With `draw` the profile card goes to figures/profile_card.svg (step_profile_card.svg), too.
 
     Raises
     ------
@@ -102,10 +113,14 @@ def design_excitation(folder: TestFolder, settings: ExciteSettings, *, progress:
     progress("designing the profile")
     profile = _long_enough(settings, rig)
     if settings.from_model:
-        profile = with_prior_noted(profile, rig)
+        profile = with_prior_noted(profile, rig, read_rig(folder.rig))
     progress("predicting what it will do")
     prediction = predict(profile, rig)
-    return _written(folder, profile, prediction, settings, rig)
+    design = _written(folder, profile, prediction, settings, rig)
+    if not draw:
+        return design
+    progress("drawing the profile")
+    return replace(design, card=_drawn(folder, design, settings))
 
 
 def designed_profile(settings: ExciteSettings, rig: Rig) -> Profile:
@@ -114,27 +129,6 @@ def designed_profile(settings: ExciteSettings, rig: Rig) -> Profile:
     Raises ExcitationError as `design_excitation` does.
     """
     return _long_enough(settings, rig)
-
-
-def draw_profile_card(folder: TestFolder, design: Design, *, progress: Progress = silent) -> Path:
-    """Draw the profile to figures/profile_card.svg (step_profile_card.svg for a step test).
-
-    Raises
-    ------
-    OSError
-        The figure cannot be written.
-    """
-    from freqid.report.figure_style import save_figure
-    from freqid.report.profile_card import profile_card_figure
-
-    progress("drawing the profile")
-    figure = profile_card_figure(
-        design.profile, rigs_of_the_box(design.rig), limits_of(design.rig), angle_unit=design.rig.angle_unit
-    )
-    folder.figures.mkdir(exist_ok=True)
-    path = folder.figures / f"{folder.profile_stem('step' if design.profile.kind == 'step' else 'response')}_card.svg"
-    save_figure(figure, path)
-    return path
 
 
 def _long_enough(settings: ExciteSettings, rig: Rig) -> Profile:
@@ -184,22 +178,25 @@ def _multisine(settings: ExciteSettings, rig: Rig, amplitude: float | None) -> P
             rigs=rigs_of_the_box(rig),
             margin=SWING_MARGIN,
             amplitude=amplitude,
+            grid=settings.grid,
             seed=settings.seed,
         )
     )
 
 
 def _swept_sine(settings: ExciteSettings, rig: Rig, amplitude: float | None) -> Profile:
+    band = _band(settings, rig)
     return design_swept_sine(
         SweptSineSettings(
-            band=_band(settings, rig),
-            duration=settings.duration or _usual(rig),
+            band=band,
+            duration=settings.duration or _unhurried(settings.course, band, rig),
             sample_rate=rig.output.sample_rate,
             limits=limits_of(rig),
             hold=rig.output.hold,
             rigs=rigs_of_the_box(rig),
             margin=SWING_MARGIN,
             amplitude=amplitude,
+            course=settings.course,
         )
     )
 
@@ -249,6 +246,15 @@ def _usual(rig: Rig) -> float:
     return min(_LONGEST_USUAL, max(_USUAL_DURATION, math.ceil(_TIME_CONSTANTS * model.slowest_decay)))
 
 
+def _unhurried(course: Course, band: tuple[float, float], rig: Rig) -> float:
+    """A usual duration in s of a sweep, or a longer one where the resonance asks for it."""
+    resonance = slowest_resonance(rigs_of_the_box(rig), band=band)
+    if resonance is None:
+        return _usual(rig)
+    needed = sweep_time(resonance, band=band, course=course) / _SWEEPING_PART
+    return max(_usual(rig), min(_LONGEST_USUAL, float(math.ceil(needed))))
+
+
 def _written(
     folder: TestFolder, profile: Profile, prediction: Prediction, settings: ExciteSettings, rig: Rig
 ) -> Design:
@@ -263,3 +269,16 @@ def _written(
     )
     written = (files.hdf5, files.csv, files.wav, files.json)
     return Design(profile=files.profile, prediction=prediction, rig=rig, files=written)
+
+
+def _drawn(folder: TestFolder, design: Design, settings: ExciteSettings) -> Path:
+    """The profile card, drawn into figures/."""
+    from freqid.report.figure_style import save_figure
+    from freqid.report.profile_card import profile_card_figure
+
+    rig = design.rig
+    figure = profile_card_figure(design.profile, rigs_of_the_box(rig), limits_of(rig), angle_unit=rig.angle_unit)
+    folder.figures.mkdir(exist_ok=True)
+    path = folder.figures / f"{folder.profile_stem(settings.run_kind)}_card.svg"
+    save_figure(figure, path)
+    return path

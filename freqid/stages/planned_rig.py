@@ -39,6 +39,7 @@ __all__ = [
 ]
 
 SWING_MARGIN = 0.9  # of the way to the stops, at the worst rig of the box
+_PRIOR, _SHEET = "prior", "step_test_at_design"  # among the settings of a profile planned from a model
 _PART_OF_WIDTH = 0.25
 _MOST_EACH_SIDE = 100  # natural frequencies: enough for damping ratios down to a hundredth of their uncertainty
 
@@ -123,9 +124,10 @@ def _least_uncertainty(rig: Rig, *, adequate: bool) -> dict[str, float]:
     return {name: max(tolerated[name], getattr(rig.step_test, f"{name}_uncertainty")) for name in names}
 
 
-def with_prior_noted(profile: Profile, rig: Rig) -> Profile:
-    """The profile with what was known of the rig, in place of the sheet's [step_test], among its settings."""
-    return replace(profile, settings={**profile.settings, "prior": asdict(rig.step_test)})
+def with_prior_noted(profile: Profile, planned: Rig, sheet: Rig) -> Profile:
+    """The profile with what it was planned for, in place of the sheet's [step_test], and that, among its settings."""
+    noted = {_PRIOR: asdict(planned.step_test), _SHEET: asdict(sheet.step_test)}
+    return replace(profile, settings={**profile.settings, **noted})
 
 
 def rigs_of_the_box(rig: Rig) -> tuple[SecondOrder, ...]:
@@ -156,7 +158,8 @@ def rigs_of_the_box(rig: Rig) -> tuple[SecondOrder, ...]:
 def check_against_limits(profile: Profile, rig: Rig) -> float | None:
     """Worst predicted swing of the profile within the limits of the sheet as it is now; None without a rig to expect.
 
-    A profile that was planned from a model is held against the rigs of that model.
+    A profile that was planned from a model is held against the rigs of that model, and, where [step_test] has changed
+    since, against those of the sheet as it is now, too: the more cautious of both decides.
 
     Raises
     ------
@@ -165,11 +168,17 @@ def check_against_limits(profile: Profile, rig: Rig) -> float | None:
     """
     limits = limits_of(rig)
     limits.check_profile(profile)
-    prior: Any = profile.settings.get("prior")
-    if prior is not None:
-        rig = replace(rig, step_test=StepTest(**prior))
-    rigs = rigs_of_the_box(rig)
+    rigs = [model for planned in _planned_for(profile, rig) for model in rigs_of_the_box(planned)]
     return check_swing(profile, rigs, limits, margin=SWING_MARGIN) if rigs else None
+
+
+def _planned_for(profile: Profile, rig: Rig) -> list[Rig]:
+    """The sheets whose rigs must stay clear of the stops."""
+    prior: Any = profile.settings.get(_PRIOR)
+    if prior is None:
+        return [rig]
+    planned = replace(rig, step_test=StepTest(**prior))
+    return [planned] if profile.settings.get(_SHEET) == asdict(rig.step_test) else [planned, rig]
 
 
 def _from_model(folder: TestFolder, content: Mapping[str, Any], name: str) -> tuple[float, float]:

@@ -14,10 +14,17 @@ from typing import Any
 from excitation.errors import ExcitationError
 from excitation.information import SensorSettings, predicted_uncertainties
 from excitation.profile import Profile
+from excitation.sweep_rate import distortion_at_rate, slowest_resonance, sweep_time
 from freqid.quantity import Caveat, Quantity, in_unit
 from freqid.rig import Rig
 from freqid.second_order import PARAMETER_ORDER, SecondOrder, parameter_units
-from freqid.stages.planned_rig import SWING_MARGIN, check_against_limits, expected_rig, is_unknown
+from freqid.stages.planned_rig import (
+    SWING_MARGIN,
+    check_against_limits,
+    expected_rig,
+    is_unknown,
+    rigs_of_the_box,
+)
 
 __all__ = ["Prediction", "predict", "relative_damping_uncertainty", "rig_to_plan_with"]
 
@@ -66,7 +73,7 @@ def predict(profile: Profile, rig: Rig) -> Prediction:
         stops=rig.limits.angle,
         angle_unit=rig.angle_unit,
         expected=expected,
-        caveats=(*caveats, *_band_caveats(profile, rig)),
+        caveats=(*caveats, *_band_caveats(profile, rig), *_sweep_caveats(profile, rig)),
     )
 
 
@@ -152,3 +159,24 @@ def _band_caveats(profile: Profile, rig: Rig) -> list[Caveat]:
             " frequency and damping ratio will be poorly determined",
         ))  # fmt: skip
     return caveats
+
+
+def _sweep_caveats(profile: Profile, rig: Rig) -> list[Caveat]:
+    """Where a sweep passes the resonance faster than the rule of `excitation.sweep_rate`, what that does."""
+    if profile.kind != "swept-sine" or profile.band is None:
+        return []
+    resonance = slowest_resonance(rigs_of_the_box(rig), band=profile.band)
+    if resonance is None:
+        return []
+    course, duration = profile.settings["course"], float(profile.settings["sweep_duration_s"])
+    needed = sweep_time(resonance, band=profile.band, course=course)
+    if duration >= needed:
+        return []
+    told = distortion_at_rate(resonance, band=profile.band, duration=duration, course=course)
+    return [Caveat(
+        "fast_sweep",
+        f"the sweep is fast for the most lightly damped rig expected: read off sample by sample its peak would be"
+        f" {100 * told.peak_loss:.2g} % low, {told.lag:.2g} half-power widths late, {100 * told.widening:.2g} % wider."
+        f" `estimate` follows the motion in time and allows for that; for any other reading sweep for {needed:.3g} s,"
+        f" not {duration:.3g} s",
+    )]  # fmt: skip

@@ -60,7 +60,7 @@ def main() -> None:
     with tempfile.TemporaryDirectory() as scratch:
         folder = TestFolder(Path(scratch))
         folder.rig.write_text(SHEET, encoding="utf-8")
-        design = design_excitation(folder, ExciteSettings(band=(0.2, 12.0), duration=60.0))
+        design = design_excitation(folder, ExciteSettings(band=(0.2, 12.0), duration=60.0), draw=False)
         rig = read_rig(folder.rig)
     estimates = []
     for seed in range(n_seeds):

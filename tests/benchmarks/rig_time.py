@@ -99,7 +99,7 @@ def folder_of(path: Path, vane: str, prior: str) -> TestFolder:
 
 def designed(folder: TestFolder, duration: float = 60.0) -> Profile:
     """What `excite` exports as CSV."""
-    design_excitation(folder, ExciteSettings(band=(0.2, 12.0), duration=duration))
+    design_excitation(folder, ExciteSettings(band=(0.2, 12.0), duration=duration), draw=False)
     return read_profile(folder.profile_csv)
 
 

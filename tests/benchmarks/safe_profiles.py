@@ -88,7 +88,7 @@ def outcome_of_sheet(folder: Path, rng: np.random.Generator) -> Outcome:
     rig = read_rig(test.rig)
     settings = _settings(rig, rng)
     try:
-        design_excitation(test, settings)
+        design_excitation(test, settings, draw=False)
     except (ExcitationError, FreqidError) as error:
         left = [file.name for file in test.path.iterdir() if file.name.startswith(("profile", "step_profile"))]
         said = str(error)

@@ -195,6 +195,37 @@ def test_what_cannot_be_designed_is_told_in_one_line(
     assert os.listdir(folder.path) == ["rig.toml"]
 
 
+@pytest.mark.parametrize(("kind", "option", "value"), [("step", "--grid", "full"), ("multisine", "--course", "linear")])
+def test_option_without_meaning_is_wrong_usage(kind: str, option: str, value: str, folder: TestFolder,
+                                               capsys: pytest.CaptureFixture[str]) -> None:  # fmt: skip
+    """A grid for steps and a course for lines are refused, not ignored."""
+    assert main(["excite", str(folder.path), "--kind", kind, option, value]) == 2
+    assert f"{option} has no meaning for --kind {kind}" in capsys.readouterr().err
+
+
+def test_grid_leaves_lines_to_show_distortion(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
+    """By default even and odd multiples of 1/period stay free, are told and written; a full grid leaves none."""
+    told = designed(folder, capsys, *SHORT)
+    assert min(told["n_detection_lines"].values()) > 0
+    written = folder.read_json(folder.profile_json, format="freqid profile")
+    assert {name: len(lines) for name, lines in written["detection_lines"].items()} == told["n_detection_lines"]
+    full = designed(folder, capsys, *SHORT, "--grid", "full")
+    assert full["n_detection_lines"] == {"even": 0, "odd": 0}
+
+
+def test_sweep_takes_its_time_or_says_what_haste_costs(
+    folder: TestFolder, change_rig: Any, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """A lightly damped resonance makes the usual sweep longer; a duration asked for is kept, with what it does."""
+    change_rig("damping_ratio = 0.12 ", "damping_ratio = 0.04 ")
+    told = designed(folder, capsys, "--kind", "swept-sine", "--band", "1", "8", "--course", "linear")
+    # damping 0.032, fr = 2.85 Hz, B = 0.1824 Hz: 7 Hz at 0.9 B^2 Hz/s take 233.8 s, over 0.83
+    assert told["duration"] == pytest.approx(282, abs=2) and told["prediction"]["warnings"] == []
+    hasty = designed(folder, capsys, "--kind", "swept-sine", "--band", "1", "8", "--duration", "60")
+    (caveat,) = hasty["prediction"]["warnings"]
+    assert caveat["code"] == "fast_sweep" and "half-power widths late" in caveat["message"]
+
+
 def test_band_for_a_step_is_wrong_usage(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
     """A step test has no band."""
     assert main(["excite", str(folder.path), "--kind", "step", "--band", "1", "5"]) == 2
@@ -208,7 +239,7 @@ def test_doubtful_band_is_a_caveat(
     band: tuple[str, str], code: str, folder: TestFolder, capsys: pytest.CaptureFixture[str]
 ) -> None:
     """A band beyond the sensor, or beside the resonance, is designed, and the doubt is told."""
-    told = designed(folder, capsys, "--band", *band, "--duration", "12", "--kind", "swept-sine")
+    told = designed(folder, capsys, "--band", *band, "--duration", "60", "--kind", "swept-sine")
     assert [warning["code"] for warning in told["prediction"]["warnings"]] == [code]
 
 
@@ -277,6 +308,21 @@ def test_next_test_is_planned_from_the_model(
     written = planned.read_json(planned.profile_json, format="freqid profile")
     assert sorted(written["sources"]) == ["results/model.json", "rig.toml"]
     assert main(["capture", str(planned.path), "--simulate"]) == 0
+
+
+def test_later_more_cautious_step_test_stops_the_capture(
+    planned: TestFolder, change_rig: Any, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """A profile planned from the model is held against [step_test], too, once that has been changed."""
+    write_model(planned, adequate=True)
+    designed(planned, capsys, "--from-model", *SHORT)
+    assert main(["capture", str(planned.path), "--simulate"]) == 0
+    change_rig("gain_uncertainty = 0.05", "gain_uncertainty = 0.9")
+    change_rig("natural_frequency = 3.0 ", "natural_frequency = 4.0 ")
+    capsys.readouterr()
+    assert main(["capture", str(planned.path), "--simulate"]) == 1
+    err = capsys.readouterr().err
+    assert "swing: " in err and "27 allowed" in err and err.count("\n") == 1
 
 
 @pytest.mark.parametrize(("adequate", "box"), [(True, (0.05, 0.02, 0.1)), (False, (0.05, 0.05, 0.2))])

@@ -14,11 +14,13 @@ from excitation import (
     ExcitationError,
     LimitExceeded,
     Limits,
+    Profile,
     SweptSineSettings,
     design_swept_sine,
     exponential_sweep,
     linear_sweep,
     predicted_swing,
+    scaled_to_limits,
 )
 
 
@@ -104,4 +106,58 @@ def test_bad_settings_are_refused(limits: Limits, vane: Vane) -> None:
     with pytest.raises(ExcitationError, match="half the sample rate"):
         design_swept_sine(_settings(limits, band=(1.0, 300.0)))
     with pytest.raises(LimitExceeded, match=r"2 V asked for, but the predicted swing would be .* of 27 allowed"):
-        design_swept_sine(_settings(limits, amplitude=2.0, rigs=[vane]))
+        design_swept_sine(_settings(limits, amplitude=2.0, band=(2.5, 3.5), rigs=[vane]))
+
+
+@pytest.mark.parametrize("course", ["exponential", "linear"])
+def test_amplitude_follows_what_each_frequency_allows(limits: Limits, vane: Vane, course: str) -> None:
+    """Large beside the resonance, small on it: the swing is used up at most frequencies, the voltage where it binds."""
+    profile = design_swept_sine(_settings(limits, course=course, rigs=[vane], duration=60.0))
+    plain = design_swept_sine(_settings(limits, course=course, rigs=[replace(vane, gain=1e-9)], duration=60.0))
+    assert profile.peak_voltage > 4.5  # above the resonance the limit is the voltage of 5 V
+    angle = vane.motion(profile)[:, 0]
+    low, high = _samples_at(profile, (2.0, 4.0))
+    # one cycle at 2 Hz is 250 samples; the angle is large in each cycle of the sweep through the resonance
+    cycles = np.abs(angle[low : low + (high - low) // 250 * 250]).reshape(-1, 250).max(axis=1)
+    assert np.min(cycles) > 0.7 * 27 and np.max(cycles) <= 27.0
+    constant = scaled_to_limits(plain, limits, [vane])
+    assert constant.rms < 0.5 * profile.rms  # one amplitude for all frequencies is what the resonance allows
+
+
+def _samples_at(profile: Profile, frequencies: tuple[float, float]) -> list[int]:
+    """First samples at which the sweep is at the frequencies, by its record."""
+    record, (low, high) = profile.settings, (0.5, 12.0)
+    if record["course"] == "linear":
+        parts = [(frequency - low) / (high - low) for frequency in frequencies]
+    else:
+        parts = [math.log(frequency / low) / math.log(high / low) for frequency in frequencies]
+    times = [record["sweep_start_s"] + part * record["sweep_duration_s"] for part in parts]
+    return [round(time * profile.sample_rate) for time in times]
+
+
+@pytest.mark.parametrize(("order", "published"), [(2, 0.75257), (3, 1.19280)])
+def test_harmonics_lead_as_published(order: int, published: float) -> None:
+    """Through a distorting rig, the copy of order n is ahead by L ln n: 10 to 1000 Hz in 5 s, L = 1.085736 s.
+
+    Novak, Lotton, Simon 2015; the lead by A. Farina, AES Convention 108 (2000), as quoted from memory.
+    """
+    rate = 4096.0
+    duration = 5.5 / 0.85  # 0.5 s of rest before and 15 % of all after leave 5 s
+    profile = design_swept_sine(SweptSineSettings(
+        band=(10.0, 1000.0), duration=duration, sample_rate=rate, hold="smooth",
+        limits=Limits(voltage=1.0, slew_rate=math.inf, angle=1e9),
+    ))  # fmt: skip
+    assert profile.settings["sweep_duration_s"] == pytest.approx(5.0, abs=2 / rate)
+    distorted = profile.voltage + 0.2 * profile.voltage**order
+    n_padded = 4 * profile.voltage.size
+    driven, answered = np.fft.rfft(profile.voltage, n_padded), np.fft.rfft(distorted, n_padded)
+    frequency = np.fft.rfftfreq(n_padded, 1 / rate)
+    inside = (frequency > 20.0) & (frequency < 900.0)
+    spectrum = np.zeros(n_padded, dtype=complex)  # of positive frequencies alone: the magnitude has no phase to mind
+    spectrum[: frequency.size][inside] = answered[inside] / driven[inside]
+    impulse = np.fft.ifft(spectrum)
+    lead = np.arange(n_padded, 0, -1) / rate  # of the sample, going back from the end of the circle
+    near = np.abs(lead - published) < 0.1
+    # a band of 880 Hz makes an impulse some 1/880 s wide; its largest sample lies within one sample of its middle
+    found = lead[near][np.argmax(np.abs(impulse[near]))]
+    assert found == pytest.approx(published, abs=1.5 / rate)
