@@ -91,6 +91,13 @@ def read_rig(path: Path | str) -> Rig:
     RigSheetError
         The file is missing, is not UTF-8 or not TOML (with line), or a table or key is unknown,
         missing, of the wrong type or out of range (with file, table, key, value and allowed range).
+
+    Examples
+    --------
+    >>> from freqid.stages.new import create_folder
+    >>> rig = read_rig(create_folder("vane").rig)
+    >>> rig.name, rig.limits.voltage, rig.angle_unit
+    ('spring-centred vane', 5.0, 'deg')
     """
     path = Path(path)
     try:

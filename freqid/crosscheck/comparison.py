@@ -84,9 +84,24 @@ def cross_check(
     none); `folder` names the test folder in the proposed command; `recorded` hands the raw runs to the causes;
     `forecast` tells how well a further test will measure.
     Raises CrossCheckError where the angle units differ.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> from freqid import InputStream, SecondOrder, SimulatedRig, SimulatedSensor, evaluate_steps, identify
+    >>> vane = SecondOrder(gain=12.0, natural_frequency=3.0, damping_ratio=0.12, delay=0.02)
+    >>> rig = SimulatedRig(model=vane, sensor=SimulatedSensor(sample_rate=60.0, exposure=0.004, noise=0.1))
+    >>> time = np.arange(0, 12, 0.01)
+    >>> steps = InputStream(time=time, voltage=1.0 * (time % 6 >= 3), hold="zero-order", commanded=True)
+    >>> sweep = InputStream(time=time, voltage=np.sin(2 * time**2), hold="zero-order", commanded=True)
+    >>> first = identify(rig.run(sweep, kind="response", name="response-001", rng=np.random.default_rng(1)))
+    >>> second = evaluate_steps(rig.run(steps, kind="step", name="step-001", rng=np.random.default_rng(2)))
+    >>> tolerance = {"gain": 0.05, "natural_frequency": 0.02, "damping_ratio": 0.10}
+    >>> cross_check(first.model, second, tolerance=tolerance).verdict
+    'agree'
     """
     result = compare(findings_of_model(model, resonance), findings_of_step(step), tolerance=tolerance)
-    evidence = Evidence(check=result, model=model, step=step, recorded=recorded or Recorded())
+    evidence = Evidence(check=result, model=model, step=step, recorded=recorded or Recorded(), folder=folder)
     result = replace(result, causes=probable_causes(evidence))
     return replace(result, next_test=propose_next_test(result, model, step, folder=folder, forecast=forecast))
 

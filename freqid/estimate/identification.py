@@ -65,6 +65,20 @@ def identify(run: Run, *, method: Method = "auto") -> Identification:
 
     `method` "auto" takes "periodic" where the excitation is known to repeat, else "local-polynomial".
     Raises EstimationError where the record does not determine the answer.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> from freqid import InputStream, SecondOrder, SimulatedRig, SimulatedSensor
+    >>> vane = SecondOrder(gain=12.0, natural_frequency=3.0, damping_ratio=0.12, delay=0.02)
+    >>> rig = SimulatedRig(model=vane, sensor=SimulatedSensor(sample_rate=60.0, exposure=0.004, noise=0.1))
+    >>> time = np.arange(0, 30, 0.01)
+    >>> sweep = InputStream(
+    ...     time=time, voltage=np.sin(2 * np.pi * (0.5 + 0.1 * time) * time), hold="zero-order", commanded=True
+    ... )
+    >>> found = identify(rig.run(sweep, kind="response", name="response-001", rng=np.random.default_rng(1)))
+    >>> {name: round(q.value, 2) for name, q in found.model.parameters.items() if name != "delay"}
+    {'gain': 12.0, 'natural_frequency': 3.0, 'damping_ratio': 0.12}
     """
     record = Record.from_run(run)
     if method == "periodic" and record.periodicity is None:
@@ -205,7 +219,8 @@ def clock_map(run: Run, motion: Motion) -> ClockMap:
         repeated_stamps=int(np.sum(np.diff(stamps) == 0)),
         frames=len(stamps),
         outlier_at=motion.outlier_at,
-        silently_lost_at=motion.silently_lost_at,
+        silently_lost_at=motion.losses.at,
+        silently_lost_between=motion.losses.between,
     )
 
 

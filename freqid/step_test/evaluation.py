@@ -38,7 +38,21 @@ SETTLED_TIME_CONSTANTS = 3.0  # a hold shorter than this many time constants is 
 
 
 def evaluate_steps(run: Run) -> StepResult:
-    """Evaluate every step of a run; raises StepTestError where there is none, EstimationError where nothing fits."""
+    """Evaluate every step of a run; raises StepTestError where there is none, EstimationError where nothing fits.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> from freqid import InputStream, SecondOrder, SimulatedRig, SimulatedSensor
+    >>> vane = SecondOrder(gain=12.0, natural_frequency=3.0, damping_ratio=0.12, delay=0.02)
+    >>> rig = SimulatedRig(model=vane, sensor=SimulatedSensor(sample_rate=60.0, exposure=0.004, noise=0.1))
+    >>> time = np.arange(0, 12, 0.01)
+    >>> steps = InputStream(time=time, voltage=1.0 * (time % 6 >= 3), hold="zero-order", commanded=True)
+    >>> run = rig.run(steps, kind="step", name="step-001", rng=np.random.default_rng(1))
+    >>> found = evaluate_steps(run)
+    >>> round(found.quantities["percent_overshoot"].value), round(found.parameters["damping_ratio"].value, 2)
+    (69, 0.12)
+    """
     record = Record.from_run(run)
     steps = find_steps(record.drive)
     motion = estimate_motion(record)
