@@ -100,8 +100,20 @@ def _inverse(scaled: Floats, lines: int) -> Floats:
     block = scaled[:lines, :lines]
     diagonal = np.diag(block)
     if np.max(np.abs(block - np.diag(diagonal))) > ORTHOGONAL:
-        return np.linalg.inv(scaled)
+        return _symmetric_inverse(scaled)
     beside = scaled[:lines, lines:] / diagonal[:, None]
     rest = np.linalg.inv(scaled[lines:, lines:] - scaled[lines:, :lines] @ beside)
     corner = beside @ rest
     return np.block([[corner @ beside.T + np.diag(1 / diagonal), -corner], [-corner.T, rest]])
+
+
+def _symmetric_inverse(matrix: Floats) -> Floats:
+    """Inverse of a positive definite matrix through its Cholesky factor, in half the time of a general one."""
+    from scipy.linalg.lapack import dpotrf, dpotri
+
+    factor, failed = dpotrf(matrix, lower=1)
+    if failed:
+        return np.asarray(np.linalg.inv(matrix), dtype=float)
+    lower, _ = dpotri(factor, lower=1)
+    lower = np.tril(lower)
+    return np.asarray(lower + np.tril(lower, -1).T)

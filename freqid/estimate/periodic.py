@@ -35,6 +35,7 @@ __all__ = ["LineRegression", "line_amplitudes", "periodic_response", "steady_noi
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
 FULLEST = 0.8  # of the frames: more columns than this leave no noise to judge by
+EDGE = 0.02  # of a frame: so much earlier the window begins, so that rounding takes no frame from a whole period
 MOST_COLUMNS = 3000  # with more, the detection lines are left out
 
 
@@ -148,6 +149,7 @@ def _steady(record: Record, fit: RecordFit, periodicity: Periodicity) -> tuple[N
             f"the angle log covers {max(last - first, 0):.3g} s of the steady excitation, less than one period "
             f"({periodicity.period:.3g} s): record longer"
         )
+    first -= EDGE * record.frame_interval
     inside = (time >= first) & (time < first + periods * periodicity.period)
     return inside, time, periods
 
