@@ -2,9 +2,9 @@
 
 All count from rest (the drive's first value): unequal gain up and down, clipping, limited slew rate, a
 first-order lag. The last two turn a staircase into straight lines between points. A limited slew is exact where it
-limits for whole steps of the drive, else late by an eighth of a step at most; the lag is sampled so finely (20 points
-a time constant, at most 100 a step of the drive) that its straight lines miss it by (1/20)^2 / 8 = 3e-4 of a voltage
-jump.
+limits for whole steps of the drive, else late by an eighth of a step at most; the lag is sampled so finely (8 points
+a time constant, at most 100 a step of the drive) that its straight lines miss it by (1/8)^2 / 8 = 2e-3 of a voltage
+jump, for an eighth of the time constant.
 """
 
 from __future__ import annotations
@@ -20,7 +20,7 @@ from freqid.held_response import Drive
 __all__ = ["clipped", "lagging", "slew_limited", "unequal"]
 
 Floats = NDArray[np.float64]
-STEPS_PER_TIME_CONSTANT = 20
+STEPS_PER_TIME_CONSTANT = 8
 MOST_PER_INTERVAL = 100
 SLEW_STEPS = 4  # per interval of the drive
 
@@ -39,19 +39,20 @@ def clipped(drive: Drive, limit: float) -> Drive:
 def slew_limited(drive: Drive, limit: float) -> Drive:
     """Follows at `limit` V/s at most; where the drive goes faster, a ramp."""
     h = drive.interval / SLEW_STEPS
-    most = limit * h
-    reached = [0.0]
-    now = 0.0
-    for target in _refined(drive, h, 1, SLEW_STEPS).tolist():
-        change = target - now
-        if change > most:
-            now += most
-        elif change < -most:
-            now -= most
-        else:
-            now = target
-        reached.append(now)
-    return _joined(np.array(reached), start=drive.start, interval=h, rest=drive.rest)
+    target = _refined(drive, h, 1, SLEW_STEPS)
+    reached = np.empty(len(target) + 1)
+    reached[0] = now = 0.0
+    begins = np.flatnonzero(np.diff(target, prepend=np.nan))
+    # one stretch of constant target at a time: a ramp, then the target itself
+    for begin, end in zip(begins.tolist(), [*begins[1:].tolist(), len(target)], strict=True):
+        aim, most = float(target[begin]), limit * h
+        if abs(aim - now) <= most:
+            reached[begin + 1 : end + 1] = now = aim
+            continue
+        ramp = now + math.copysign(most, aim - now) * np.arange(1, end - begin + 1)
+        reached[begin + 1 : end + 1] = np.minimum(ramp, aim) if aim > now else np.maximum(ramp, aim)
+        now = float(reached[end])
+    return _joined(reached, start=drive.start, interval=h, rest=drive.rest)
 
 
 def lagging(drive: Drive, time_constant: float) -> Drive:

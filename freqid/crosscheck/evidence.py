@@ -32,12 +32,13 @@ class Recorded:
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Evidence:
-    """The comparison (rows, verdict), the two results it compares, and what was recorded."""
+    """The comparison (rows, verdict), the two results it compares, what was recorded, and the folder for commands."""
 
     check: CrossCheck
     model: IdentifiedModel
     step: StepResult
     recorded: Recorded = field(default_factory=Recorded)
+    folder: str = "FOLDER"
 
     @property
     def rows(self) -> dict[str, ComparedRow]:

@@ -4,26 +4,29 @@ from __future__ import annotations
 
 import numpy as np
 
-from freqid.crosscheck.comparison_result import Cause, ComparedRow, CrossCheck
+from freqid.crosscheck.comparison_result import Cause, ComparedRow
 from freqid.crosscheck.evidence import Evidence
 from freqid.estimate.model import IdentifiedModel
 from freqid.step_test.step_result import StepResult
 
 __all__ = ["causes_from_results"]
 
+BEYOND_CHANCE = 1e-4  # of a false alarm: many causes are looked at
+
 
 def causes_from_results(evidence: Evidence) -> tuple[Cause, ...]:
-    """Causes for which the compared rows and the two results speak."""
-    if evidence.check.verdict == "agree":
-        return ()
+    """Causes for which the compared rows and the two results speak.
+
+    Where the raw records are at hand the mechanisms have been tried on them, and only what none of them explains is
+    left to be told.
+    """
     rows, model, step = evidence.rows, evidence.model, evidence.step
-    found = [
-        _too_little_data(evidence.check, rows),
-        _scale_error(rows),
-        _time_scale(rows, model, step),
-        _further_dynamics(model),
-        _unequal_steps(step),
-    ]
+    if evidence.recorded.step_runs and evidence.recorded.response_runs:
+        found = [_inadequate_model(model)]
+    elif evidence.check.verdict == "agree":
+        found = []
+    else:
+        found = [_scale_error(rows), _time_scale(rows), _inadequate_model(model), _unequal_steps(step)]
     return tuple(c for c in found if c is not None)
 
 
@@ -33,24 +36,6 @@ def _relative(row: ComparedRow) -> tuple[float, float] | None:
         return None
     reference = abs(row.step_test.value)
     return row.difference.value / reference, row.difference.standard_uncertainty / reference
-
-
-def _too_little_data(check: CrossCheck, rows: dict[str, ComparedRow]) -> Cause | None:
-    wide = [
-        row.quantity.replace("_", " ")
-        for row in rows.values()
-        if row.verdict == "unresolved"
-        and row.difference is not None
-        and row.tolerance is not None
-        and row.difference.expanded_uncertainty > row.tolerance
-    ]
-    if not wide or check.verdict == "disagree":
-        return None
-    return Cause(
-        cause="too_little_data",
-        strength=1.0,
-        evidence=f"The uncertainty of the difference alone exceeds the tolerance for {', '.join(wide)}.",
-    )
 
 
 def _scale_error(rows: dict[str, ComparedRow]) -> Cause | None:
@@ -71,7 +56,7 @@ def _scale_error(rows: dict[str, ComparedRow]) -> Cause | None:
     )
 
 
-def _time_scale(rows: dict[str, ComparedRow], model: IdentifiedModel, step: StepResult) -> Cause | None:
+def _time_scale(rows: dict[str, ComparedRow]) -> Cause | None:
     frequency, damping = rows["natural_frequency"], rows["damping_ratio"]
     if frequency.verdict != "disagree" or damping.en is None or abs(damping.en) > 1:
         return None
@@ -88,8 +73,8 @@ def _time_scale(rows: dict[str, ComparedRow], model: IdentifiedModel, step: Step
     )
 
 
-def _further_dynamics(model: IdentifiedModel) -> Cause | None:
-    if not np.isfinite(model.adequacy.p_value) or model.adequacy.adequate:
+def _inadequate_model(model: IdentifiedModel) -> Cause | None:
+    if not np.isfinite(model.adequacy.p_value) or model.adequacy.p_value >= BEYOND_CHANCE:
         return None
     excess = float(np.sqrt(model.adequacy.statistic / model.adequacy.degrees_of_freedom))
     return Cause(
@@ -113,14 +98,22 @@ def _unequal_steps(step: StepResult) -> Cause | None:
     spread = np.sqrt(up[:, 0].var(ddof=1) / len(up) + down[:, 0].var(ddof=1) / len(down))
     floor = np.sqrt((up[:, 1] ** 2).sum() / len(up) ** 2 + (down[:, 1] ** 2).sum() / len(down) ** 2)
     ratio = abs(difference) / max(spread, floor)
-    if ratio < 3:
+    beyond = _beyond_chance(len(up) + len(down) - 2)
+    if ratio < beyond:
         return None
     return Cause(
         cause="unequal_directions",
-        strength=float(np.clip(1 - 3 / ratio, 0.1, 0.9)),
+        strength=float(np.clip(1 - beyond / ratio, 0.1, 0.9)),
         evidence=(
             f"Steps up give a static gain {difference:+.3g} {step.angle_unit}/V different from steps down "
             f"({ratio:.2g} standard "
             "uncertainties): friction, hysteresis or an operating point that moves the spring's stiffness."
         ),
     )
+
+
+def _beyond_chance(degrees_of_freedom: int) -> float:
+    """Student's t that noise alone passes in one of 10 000 tests."""
+    from scipy.special import stdtrit
+
+    return float(stdtrit(degrees_of_freedom, 1 - BEYOND_CHANCE / 2))

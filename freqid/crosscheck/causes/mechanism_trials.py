@@ -1,0 +1,107 @@
+"""Which faults explain what one healthy rig leaves unexplained? Every mechanism tried on all records at once.
+
+A first-order look at each mechanism sorts out those that cannot help; the others are fitted. A mechanism's score is
+the rise of twice the log likelihood over the healthy rig, less ln n for each of its numbers (Schwarz), the frames
+counted as independent as neighbouring residuals of the best fit say. 10 is "very strong" evidence (Kass & Raftery);
+`NAMED` asks for a little more, as many mechanisms are tried.
+
+Source: G. Schwarz, Ann. Statist. 6 (1978) 461-464; R. Kass & A. Raftery, JASA 90 (1995) 773-795.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from freqid.crosscheck.causes.mechanisms import HEALTHY, Mechanism, mechanisms_for
+from freqid.crosscheck.causes.recorded_tests import RecordedTest
+from freqid.crosscheck.causes.shared_fit import JointFit, SharedRig
+from freqid.errors import CaptureError
+
+__all__ = ["NAMED", "Trial", "Trials", "try_mechanisms"]
+
+Floats = NDArray[np.float64]
+NAMED = 14.0  # score
+WORTH_FITTING = 6.0
+SHARE_WORTH_FITTING = 0.25  # of the best first-order rise
+MOST_FITTED = 6
+PASSES = 10
+STARTS, TRIAL_PASSES = 3, 3
+POLISHING = 5
+POLISHED = 2  # fits that get slopes of their own, where their residuals still hang together
+WELL_FITTED = 0.8  # independent values per frame
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Trial:
+    """One mechanism fitted: its joint fit, rise of twice the log likelihood, and score."""
+
+    mechanism: Mechanism
+    fit: JointFit
+    rise: float
+    score: float
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Trials:
+    """The healthy rig's fit and those of the mechanisms, best first."""
+
+    tests: tuple[RecordedTest, ...]
+    healthy: JointFit
+    found: tuple[Trial, ...]
+    n_frames: int
+
+
+def try_mechanisms(tests: tuple[RecordedTest, ...]) -> Trials:
+    """Fit the healthy rig and every mechanism that may explain more."""
+    rig = SharedRig(tests)
+    healthy, state = rig.fit(HEALTHY, np.empty(0))
+    looks = [(mechanism, _first_look(rig, mechanism, state, healthy)) for mechanism in mechanisms_for(tests)]
+    looks = sorted((look for look in looks if look[1]), key=lambda look: -look[1][0].rise)
+    best = looks[0][1][0].rise if looks else 0.0
+    promising = [look for look in looks if look[1][0].rise > max(WORTH_FITTING, SHARE_WORTH_FITTING * best)]
+    fits = [(m, *_fitted(rig, m, found, state)) for m, found in promising[:MOST_FITTED]]
+    fits.sort(key=lambda fitted: -fitted[1].log_likelihood)
+    for i, (mechanism, fit, end) in enumerate(fits[:POLISHED]):
+        if fit.effective_share < WELL_FITTED:
+            fits[i] = mechanism, *rig.fit(mechanism, fit.numbers, state=end, passes=POLISHING, own_slopes=True)
+    share = max((fit for _, fit, _ in fits), key=lambda f: f.log_likelihood, default=healthy).effective_share
+    trials = []
+    for mechanism, fit, _ in fits:
+        rise = (fit.log_likelihood - healthy.log_likelihood) * share
+        penalty = len(fit.numbers) * float(np.log(rig.n_frames * share))
+        trials.append(Trial(mechanism=mechanism, fit=fit, rise=rise, score=rise - penalty))
+    trials.sort(key=lambda trial: -trial.score)
+    return Trials(tests=tests, healthy=healthy, found=tuple(trials), n_frames=rig.n_frames)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class _Look:
+    """First-order rise from one start, and the numbers it leads to."""
+
+    rise: float
+    numbers: Floats
+
+
+def _fitted(rig: SharedRig, mechanism: Mechanism, looks: list[_Look], state: Floats) -> tuple[JointFit, Floats]:
+    """The best fit; where the start is a choice, a few passes from each of the best starts, then on from the best."""
+    if mechanism.looked_at or len(looks) == 1:
+        return rig.fit(mechanism, looks[0].numbers, state=state, passes=PASSES)
+    trials = [rig.fit(mechanism, look.numbers, state=state, passes=TRIAL_PASSES) for look in looks[:STARTS]]
+    fit, end = max(trials, key=lambda trial: trial[0].log_likelihood)
+    return rig.fit(mechanism, fit.numbers, state=end, passes=PASSES)
+
+
+def _first_look(rig: SharedRig, mechanism: Mechanism, state: Floats, healthy: JointFit) -> list[_Look]:
+    """First-order rises over the mechanism's starts, best first."""
+    found: list[_Look] = []
+    known = np.concatenate(healthy.residuals) if mechanism.neutral else None
+    for start in mechanism.starts:
+        try:
+            objective, numbers = rig.first_order(mechanism, np.array(start), state, known)
+        except CaptureError:
+            continue
+        found.append(_Look(rise=-objective - healthy.log_likelihood, numbers=numbers))
+    return sorted(found, key=lambda look: -look.rise)
