@@ -18,7 +18,13 @@ from dataclasses import replace
 import numpy as np
 
 from excitation.amplitude import scaled_to_limits
-from excitation.crest_factor import lower_peak, multisine_waveform, random_phases, schroeder_phases
+from excitation.crest_factor import (
+    largest_peak,
+    lower_peak,
+    multisine_waveform,
+    random_phases,
+    schroeder_phases,
+)
 from excitation.errors import ExcitationError
 from excitation.information_criterion import LineInformation
 from excitation.joint_descent import PeakLimits, lower_jointly
@@ -54,8 +60,9 @@ def design_multisine(settings: MultisineSettings) -> Profile:
         phases = _choose_phases(settings, layout, amplitudes)
         return _with_lines(settings, layout, amplitudes * np.exp(1j * phases))
     information = LineInformation(layout.lines, _rigs_weighed(settings))
-    designs = [_with_lines(settings, layout, lines) for lines in _informative_lines(settings, layout, information)]
-    return min(designs, key=lambda profile: _told_by(profile, layout, information))
+    candidates = _informative_lines(settings, layout, information)
+    best = min(candidates, key=lambda lines: information.criterion(np.abs(lines) ** 2))
+    return _with_lines(settings, layout, best)
 
 
 def _with_lines(settings: MultisineSettings, layout: MultisineLayout, lines: Complexes) -> Profile:
@@ -85,7 +92,7 @@ def _with_lines(settings: MultisineSettings, layout: MultisineLayout, lines: Com
 def _informative_lines(
     settings: MultisineSettings, layout: MultisineLayout, information: LineInformation
 ) -> Iterator[Complexes]:
-    """Complex amplitudes (F,) to choose from: which is best shows once the ramps are there."""
+    """Complex amplitudes (F,) in V to choose from, each as large as the limits let the periodic part be."""
     rng = np.random.default_rng([settings.seed, 0])
     signals = _limited_signals(settings, layout)
     for rounds in _ROUNDS:
@@ -95,14 +102,8 @@ def _informative_lines(
             limits = PeakLimits(signals=signals, harmonics=layout.harmonics)
             yield lower_jointly(amplitudes * np.exp(1j * phases), limits=limits, information=information)
         else:
-            yield amplitudes * np.exp(1j * _choose_phases(settings, layout, amplitudes))
-
-
-def _told_by(profile: Profile, layout: MultisineLayout, information: LineInformation) -> float:
-    """What the design minimises, at the amplitudes that the limits let through."""
-    period = profile.voltage[profile.steady_start : profile.steady_start + layout.period_samples] - profile.bias
-    amplitudes = np.abs(np.fft.rfft(period))[layout.harmonics] * (2 / period.size)
-    return information.criterion(amplitudes**2)
+            lines = amplitudes * np.exp(1j * _choose_phases(settings, layout, amplitudes))
+            yield lines / largest_peak(lines * signals, layout.harmonics, layout.period_samples)
 
 
 def _given_amplitudes(settings: MultisineSettings, n_lines: int) -> Floats:
@@ -166,7 +167,9 @@ def _quietest_onset(period: Floats, layout: MultisineLayout, settings: Multisine
         profile = Profile(voltage=departure, sample_rate=rate, hold="smooth", bias=0.0, kind="multisine")
         return worst_swing(profile, _rigs_weighed(settings))
 
-    return layout.period_samples * min(range(_ONSETS), key=swing) // _ONSETS
+    # odd lines alone: half a period later only the sign is another
+    tried = _ONSETS if settings.grid == "full" else _ONSETS // 2
+    return layout.period_samples * min(range(tried), key=swing) // _ONSETS
 
 
 def _with_ramps(period: Floats, layout: MultisineLayout) -> Floats:

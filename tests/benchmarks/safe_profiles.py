@@ -7,7 +7,7 @@ neighbours the slew limit (the onset from the bias and the return to it included
 samples (`freqid.held_response`), through the ring-down, must stay inside the stops for the corners and the centre of
 the prior box. A refusal must be a message of this program with a figure in it. Nothing else may happen.
 
-    python tests/benchmarks/safe_profiles.py [--sheets 2000] [--seed 1]
+    python tests/benchmarks/safe_profiles.py [--sheets 2000] [--seed 1] [--workers 1]
 """
 
 from __future__ import annotations
@@ -16,10 +16,13 @@ import argparse
 import itertools
 import math
 import re
+import sys
 import tempfile
 from collections import Counter
 from collections.abc import Iterator
+from concurrent.futures import ProcessPoolExecutor
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 from typing import Literal
 
@@ -178,19 +181,28 @@ def _swings(around: NDArray[np.float64], rig: Rig) -> Iterator[float]:
         yield known.gain * (1 + gain * known.gain_uncertainty) * float(np.max(np.abs(angle)))
 
 
+def outcome_of_number(seed: int, number: int) -> Outcome:
+    """The outcome of one of the random sheets of a seed."""
+    with tempfile.TemporaryDirectory() as scratch:
+        return outcome_of_sheet(Path(scratch), np.random.default_rng([seed, number]))
+
+
 def main() -> None:
     """Print the counts, the largest shares, and every violation."""
     parser = argparse.ArgumentParser()
     parser.add_argument("--sheets", type=int, default=2000)
     parser.add_argument("--seed", type=int, default=1)
+    parser.add_argument("--workers", type=int, default=1)
     arguments = parser.parse_args()
     outcomes = []
-    for number in range(arguments.sheets):
-        with tempfile.TemporaryDirectory() as scratch:
-            outcome = outcome_of_sheet(Path(scratch), np.random.default_rng([arguments.seed, number]))
-        outcomes.append(outcome)
-        for violation in outcome.violations:
-            print(f"sheet {number}, {outcome.kind}: {violation}", flush=True)
+    with ProcessPoolExecutor(arguments.workers) as workers:
+        numbers = range(arguments.sheets)
+        for number, outcome in enumerate(workers.map(partial(outcome_of_number, arguments.seed), numbers)):
+            outcomes.append(outcome)
+            for violation in outcome.violations:
+                print(f"sheet {number}, {outcome.kind}: {violation}", flush=True)
+            if (number + 1) % 200 == 0:
+                print(f"{number + 1} sheets", file=sys.stderr, flush=True)
     print_summary(outcomes)
 
 
