@@ -33,7 +33,7 @@ class ChannelMap:
         Usual is 1 for the loopback and 2 for the angle; the angle alone on 1 where there is one input only.
         """
         if loopback == "none" or (loopback is None and input_channels == 1):
-            return cls(drive=drive, loopback=None, angle=angle or 1)
+            return cls(drive=drive, loopback=None, angle=angle or min(2, max(1, input_channels)))
         measured = loopback or 1
         if angle is None:
             angle = 2 if measured == 1 else 1

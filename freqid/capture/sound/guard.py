@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from freqid.capture.sound.interface import Float32s
-from freqid.capture.sound.loopback_match import LoopbackMatch, match_loopback
+from freqid.capture.sound.loopback_match import LoopbackMatch, match_about, match_loopback
 
 __all__ = ["CLIPPED", "AngleGuard", "GuardLimits", "LoopbackGuard"]
 
@@ -27,8 +27,11 @@ DEPARTED = 0.15  # rms over a window, of the largest departure of the profile fr
 LARGEST_DELAY = 1.0  # s
 FIRST_LOOK = 3.0  # s of moving voltage until the delay is found
 WINDOW = 0.25  # s
-MOVING = 0.1  # of the largest departure
+MOVING = 0.05  # rms about a straight line, of the largest departure
 SMALLEST_GAIN = 0.01  # below it a channel shows crosstalk
+CLOSE = 0.03  # residual, of the voltage in the window, with which a match is taken
+SMALL_CHANGE = 0.1  # of the gain
+SETTLED = 3.0  # s after which a match is no longer looked for anew
 VAGUE = 10.0  # a match is taken when its vagueness is smaller than what is allowed by this
 Floats = NDArray[np.float64]
 
@@ -129,6 +132,7 @@ class LoopbackGuard:
         self._sent, self._recorded = np.empty(0), np.empty(0)
         self._silent = 0  # windows of moving voltage that the loopback did not show
         self._match: LoopbackMatch | None = None
+        self._windows = 0  # since the match was made
         self.clipped = 0
 
     def look(self, sent: Float32s, recorded: Float32s) -> str | None:
@@ -166,25 +170,55 @@ class LoopbackGuard:
         sent, recorded = self._sent[:size], self._recorded[:size]
         if self._match is None:
             return self._find(sent, recorded)
-        delay = self._match.lag
-        expected = self._match.gain * sent[self._most - delay : size - delay] + self._match.offset
+        whole, part = divmod(max(0.0, self._match.delay), 1.0)
+        later = sent[self._most - int(whole) : size - int(whole)]
+        earlier = sent[self._most - int(whole) - 1 : size - int(whole) - 1]
+        expected = self._match.gain * ((1 - part) * later + part * earlier) + self._match.offset
         departure = float(np.sqrt(np.mean((recorded[self._most :] - expected) ** 2)))
         allowed = DEPARTED * abs(self._match.gain) * self._limits.largest_departure
+        self._windows += 1
         if departure <= allowed:
+            self._refine(self._match, sent, recorded)
+            return None
+        if self._windows * WINDOW < SETTLED and self._is_found_again(sent, recorded):
             return None
         return (
             f"guard: loopback departs from the voltage sent by {departure:.3g} V rms, {allowed:.3g} V is allowed;"
             " frames were lost on the way, or a cable is off"
         )
 
+    def _refine(self, match: LoopbackMatch, sent: Floats, recorded: Floats) -> None:
+        """Follow small changes: a first match made of a narrow band or a weak motion is a little off."""
+        if _motion(sent) < MOVING * self._limits.largest_departure:
+            return
+        better = match_about(max(0, match.lag + round(match.fraction)), sent, recorded)
+        near = abs(better.fraction) <= 1 and abs(better.gain / match.gain - 1) < SMALL_CHANGE
+        if near and self._is_clear(better, sent):
+            self._match = better
+
+    def _is_found_again(self, sent: Floats, recorded: Floats) -> bool:
+        """Whether another match fits: early in a run one may have been made of one edge alone."""
+        self._match = None
+        self._find(sent, recorded)
+        return self._match is not None
+
+    def _is_clear(self, match: LoopbackMatch, sent: Floats) -> bool:
+        size = abs(match.gain)
+        allowed = DEPARTED * size * self._limits.largest_departure
+        shown = sent[: sent.size - match.lag]  # what has come back within the window
+        return (
+            _motion(shown) > MOVING * self._limits.largest_departure
+            and match.residual < CLOSE * size * float(np.std(shown))
+            and VAGUE * match.vagueness < allowed
+        )
+
     def _find(self, sent: Floats, recorded: Floats) -> str | None:
-        if np.ptp(sent) < MOVING * self._limits.largest_departure:
+        if _motion(sent) < MOVING * self._limits.largest_departure:
             return None
         match = match_loopback(sent, recorded, most=self._most // 2)
         follows = match is not None and match.residual < DEPARTED * abs(match.gain) * float(np.std(sent))
         if match is not None and follows and abs(match.gain) > SMALLEST_GAIN:
-            allowed = DEPARTED * abs(match.gain) * self._limits.largest_departure
-            self._match = match if VAGUE * match.vagueness < allowed else None
+            self._match, self._windows = (match, 0) if self._is_clear(match, sent) else (None, 0)
             return None
         self._silent += 1
         if self._silent * WINDOW > FIRST_LOOK:
@@ -193,3 +227,10 @@ class LoopbackGuard:
                 " with --loopback-channel, or do without: --loopback-channel none"
             )
         return None
+
+
+def _motion(voltage: Floats) -> float:
+    """RMS of what a straight line leaves: along a straight line a shift looks like an offset."""
+    order = np.arange(voltage.size) - (voltage.size - 1) / 2
+    level = voltage - np.mean(voltage)
+    return float(np.std(level - order * (order @ level) / (order @ order)))

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from freqid.quantity import in_unit
 
-__all__ = ["LoopbackMatch", "match_loopback", "shift_since"]
+__all__ = ["LoopbackMatch", "match_about", "match_loopback", "shift_since"]
 
 Floats = NDArray[np.float64]
 
@@ -55,7 +55,7 @@ def match_loopback(sent: Floats, recorded: Floats, *, most: int) -> LoopbackMatc
         return None
     lag, tried = _lag(sent, recorded, most), set[int]()
     while True:
-        match = _match_about(lag, sent, recorded)
+        match = match_about(lag, sent, recorded)
         tried.add(lag)
         closer = min(max(0, lag + round(match.fraction)), most)
         if closer in tried or not abs(match.fraction) > 0.5:
@@ -63,7 +63,7 @@ def match_loopback(sent: Floats, recorded: Floats, *, most: int) -> LoopbackMatc
         lag = closer  # the correlation of a slow voltage is flat at its top; the least squares know better
 
 
-def _match_about(lag: int, sent: Floats, recorded: Floats) -> LoopbackMatch:
+def match_about(lag: int, sent: Floats, recorded: Floats) -> LoopbackMatch:
     """Gain, offset and the rest of the delay by least squares, the lag given."""
     later, earlier = recorded[lag + 1 : sent.size - 1], sent[1 : sent.size - 1 - lag]
     slope = (sent[2 : sent.size - lag] - sent[: sent.size - 2 - lag]) / 2

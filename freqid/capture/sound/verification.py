@@ -197,7 +197,10 @@ class _LoopbackCheck:
         if moves and uncertainty * SURE < STEP:
             self.largest_shift = max(self.largest_shift, abs(shift))
             if abs(shift) > STEP:
-                self._report(f"the delay of the loopback is off by {shift:.1f} frames at {frame / rate:.2f} s")
+                self._report(
+                    f"the delay of the loopback is off by {shift:.1f} frames at {frame / rate:.2f} s (frames lost, or"
+                    " not DC-coupled)"
+                )
                 return
         if remainder > DIFFERING * abs(match.gain) * self._departure:
             self._report(
