@@ -97,27 +97,30 @@ class DistortionLevels:
 def distortion_levels(
     record: Record, fit: RecordFit, lines: LineRegression, measured: FrequencyResponse
 ) -> DistortionLevels | None:
-    """Levels at the detection lines of a regression, with the noise of `measured`, the response from the same lines.
+    """Levels at the harmonics without voltage between the lines of a regression, with the noise of `measured`, the
+    response from the same lines.
 
     None where every harmonic is excited, where a single period cannot tell distortion from noise, or where the frames
     cannot carry so many lines.
     """
-    if len(lines.free) == 0:
-        return None
     count = len(lines.basis.orders) - len(lines.free)
-    excited, spread = lines.spread[:count], lines.spread[count:]
-    frequency = lines.free / lines.periodicity.period
-    noise = spread * np.interp(frequency, measured.frequency, measured.noise**2 / excited)
+    excited = lines.basis.orders[:count]
+    between = (lines.free > excited.min()) & (lines.free < excited.max())
+    if not np.any(between):
+        return None
+    orders, spread = lines.free[between], lines.spread[count:][between]
+    frequency = orders / lines.periodicity.period
+    noise = spread * np.interp(frequency, measured.frequency, measured.noise**2 / lines.spread[:count])
     freedom = np.interp(frequency, measured.frequency, measured.degrees_of_freedom)
-    power = np.abs(lines.amplitudes(fit.residual)[count:]) ** 2 - noise
+    power = np.abs(lines.amplitudes(fit.residual)[count:][between]) ** 2 - noise
     return DistortionLevels(
         frequency=frequency,
         power=power,
         power_uncertainty=np.sqrt(2 * np.maximum(power, 0.0) * noise + noise**2 * (1 + 2 / freedom)),
         noise=np.sqrt(noise),
-        linear=_linear_amplitude(measured, frequency, record.exposure),
+        linear=_linear_amplitude(record, fit, measured, frequency),
         noise_freedom=freedom,
-        parity=_parity(lines.basis.orders[:count], lines.free),
+        parity=_parity(excited, orders),
     )
 
 
@@ -127,7 +130,10 @@ def _parity(excited: NDArray[np.intp], free: NDArray[np.intp]) -> NDArray[np.int
     return np.where(free % 2 == 1, ODD, EVEN)
 
 
-def _linear_amplitude(measured: FrequencyResponse, frequency: Floats, exposure: float) -> Floats:
-    """Amplitude of the recorded linear answer between the lines, by straight lines of its logarithm."""
-    recorded = measured.gain * measured.input_amplitude * np.abs(np.sinc(measured.frequency * exposure))
-    return np.asarray(np.exp(np.interp(frequency, measured.frequency, np.log(np.maximum(recorded, 1e-300)))))
+def _linear_amplitude(record: Record, fit: RecordFit, measured: FrequencyResponse, frequency: Floats) -> Floats:
+    """Amplitude of the recorded linear answer, were the lines' voltage there as well: powers joined by straight lines,
+    times the fitted model, averaged over the exposure.
+    """
+    voltage = np.sqrt(np.interp(frequency, measured.frequency, measured.input_amplitude**2))
+    gain = np.abs(fit.parameters.model.response(frequency) * np.sinc(frequency * record.exposure))
+    return np.asarray(voltage * gain)

@@ -35,8 +35,9 @@ __all__ = ["LineRegression", "line_amplitudes", "periodic_response", "steady_noi
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
 FULLEST = 0.8  # of the frames: more columns than this leave no noise to judge by
+ROOMY = 0.45  # of the frames: as many columns still tell all harmonics apart when frames are lost
 EDGE = 0.02  # of a frame: so much earlier the window begins, so that rounding takes no frame from a whole period
-MOST_COLUMNS = 3000  # with more, the detection lines are left out
+MOST_COLUMNS = 1500  # with more, the harmonics far from the lines are left out
 
 
 def line_amplitudes(drive: Drive, periodicity: Periodicity) -> Complexes:
@@ -71,7 +72,7 @@ class LineRegression:
     """The steady frames and the basis they are regressed on, ready for any residual of the same record.
 
     `inside` (N,) marks the steady frames. `basis` has a cosine and a minus sine column for each of the F lines and of
-    the detection lines `free` (L,) (harmonics without voltage between the lines, where distortion sits), then the
+    the harmonics `free` (L,) that carry no voltage, where distortion sits (none with a single period), then the
     nuisances: (S, P); `inverse` (P, P) is the inverse of basis' basis; `lag` the lag (s) that the basis' time was
     shifted by; `periods` whole periods are covered.
     """
@@ -100,9 +101,8 @@ class LineRegression:
                 f"or a "
                 "longer record"
             )
-        free = _detection_orders(record, fit, periodicity, periods)
-        if periods < 2 or width + 2 * len(free) > min(FULLEST * count, MOST_COLUMNS):
-            free = free[:0]
+        room = int(min(ROOMY * count, MOST_COLUMNS) - width) // 2 if periods >= 2 else 0
+        free = _free_orders(record, fit, periodicity, periods, room=room)
         basis = basis.with_orders(np.concatenate([basis.orders, free]))
         return cls(
             periodicity=periodicity,
@@ -223,17 +223,23 @@ def periodic_response(
     return measured, in_all
 
 
-def _detection_orders(
-    record: Record, fit: RecordFit, periodicity: Periodicity, periods: int
+def _free_orders(
+    record: Record, fit: RecordFit, periodicity: Periodicity, periods: int, *, room: int
 ) -> NDArray[np.intp]:
-    """Harmonics without voltage between the lines, below half the frame rate, on which no line folds."""
+    """Harmonics without voltage below half the frame rate, on which no line folds: all of them where there is `room`,
+    else those up to three times the highest line, else those between the lines, else none.
+    """
     orders = np.round(periodicity.lines * periodicity.period).astype(np.intp)
-    free = np.setdiff1d(np.arange(orders.min() + 1, orders.max()), orders)
     top = 0.5 / record.frame_interval / fit.parameters.clock_ratio * periodicity.period  # in orders
-    free = free[free < top - 0.5]
+    free = np.setdiff1d(np.arange(1, int(np.ceil(top - 0.5))), orders)
     folded = np.abs((orders + top) % (2 * top) - top)[orders > top]
     apart = np.abs(free[:, None] - folded).min(axis=1, initial=np.inf)
-    return np.asarray(free[apart > 0.55 / periods])
+    free = free[apart > 0.55 / periods]
+    for low, high in ((0, free[-1:].sum()), (0, 3 * orders.max()), (orders.min(), orders.max())):
+        chosen = free[(free >= low) & (free <= high)]
+        if len(chosen) <= room:
+            return np.asarray(chosen)
+    return free[:0]
 
 
 def _fitted(basis: HarmonicBasis) -> Floats:
