@@ -9,8 +9,7 @@ impact); a bounce slower than 1/1000 of wn times the stop angle ends in resting 
 Between events the linear part is propagated exactly (`freqid.held_response` has the formula); the spring's curvature
 acts in half kicks before and after each step (Strang splitting). Reversals and impacts are located inside their step,
 so friction and stops are exact but for rounding; the natural frequency of a curved spring is off by (wn h)^2 / 8 of
-its relative change at most, with wn h <= 0.02 unless told: 5e-5 of the change. Read between its knots the path is a
-cubic (Hermite).
+its relative change at most, with wn h <= 0.02 unless told: 5e-5 of the change.
 
 Source: J. P. Den Hartog, Trans. ASME 53 (1931) APM-107 (Coulomb friction, piecewise linear); G. Strang, SIAM J. Numer.
 Anal. 5 (1968) 506-517.
@@ -26,12 +25,12 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from freqid.capture.motion_path import MotionPath
 from freqid.errors import CaptureError
 from freqid.held_response import Drive
-from freqid.quantity import in_unit
 from freqid.second_order import SecondOrder
 
-__all__ = ["MotionPath", "Nonlinearity", "nonlinear_motion"]
+__all__ = ["Nonlinearity", "stepped_motion"]
 
 Floats = NDArray[np.float64]
 
@@ -61,53 +60,7 @@ class Nonlinearity:
         return self.dry_friction == self.static_friction == self.cubic == self.quadratic == 0 and math.isinf(self.stop)
 
 
-@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
-class MotionPath:
-    """Angle and rate at knots (N,), cubic in between; at an impact two knots share an instant.
-
-    Before the first knot the rig stands at its first angle, after the last at its last.
-    """
-
-    time: Floats = in_unit("s")
-    angle: Floats = in_unit("angle_unit")
-    rate: Floats = in_unit("angle_unit/s")
-
-    def at(self, time: Floats) -> Floats:
-        """Angle at each instant (Q,)."""
-        i, share, width = self._locate(time)
-        x0, x1, d0, d1 = self._ends(i, width)
-        a, b = 3 * (x1 - x0) - 2 * d0 - d1, 2 * (x0 - x1) + d0 + d1
-        return np.asarray(x0 + share * (d0 + share * (a + share * b)))
-
-    def mean(self, end: Floats, exposure: float) -> Floats:
-        """Mean angle over [end - exposure, end], (Q,); the angle itself for exposure 0."""
-        if exposure <= 0:
-            return self.at(end)
-        return (self._integral(end) - self._integral(end - exposure)) / exposure
-
-    def _integral(self, time: Floats) -> Floats:
-        h = np.diff(self.time)
-        x, v = self.angle, self.rate
-        whole = h / 2 * (x[:-1] + x[1:]) + h**2 / 12 * (v[:-1] - v[1:])
-        upto = np.concatenate([[0.0], np.cumsum(whole)])
-        i, share, width = self._locate(time)
-        x0, x1, d0, d1 = self._ends(i, width)
-        a, b = 3 * (x1 - x0) - 2 * d0 - d1, 2 * (x0 - x1) + d0 + d1
-        part = width * share * (x0 + share * (d0 / 2 + share * (a / 3 + share * b / 4)))
-        outside = np.minimum(time - self.time[0], 0.0) * x[0] + np.maximum(time - self.time[-1], 0.0) * x[-1]
-        return np.asarray(upto[i] + part + outside)
-
-    def _locate(self, time: Floats) -> tuple[NDArray[np.intp], Floats, Floats]:
-        inside = np.clip(time, self.time[0], self.time[-1])
-        i = np.clip(np.searchsorted(self.time, inside, side="right") - 1, 0, len(self.time) - 2)
-        width = self.time[i + 1] - self.time[i]
-        return i, (inside - self.time[i]) / np.where(width > 0, width, 1.0), width
-
-    def _ends(self, i: NDArray[np.intp], width: Floats) -> tuple[Floats, Floats, Floats, Floats]:
-        return self.angle[i], self.angle[i + 1], self.rate[i] * width, self.rate[i + 1] * width
-
-
-def nonlinear_motion(
+def stepped_motion(
     drive: Drive, model: SecondOrder, bent: Nonlinearity, *, after: float = 1.0, step_angle: float = STEP_ANGLE
 ) -> MotionPath:
     """The angle of a rig at rest that the drive sets in motion, counted from rest, without delay.
@@ -179,11 +132,16 @@ class _SteppedRig:
         put_time, put_angle, put_rate = self._time.append, self._angle.append, self._rate.append
         for k, (level, s) in enumerate(zip(equilibrium, slope, strict=True)):
             if held:
-                direction = self._released(level - x - x * x * (quadratic + cubic * x), x)
+                force = level - x - x * x * (quadratic + cubic * x)
+                direction, begin = self._release_within(force, s, x)
                 if direction == 0:
                     self._put(start + (k + 1) * h, x, 0.0)
                     continue
                 held = False
+                if begin > 0:
+                    x, v, direction, held = self._through_events((x, 0.0, direction), level, s, start + k * h, begin)
+                    self._put(start + (k + 1) * h, x, v)
+                    continue
             if curved:
                 v -= kick * x * x * (quadratic + cubic * x)
             centre = level - s * offset - direction * self._kinetic
@@ -217,13 +175,20 @@ class _SteppedRig:
             return 0.0
         return math.copysign(1.0, force)
 
+    def _release_within(self, force: float, s: float, x: float) -> tuple[float, float]:
+        """Direction in which a standing rig sets off during a step, and when (s from the step's start)."""
+        direction = self._released(force, x)
+        if direction != 0 or s == 0:
+            return direction, 0.0
+        direction = self._released(force + s * self._h, x)
+        return direction, (direction * self._static - force) / s if direction else 0.0
+
     def _through_events(
-        self, state: tuple[float, float, float], level: float, s: float, start: float
+        self, state: tuple[float, float, float], level: float, s: float, start: float, done: float = 0.0
     ) -> tuple[float, float, float, bool]:
         """One step with reversals and impacts: angle, rate, direction of friction, and whether the rig is held."""
         x, v, direction = state
         offset = 2 * self._zeta / self._wn
-        done = 0.0
         for _ in range(ROOT_STEPS):
             centre = level + s * (done - offset) - direction * self._kinetic
             when, impact = self._first_event(x, v, centre, s, direction, self._h - done)

@@ -15,7 +15,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from freqid.capture.driver_faults import clipped, lagging, slew_limited, unequal
-from freqid.capture.nonlinear_motion import STEP_ANGLE, MotionPath, Nonlinearity, nonlinear_motion
+from freqid.capture.motion_path import MotionPath
+from freqid.capture.nonlinear_motion import STEP_ANGLE, Nonlinearity, stepped_motion
 from freqid.capture.sensor_faults import lagged, linear_path, with_play
 from freqid.held_response import Drive, HeldResponse
 from freqid.second_order import SecondOrder
@@ -139,7 +140,7 @@ def _path(drive: Drive, model: SecondOrder, faults: PlantedFaults, after: float,
         path = MotionPath(time=unit.time, angle=gain * unit.angle, rate=gain * unit.rate)
     else:
         scaled = SecondOrder.from_vector(model.vector * np.array([faults.voltage_scale, 1, 1, 1]))
-        path = nonlinear_motion(drive, scaled, faults.nonlinearity, after=after, step_angle=step_angle)
+        path = stepped_motion(drive, scaled, faults.nonlinearity, after=after, step_angle=step_angle)
     if faults.second_mode_gain:
         second, part = _second(drive, faults), gain * faults.second_mode_gain
         path = MotionPath(

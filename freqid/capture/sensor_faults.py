@@ -12,7 +12,7 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
-from freqid.capture.nonlinear_motion import MotionPath
+from freqid.capture.motion_path import MotionPath
 from freqid.held_response import Drive, HeldResponse
 
 __all__ = ["lagged", "linear_path", "with_play"]
@@ -31,16 +31,32 @@ def linear_path(
 
 
 def with_play(path: MotionPath, gap: float) -> MotionPath:
-    """Seen through a play of `gap` (angle from edge to edge), at its middle at the start."""
+    """Seen through a play of `gap` (angle from edge to edge), at its middle at the start.
+
+    The instant at which the shaft takes the sensor along is placed on the straight line between two knots.
+    """
     half = gap / 2
-    seen = path.angle[0]
-    angles, rates = [], []
-    for x, v in zip(path.angle.tolist(), path.rate.tolist(), strict=True):
-        before = seen
-        seen = min(max(seen, x - half), x + half)
+    seen, t_last, x_last = float(path.angle[0]), float(path.time[0]), float(path.angle[0])
+    standing = True
+    times, angles, rates = [], [], []
+    for t, x, v in zip(path.time.tolist(), path.angle.tolist(), path.rate.tolist(), strict=True):
+        carried = min(max(seen, x - half), x + half)
+        if carried == seen:
+            standing, rate = True, 0.0
+        else:
+            if standing and x != x_last:
+                edge = seen + half if x > seen else seen - half
+                taken = t_last + (t - t_last) * (edge - x_last) / (x - x_last)
+                times += [taken, taken]
+                angles += [seen, seen]
+                rates += [0.0, v]
+            standing, rate = False, v
+        seen = carried
+        times.append(t)
         angles.append(seen)
-        rates.append(v if seen != before else 0.0)
-    return MotionPath(time=path.time, angle=np.array(angles), rate=np.array(rates))
+        rates.append(rate)
+        t_last, x_last = t, x
+    return MotionPath(time=np.array(times), angle=np.array(angles), rate=np.array(rates))
 
 
 def lagged(path: MotionPath, time_constant: float) -> MotionPath:

@@ -17,7 +17,7 @@ from freqid.crosscheck.evidence import Evidence
 from freqid.crosscheck.exhibit import Exhibit, Series, SeriesSource
 from freqid.second_order import SecondOrder
 
-__all__ = ["causes_from_data"]
+__all__ = ["causes_from_data", "causes_of_an_open_verdict"]
 
 USUAL_LOSS = 0.03
 FRAMES_PER_PERIOD = 8
@@ -28,7 +28,6 @@ def causes_from_data(evidence: Evidence) -> tuple[Cause, ...]:
     """Causes that lie in the data, strongest first."""
     clocks = (("frequency test", evidence.model.clock), ("step test", evidence.step.clock))
     found = [
-        _too_little_data(evidence),
         *(_lost_frames(name, clock) for name, clock in clocks),
         _low_frame_rate(evidence.model.model, evidence),
     ]
@@ -38,9 +37,10 @@ def causes_from_data(evidence: Evidence) -> tuple[Cause, ...]:
     return tuple(sorted([*others, *worst], key=lambda cause: -cause.strength))
 
 
-def _too_little_data(evidence: Evidence) -> Cause | None:
+def causes_of_an_open_verdict(evidence: Evidence) -> tuple[Cause, ...]:
+    """Too little data, where the uncertainty alone leaves the verdict open."""
     if evidence.check.verdict != "unresolved":
-        return None
+        return ()
     wide = [
         row.quantity.replace("_", " ")
         for row in evidence.check.compared
@@ -50,12 +50,13 @@ def _too_little_data(evidence: Evidence) -> Cause | None:
         and row.difference.expanded_uncertainty > row.tolerance
     ]
     if not wide:
-        return None
-    return Cause(
+        return ()
+    cause = Cause(
         cause="too_little_data",
         strength=1.0,
         evidence=f"The uncertainty of the difference alone exceeds the tolerance for {', '.join(wide)}.",
     )
+    return (cause,)
 
 
 def _lost_frames(test: str, clock: ClockMap) -> Cause | None:

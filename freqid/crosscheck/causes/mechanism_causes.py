@@ -16,7 +16,7 @@ import numpy as np
 from freqid.crosscheck.causes.exhibits import exhibit_for
 from freqid.crosscheck.causes.mechanism_trials import NAMED, Trial, Trials, try_mechanisms
 from freqid.crosscheck.causes.mechanism_words import MechanismWords, words_for
-from freqid.crosscheck.causes.recorded_tests import recorded_tests
+from freqid.crosscheck.causes.recorded_tests import prepared_tests
 from freqid.crosscheck.comparison_result import Cause
 from freqid.crosscheck.evidence import Evidence
 
@@ -31,7 +31,7 @@ CONTAINED = {"operating_point": ("scale_error", "time_scale", "damping_differs")
 
 def causes_from_records(evidence: Evidence) -> tuple[Cause, ...]:
     """Causes for which the raw records speak, strongest first; none where no record is at hand."""
-    tests = recorded_tests(evidence)
+    tests = prepared_tests(evidence)
     if not tests:
         return ()
     trials = try_mechanisms(tests)

@@ -24,6 +24,8 @@ __all__ = ["NAMED", "Trial", "Trials", "try_mechanisms"]
 
 Floats = NDArray[np.float64]
 NAMED = 14.0  # score
+KINDS = ("response", "step")
+EACH_ITS_OWN = "operating_point"
 WORTH_FITTING = 6.0
 SHARE_WORTH_FITTING = 0.25  # of the best first-order rise
 MOST_FITTED = 6
@@ -58,7 +60,8 @@ def try_mechanisms(tests: tuple[RecordedTest, ...]) -> Trials:
     """Fit the healthy rig and every mechanism that may explain more."""
     rig = SharedRig(tests)
     healthy, state = rig.fit(HEALTHY, np.empty(0))
-    looks = [(mechanism, _first_look(rig, mechanism, state, healthy)) for mechanism in mechanisms_for(tests)]
+    tried = [m for m in mechanisms_for(tests) if m.code != EACH_ITS_OWN or len(tests) > len(KINDS)]
+    looks = [(mechanism, _first_look(rig, mechanism, state, healthy)) for mechanism in tried]
     looks = sorted((look for look in looks if look[1]), key=lambda look: -look[1][0].rise)
     best = looks[0][1][0].rise if looks else 0.0
     promising = [look for look in looks if look[1][0].rise > max(WORTH_FITTING, SHARE_WORTH_FITTING * best)]
@@ -67,6 +70,7 @@ def try_mechanisms(tests: tuple[RecordedTest, ...]) -> Trials:
     for i, (mechanism, fit, end) in enumerate(fits[:POLISHED]):
         if fit.effective_share < WELL_FITTED:
             fits[i] = mechanism, *rig.fit(mechanism, fit.numbers, state=end, passes=POLISHING, own_slopes=True)
+    fits += _each_its_own(tests, state)
     share = max((fit for _, fit, _ in fits), key=lambda f: f.log_likelihood, default=healthy).effective_share
     trials = []
     for mechanism, fit, _ in fits:
@@ -75,6 +79,24 @@ def try_mechanisms(tests: tuple[RecordedTest, ...]) -> Trials:
         trials.append(Trial(mechanism=mechanism, fit=fit, rise=rise, score=rise - penalty))
     trials.sort(key=lambda trial: -trial.score)
     return Trials(tests=tests, healthy=healthy, found=tuple(trials), n_frames=rig.n_frames)
+
+
+def _each_its_own(tests: tuple[RecordedTest, ...], state: Floats) -> list[tuple[Mechanism, JointFit, Floats]]:
+    """A rig of its own for each of two tests: these fits exist already."""
+    if tuple(test.kind for test in tests) != KINDS:
+        return []
+    (mechanism,) = (m for m in mechanisms_for(tests) if m.code == EACH_ITS_OWN)
+    first, second = (test.fit.parameters.vector[:3] for test in tests)
+    if first[0] * second[0] <= 0:
+        return []
+    deviations = [test.relative_uncertainty for test in tests]
+    fit = JointFit(
+        parameters=tuple(test.fit.parameters for test in tests),
+        numbers=np.log(second / first),
+        uncertainty=np.hypot(*deviations),
+        residuals=tuple(test.fit.residual for test in tests),
+    )
+    return [(mechanism, fit, state)]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)

@@ -46,6 +46,12 @@ class _Figures:
         value, deviation = factor * float(fit.numbers[i]), abs(factor) * float(fit.uncertainty[i])
         return str(Quantity.normal(value, self.angle_unit if unit is None else unit, deviation))
 
+    def change(self, i: int = 0) -> str:
+        """A number that is a natural logarithm, as a relative change."""
+        fit = self.trial.fit
+        factor = math.exp(float(fit.numbers[i]))
+        return str(Quantity.normal(100 * (factor - 1), "%", 100 * factor * float(fit.uncertainty[i])))
+
     def value(self, i: int = 0) -> float:
         return float(self.trial.fit.numbers[i])
 
@@ -166,7 +172,7 @@ def _second_mode(f: _Figures) -> MechanismWords:
 def _scale(f: _Figures) -> MechanismWords:
     return MechanismWords(
         code="scale_error",
-        finding=f"The step test's angle per volt is {f.number(0, 100, '%')} larger, the same at all frequencies: the "
+        finding=f"The step test's angle per volt differs by {f.change()}, the same at all frequencies: the "
         f"scale of sensor or output differs between the tests",
         doubt="Whether the voltage or the angle is scaled otherwise cannot be told from the two tests.",
         settling_test="Hold the rig at a known angle and at a known voltage, and read both scales.",
@@ -176,8 +182,8 @@ def _scale(f: _Figures) -> MechanismWords:
 def _time_scale(f: _Figures) -> MechanismWords:
     return MechanismWords(
         code="time_scale",
-        finding=f"The step test's times are {f.number(0, -100, '%')} longer at equal gain and damping ratio: a clock "
-        f"or a sample rate is stated wrongly in one test",
+        finding=f"The step test's natural frequency and all its times differ by {f.change()} at equal gain and damping "
+        f"ratio: a clock or a sample rate is stated wrongly in one test",
         doubt=_clock_doubt(f),
         settling_test="Record a signal of known frequency with both logs, or both tests on one clock.",
     )
@@ -200,8 +206,8 @@ def _clock_doubt(f: _Figures) -> str:
 def _damping(f: _Figures) -> MechanismWords:
     return MechanismWords(
         code="damping_differs",
-        finding=f"The step test's damping ratio is {f.number(0, 100, '%')} larger (natural logarithm) at equal gain "
-        f"and natural frequency: the rig's damping itself changed between the tests",
+        finding=f"The step test's damping ratio differs by {f.change()} at equal gain and natural frequency: the rig's "
+        f"damping itself changed between the tests",
         doubt="No mechanism in the records explains it better; air, temperature or load may.",
         settling_test=f"Repeat the frequency test now: `freqid excite {f.folder} --kind multisine --seed 2`.",
     )
@@ -210,12 +216,12 @@ def _damping(f: _Figures) -> MechanismWords:
 def _operating_point(f: _Figures) -> MechanismWords:
     parts = " and ".join(f"{t.kind} test {_levels(t.record.drive)}" for t in f.trials.tests)
     changes = ", ".join(
-        f"{name} by {f.number(i, 100, '%')}" for i, name in enumerate(("gain", "natural frequency", "damping ratio"))
+        f"{name} by {f.change(i)}" for i, name in enumerate(("gain", "natural frequency", "damping ratio"))
     )
     return MechanismWords(
         code="operating_point",
-        finding=f"Each test alone is that of a linear rig, but not of the same: {changes} (natural logarithms, step "
-        f"against frequency test); the tests were made at different operating points or amplitudes ({parts})",
+        finding=f"Each test alone is that of a linear rig, but not of the same: {changes} (step against "
+        f"frequency test); the tests were made at different operating points or amplitudes ({parts})",
         settling_test=f"Repeat the frequency test at the operating point and amplitude of the step test: set [limits] "
         f"bias, then `freqid excite {f.folder} --kind multisine`.",
     )

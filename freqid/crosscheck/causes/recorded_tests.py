@@ -23,7 +23,7 @@ from freqid.held_response import Drive
 from freqid.records import Run, RunKind
 from freqid.second_order import SecondOrder
 
-__all__ = ["RecordedTest", "recorded_tests"]
+__all__ = ["RecordedTest", "prepared_tests"]
 
 Floats = NDArray[np.float64]
 
@@ -43,13 +43,26 @@ class RecordedTest:
     fit: RecordFit
 
     @property
+    def covariance(self) -> Floats:
+        """Covariance (3, 3) of gain, natural frequency and damping ratio from this record alone, for white noise."""
+        jacobian, noise = self.fit.prediction.jacobian, self.fit.sum_of_squares / len(self.record.stamp)
+        scale = np.maximum(np.linalg.norm(jacobian, axis=0), 1e-300)
+        inverse = np.linalg.pinv((jacobian / scale).T @ (jacobian / scale), rcond=1e-12)
+        return np.asarray((inverse / np.outer(scale, scale))[:3, :3] * noise)
+
+    @property
+    def relative_uncertainty(self) -> Floats:
+        """Relative standard uncertainty (3,) of gain, natural frequency and damping ratio from this record alone."""
+        return np.asarray(np.sqrt(np.diag(self.covariance)) / np.abs(self.fit.parameters.vector[:3]))
+
+    @property
     def time(self) -> Floats:
         """Time of each frame's exposure middle on the voltage's clock, delay taken out: (N,) s."""
         p = self.fit.parameters
         return p.clock_ratio * self.record.stamp - p.model.delay - self.record.exposure / 2
 
 
-def recorded_tests(evidence: Evidence) -> tuple[RecordedTest, ...]:
+def prepared_tests(evidence: Evidence) -> tuple[RecordedTest, ...]:
     """All records at hand, frequency tests first; those that cannot be fitted are left out."""
     recorded = evidence.recorded
     found = [

@@ -102,11 +102,7 @@ class SharedRig:
         """The information-weighted mean of what the records tell, with each record's own parameters."""
         information, moment = np.zeros((SHARED, SHARED)), np.zeros(SHARED)
         for test in self.tests:
-            jacobian, noise = test.fit.prediction.jacobian, test.fit.sum_of_squares / len(test.record.stamp)
-            scale = np.maximum(np.linalg.norm(jacobian, axis=0), 1e-300)
-            inverse = np.linalg.pinv((jacobian / scale).T @ (jacobian / scale), rcond=1e-12)
-            covariance = (inverse / np.outer(scale, scale))[:SHARED, :SHARED] * noise
-            weight = np.linalg.pinv(covariance)
+            weight = np.linalg.pinv(test.covariance)
             information += weight
             moment += weight @ test.fit.parameters.vector[:SHARED]
         shared = np.linalg.solve(information, moment)
