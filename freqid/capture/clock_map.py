@@ -23,7 +23,8 @@ class ClockMap:
 
     `ratio_ppm` is (ratio - 1) in parts per million. `lag` is what the records themselves show: delay - offset.
     `lost_at` (L,) are the stamps just before each gap, `lost_frames` how many frames fell into the gaps;
-    `outlier_at` are the stamps of the samples left out, `silently_lost_at` those after losses without a gap. `jitter`
+    `outlier_at` are the stamps of the samples left out, `silently_lost_at` those after losses without a gap, and
+    `silently_lost_between` (L, 2) the stamps between which each of these lies with 95 % probability. `jitter`
     is the rms deviation of the stamps from a uniform grid in s; `repeated_stamps` counts stamps equal to the one
     before.
     """
@@ -39,6 +40,9 @@ class ClockMap:
     frames: int = 0
     outlier_at: NDArray[np.float64] = field(default_factory=lambda: np.empty(0), metadata={"unit": "s"})
     silently_lost_at: NDArray[np.float64] = field(default_factory=lambda: np.empty(0), metadata={"unit": "s"})
+    silently_lost_between: NDArray[np.float64] = field(
+        default_factory=lambda: np.empty((0, 2)), metadata={"unit": "s"}
+    )
 
     def as_json(self) -> dict[str, Any]:
         """The form of "clock" in results/model.json."""
@@ -54,6 +58,7 @@ class ClockMap:
             "lost_at": self.lost_at.tolist(),
             "outlier_at": self.outlier_at.tolist(),
             "silently_lost_at": self.silently_lost_at.tolist(),
+            "silently_lost_between": self.silently_lost_between.tolist(),
         }
 
     @classmethod
@@ -74,4 +79,5 @@ class ClockMap:
             frames=data["frames"],
             outlier_at=np.array(data["outlier_at"]),
             silently_lost_at=np.array(data["silently_lost_at"]),
+            silently_lost_between=np.array(data.get("silently_lost_between", []), dtype=float).reshape(-1, 2),
         )

@@ -19,7 +19,7 @@ from freqid.estimate.periodic import LineRegression, steady_noise
 from freqid.estimate.prediction import MotionParameters
 from freqid.estimate.record import Record
 from freqid.estimate.record_fit import RecordFit, fit_record, refine
-from freqid.estimate.silent_losses import with_silent_losses
+from freqid.estimate.silent_losses import SilentLosses, with_silent_losses
 from freqid.estimate.starting_values import starting_values
 from freqid.estimate.weighted_fit import WeightedFit, covariance_of, fit_weighted
 from freqid.quantity import Caveat
@@ -41,7 +41,7 @@ class Motion:
     lines: LineRegression | None
     caveats: tuple[Caveat, ...] = ()
     outlier_at: Floats = field(default_factory=lambda: np.empty(0))
-    silently_lost_at: Floats = field(default_factory=lambda: np.empty(0))
+    losses: SilentLosses = field(default_factory=SilentLosses)
 
     @property
     def undetermined(self) -> tuple[str, ...]:
@@ -55,8 +55,8 @@ def estimate_motion(record: Record) -> Motion:
     On a common clock the delay is held at zero where the best one would be negative, or where a fast pole and the
     delay cannot be told apart; a caveat says so.
     """
-    record, fit, outlier_at, lost_at = _cleaned(record, fit_record(record))
-    told = _cleaning_caveats(outlier_at, lost_at)
+    record, fit, outlier_at, losses = _cleaned(record, fit_record(record))
+    told = _cleaning_caveats(outlier_at, losses)
     reason = _acausal(record, fit)
     if reason is None and record.common_clock and _ran_away(record, fit):
         reason = (
@@ -65,7 +65,7 @@ def estimate_motion(record: Record) -> Motion:
         )
     if reason is None:
         _refuse_runaway(record, fit)
-        motion = replace(_weighted(record, fit), caveats=told, outlier_at=outlier_at, silently_lost_at=lost_at)
+        motion = replace(_weighted(record, fit), caveats=told, outlier_at=outlier_at, losses=losses)
         reason = _fast_pole(record, motion.weighted)
         if reason is None:
             return motion
@@ -75,7 +75,7 @@ def estimate_motion(record: Record) -> Motion:
         _weighted(held, best),
         caveats=(*told, Caveat("delay_held_at_zero", reason)),
         outlier_at=outlier_at,
-        silently_lost_at=lost_at,
+        losses=losses,
     )
 
 
@@ -92,20 +92,20 @@ def _with_held_delay(record: Record, fit: RecordFit) -> tuple[Record, RecordFit]
     return held, min(fits, key=lambda trial: trial.sum_of_squares)
 
 
-def _cleaned(record: Record, fit: RecordFit) -> tuple[Record, RecordFit, Floats, Floats]:
-    """Outliers left out, silently lost frames put back into the stamps; the instants of both."""
+def _cleaned(record: Record, fit: RecordFit) -> tuple[Record, RecordFit, Floats, SilentLosses]:
+    """Outliers left out, silently lost frames put back into the stamps; where both were."""
     if record.same_rows:
-        return *without_outliers(record, fit), np.empty(0)
-    timed, timed_fit, lost_at = with_silent_losses(record, fit)
+        return *without_outliers(record, fit), SilentLosses()
+    timed, timed_fit, losses = with_silent_losses(record, fit)
     timed, timed_fit, outlier_at = without_outliers(timed, timed_fit)
     if len(outlier_at):
         # without the outliers a loss shows more sharply
         timed, timed_fit, more = with_silent_losses(timed, timed_fit)
-        lost_at = np.sort(np.concatenate([lost_at, more]))
-    return timed, timed_fit, outlier_at, lost_at
+        losses = losses.joined(more)
+    return timed, timed_fit, outlier_at, losses
 
 
-def _cleaning_caveats(outlier_at: Floats, lost_at: Floats) -> tuple[Caveat, ...]:
+def _cleaning_caveats(outlier_at: Floats, losses: SilentLosses) -> tuple[Caveat, ...]:
     found = []
     if len(outlier_at):
         found.append(
@@ -116,12 +116,13 @@ def _cleaning_caveats(outlier_at: Floats, lost_at: Floats) -> tuple[Caveat, ...]
                 f"{_instants(outlier_at)}.",
             )
         )
-    if len(lost_at):
+    if len(losses.at):
+        widest = float(np.max(np.diff(losses.between, axis=1)))
         found.append(
             Caveat(
                 "frames_silently_lost",
-                f"{len(lost_at)} times frames were lost without a gap in the stamps; the later stamps were moved, from "
-                f"{_instants(lost_at)} on.",
+                f"{len(losses.at)} times frames were lost without a gap in the stamps; the later stamps were moved, "
+                f"from {_instants(losses.at)} on (each instant is known to within {widest:.2g} s at 95 %).",
             )
         )
     return tuple(found)

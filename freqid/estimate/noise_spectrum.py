@@ -23,7 +23,7 @@ from numpy.typing import NDArray
 
 from freqid.estimate.frame_grid import FrameGrid
 
-__all__ = ["NoiseSpectrum", "noise_spectrum"]
+__all__ = ["NoiseSpectrum", "autoregression_of", "noise_spectrum"]
 
 Floats = NDArray[np.float64]
 
@@ -104,6 +104,14 @@ def noise_spectrum(
         degrees_of_freedom=np.where(coloured, narrow_freedom, wide_freedom),
         usable=usable,
     )
+
+
+def autoregression_of(noise: Floats) -> Floats:
+    """Prediction-error filter (p + 1,), first coefficient 1, fitted to noise (N,) on a uniform grid; (1,) where it is
+    white.
+    """
+    power = np.abs(np.fft.rfft(noise - np.mean(noise))) ** 2
+    return _autoregression(np.fft.irfft(power, len(noise))[: HIGHEST_ORDER + 1], count=len(noise))
 
 
 def _shape(power: Floats, index: NDArray[np.intp], grid: FrameGrid) -> Floats:

@@ -48,6 +48,30 @@ def test_frames_lost_without_a_gap_are_found(clean: Run, vane_model: SecondOrder
     assert np.all(np.abs(found.model.vector - vane_model.vector)[:3] < 5 * deviation)
 
 
+def test_a_loss_at_rest_is_placed_no_better_than_the_motion_tells(
+    short_steps: InputStream, vane_model: SecondOrder
+) -> None:
+    """While the angle stands still between two steps nothing tells when a frame was lost: the interval spans the rest.
+
+    At the lost frame the swing has decayed to less than a third of the noise. The loss lies in its interval, which is
+    longer than half a second, and the parameters are as good as ever.
+    """
+    sensor = SimulatedSensor(sample_rate=60.0, exposure=0.008, noise=0.3, jitter=0.001, common_clock=True)
+    rig = SimulatedRig(model=vane_model, sensor=sensor)
+    run = rig.run(short_steps, kind="response", name="camera", rng=np.random.default_rng(7))
+    changes = short_steps.time[1:][np.diff(short_steps.voltage) != 0]
+    longest = int(np.argmax(np.diff(changes)))
+    quiet = changes[longest] + 0.85 * (changes[longest + 1] - changes[longest])
+    at = int(np.argmin(np.abs(run.angle.time - quiet)))
+    found = identify(close_up(run, [at])).model
+    assert len(found.clock.silently_lost_at) == 1
+    low, high = found.clock.silently_lost_between[0]
+    assert low <= run.angle.time[at] <= high
+    assert high - low > 0.5
+    deviation = np.sqrt(np.diag(found.covariance))
+    assert np.all(np.abs(found.model.vector - vane_model.vector) < 5 * deviation)
+
+
 def test_nothing_is_found_where_nothing_is_lost(clean: Run) -> None:
     """Neither losses nor outliers in a clean record."""
     clock = identify(clean).model.clock
