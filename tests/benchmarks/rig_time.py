@@ -14,9 +14,9 @@ Rig times for equal uncertainty go with the square of the uncertainty.
 The information bound: lines at 0.05 Hz, driven all 60 s without rest or ramp, crest factor sqrt 2 in voltage and angle,
 the rig, the clocks and the rest angle known, the same limits. With the D-optimal power the determinant of the
 information about the four parameters is largest; the share is the fourth root of the ratio of determinants (the usual
-efficiency of a design: the part of the rig time that the bound would need). With the power that is best for the damping ratio
-alone the share is that of its variances. A crest factor below sqrt 2, which many lines together can have (1.25 and
-less), passes 100 %.
+efficiency of a design: the part of the rig time that the bound would need). With the power that is best for the
+damping ratio alone the share is that of its variances. A crest factor below sqrt 2, which many lines together can have
+(1.25 and less), passes 100 %.
 
 Sources of the algorithm: V. V. Fedorov, Theory of Optimal Experiments (1972), chapter 2; D. M. Titterington, Proc.
 Conf. Information Sciences and Systems (1976) 213-216.
