@@ -52,7 +52,7 @@ from freqid.step_relations import (
     percent_overshoot,
 )
 
-__all__ = ["DERIVED_NAMES", "derived_quantities", "undefined_reasons"]
+__all__ = ["DERIVED_NAMES", "derived_quantities", "settling_quantity", "undefined_reasons"]
 
 Floats = NDArray[np.float64]
 
@@ -163,6 +163,28 @@ def derived_quantities(
         name: None if name in absent else _quantity(name, estimate, angle_unit, delay_included)
         for name in DERIVED_NAMES
     }
+
+
+def settling_quantity(
+    parameters: ArrayLike, covariance: ArrayLike, band: float, *, degrees_of_freedom: float = math.inf
+) -> Quantity | None:
+    """Settling time in s, from the onset, to within ± `band` (a fraction of the final value, 0.015 for 1.5 %).
+
+    Parameters, uncertainty and errors as for `derived_quantities`; None where the 95 % region leaves it without bound.
+    """
+    estimate = checked_estimate(parameters, covariance, degrees_of_freedom)
+    depends_on = [FREQUENCY, DAMPING]
+    reach = joint_radius(len(depends_on), degrees_of_freedom) * estimate.uncertainties
+    if not np.all(np.isfinite(reach[depends_on])) or np.any(estimate.point[depends_on] <= reach[depends_on]):
+        return None
+    value = float(normalised_settling_time(estimate.point[DAMPING], band)) / (2 * math.pi * estimate.point[FREQUENCY])
+    spread = settling_range(band, estimate, depends_on)
+    return Quantity(
+        value=float(value),
+        unit="s",
+        standard_uncertainty=spread.standard_uncertainty,
+        interval_95=(float(min(value, max(spread.low, 0.0))), float(max(value, spread.high))),
+    )
 
 
 def undefined_reasons(

@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import lru_cache
 from typing import Any
 
@@ -84,6 +84,14 @@ class Quantity:
     def expanded_uncertainty(self) -> float:
         """Half the width of the 95 % interval."""
         return (self.interval_95[1] - self.interval_95[0]) / 2
+
+    @property
+    def size(self) -> Quantity:
+        """Its absolute value: a gain of -12 (reversed sensor) is as large as one of 12."""
+        if self.value >= 0:
+            return self
+        low, high = self.interval_95
+        return replace(self, value=-self.value, interval_95=(-high, -low))
 
     def as_json(self) -> dict[str, Any]:
         """The form of results/*.json."""

@@ -3,16 +3,19 @@
 from __future__ import annotations
 
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import click
 
 from freqid.cli.options import folder_argument, json_option
-from freqid.cli.output import print_json, print_table
+from freqid.cli.output import print_caveats, print_json, print_table, progress_bar
 from freqid.crosscheck.comparison_result import ComparedRow, CrossCheck
-from freqid.crosscheck.result_file import crosscheck_as_json
 from freqid.quantity import Quantity
-from freqid.stages.crosscheck import cross_check_folder
 from freqid.test_folder import TestFolder
+
+if TYPE_CHECKING:
+    from freqid.crosscheck.requirements import RequirementRow
+    from freqid.stages.comparison import Comparison
 
 __all__ = ["EXIT_STATUS", "command", "print_cross_check"]
 
@@ -21,13 +24,25 @@ EXIT_STATUS = {"agree": 0, "disagree": 3, "unresolved": 4}
 
 @click.command("crosscheck")
 @folder_argument
-@json_option
-def command(folder: Path, as_json: bool) -> int:
+@click.argument("others", nargs=-1, type=click.Path(path_type=Path))
+@click.option("--against", multiple=True, metavar="QUANTITY=VALUE",
+              help='A value from elsewhere, such as "gain=12 ± 0.3" (95 %), "gain=12(0.3)" (standard uncertainty).')
+@json_option  # fmt: skip
+def command(folder: Path, others: tuple[Path, ...], against: tuple[str, ...], as_json: bool) -> int:
     """Hold the frequency test of FOLDER against its step test, within the tolerances of rig.toml.
 
-    Exit status 0 agree, 3 disagree, 4 unresolved. Writes results/crosscheck.json. Example: freqid crosscheck vane
+    With OTHERS: the tests of FOLDER against those of the other folders, like against like. With --against: the tests
+    of FOLDER against typed values. Exit status 0 agree, 3 disagree, 4 unresolved. Writes results/crosscheck.json, or
+    results/comparison.json. Examples: freqid crosscheck vane; freqid crosscheck vane last-month; freqid crosscheck
+    vane --against "natural_frequency=3.0 ± 0.1"
     """
-    check = cross_check_folder(TestFolder.existing(folder))
+    if others or against:
+        return _compared(TestFolder.existing(folder), others, against, as_json=as_json)
+    from freqid.crosscheck.result_file import crosscheck_as_json
+    from freqid.stages.crosscheck import cross_check_folder
+
+    with progress_bar() as progress:
+        check = cross_check_folder(TestFolder.existing(folder), progress=progress)
     if as_json:
         print_json({"format": "freqid crosscheck", "format_version": 1, **crosscheck_as_json(check)})
     else:
@@ -36,7 +51,7 @@ def command(folder: Path, as_json: bool) -> int:
 
 
 def print_cross_check(check: CrossCheck) -> None:
-    """Every row, the agreement strip, then the verdict, its causes and the next test."""
+    """Every row, the agreement strip, the acceptance limits, then the verdict, its causes and the next test."""
     print_table(
         [_cells(row) for row in check.compared],
         columns=("quantity", *check.labels, "difference", "unit", "En", "verdict"),
@@ -45,16 +60,59 @@ def print_cross_check(check: CrossCheck) -> None:
         if row.difference is None:
             click.echo(f" {row.quantity.replace('_', ' ')}: {row.reason}")
     click.echo(f"\n{_strip(check)}")
+    if check.requirements:
+        _print_requirements(check.requirements)
     click.echo(f"\n{check.verdict.upper()}: {check.sentence}")
     if check.joint is not None:
         click.echo(f"Jointly: chi-square {check.joint.statistic:.3g} with {check.joint.degrees_of_freedom} degrees of "
                    f"freedom, p = {check.joint.p_value:.2g}")  # fmt: skip
     for cause in check.causes:
         click.echo(f"Cause? {cause.cause.replace('_', ' ')} ({cause.strength:.1f}): {cause.evidence}")
+        if cause.against:
+            click.echo(f"       but: {cause.against}")
     if check.next_test is not None:
-        for command in check.next_test.commands or (check.next_test.command,):
-            click.echo(f"Next: {command}")
+        for one in check.next_test.commands or (check.next_test.command,):
+            click.echo(f"Next: {one}")
         click.echo(f"      {check.next_test.reason}")
+
+
+def _compared(folder: TestFolder, others: tuple[Path, ...], against: tuple[str, ...], *, as_json: bool) -> int:
+    from freqid.stages.comparison import compare_folders, compare_with_typed_values
+
+    if others and against:
+        raise click.UsageError("give either other folders or --against, not both")
+    if others:
+        comparison = compare_folders([folder, *(TestFolder.existing(other) for other in others)])
+    else:
+        comparison = compare_with_typed_values(folder, against)
+    if as_json:
+        print_json({"format": "freqid comparison", "format_version": 1, **comparison.as_json()})
+    else:
+        _print_comparison(comparison)
+    return EXIT_STATUS[comparison.verdict]
+
+
+def _print_comparison(comparison: Comparison) -> None:
+    for number, check in enumerate(comparison.checks):
+        click.echo(f"{'' if number == 0 else chr(10)}{' against '.join(check.labels)}")
+        print_cross_check(check)
+        print_caveats(check.caveats)
+
+
+def _print_requirements(rows: tuple[RequirementRow, ...]) -> None:
+    click.echo()
+    print_table(
+        [_requirement_cells(row) for row in rows],
+        columns=("required", "limit", "frequency test", "step test", "verdict"),
+    )
+
+
+def _requirement_cells(row: RequirementRow) -> tuple[str, ...]:
+    bound = "at most" if row.sense == "max" else "at least"
+    unit = "" if row.unit == "1" else f" {row.unit}"
+    verdict = f"{row.verdict}: {row.reason}" if row.reason else row.verdict
+    numbers = (_text(row.frequency_test), _text(row.step_test))
+    return row.quantity.replace("_", " "), f"{bound} {row.limit:g}{unit}", *numbers, verdict
 
 
 def _cells(row: ComparedRow) -> tuple[str, ...]:

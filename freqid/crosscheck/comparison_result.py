@@ -13,6 +13,7 @@ from freqid.quantity import Caveat, Quantity
 
 if TYPE_CHECKING:
     from freqid.crosscheck.exhibit import Exhibit
+    from freqid.crosscheck.requirements import RequirementRow
 
 __all__ = ["USUAL_LABELS", "Cause", "ComparedRow", "CrossCheck", "JointTest", "NextTest", "RowVerdict", "Verdict"]
 
@@ -141,7 +142,8 @@ class NextTest:
 class CrossCheck:
     """The verdict with everything it rests on.
 
-    `sentence` is the reason in one sentence, `labels` what the two columns of a row are.
+    `sentence` is the reason in one sentence, `labels` what the two columns of a row are, `requirements` the acceptance
+    limits of the rig sheet as judged.
     """
 
     verdict: Verdict
@@ -151,4 +153,5 @@ class CrossCheck:
     causes: tuple[Cause, ...] = ()
     next_test: NextTest | None = None
     labels: tuple[str, str] = USUAL_LABELS
+    requirements: tuple[RequirementRow, ...] = ()
     caveats: tuple[Caveat, ...] = ()

@@ -13,7 +13,7 @@ from dataclasses import dataclass, field
 import numpy as np
 from numpy.typing import NDArray
 
-from freqid.derived import derived_quantities
+from freqid.derived import derived_quantities, settling_quantity
 from freqid.derived_uncertainty import DAMPING, checked_estimate, propagated
 from freqid.estimate.model import IdentifiedModel
 from freqid.estimate.resonance import ResonanceReading
@@ -35,7 +35,8 @@ class Findings:
     """One result: its parameters with their covariance, what it measured, what it implies, and how it is called.
 
     `vector` (4,) and `covariance` (4, 4) stand in `PARAMETER_ORDER`; a parameter that is None in `parameters` has no
-    meaning there. `silence` says, by quantity, why one was not measured.
+    meaning there. `silence` says, by quantity, why one was not measured. `recorded_time` and `folder` serve the
+    proposal of a longer test.
     """
 
     label: str
@@ -43,11 +44,14 @@ class Findings:
     parameters: Mapping[str, Quantity | None]
     vector: Floats
     covariance: Floats
+    degrees_of_freedom: float
     angle_unit: str
     offset_known: bool
     measured: Mapping[str, Quantity | None]
     implied: Mapping[str, Quantity | None]
     silence: Mapping[str, str] = field(default_factory=dict)
+    recorded_time: float = 0.0  # s; 0 for what cannot be repeated
+    folder: str = "FOLDER"
 
     def shown(self, name: str) -> Quantity | None:
         """The quantity as it was measured, else as the model implies it; None where neither."""
@@ -58,9 +62,15 @@ class Findings:
         """Whether this kind of result speaks of the quantity at all."""
         return name in self.measured or name in self.implied
 
+    def settling_time(self, band: float) -> Quantity | None:
+        """Settling time (s, from the onset) to within ± `band` of the final value, by the fitted model."""
+        if self.parameters.get("natural_frequency") is None or self.parameters.get("damping_ratio") is None:
+            return None
+        return settling_quantity(self.vector, self.covariance, band, degrees_of_freedom=self.degrees_of_freedom)
+
 
 def findings_of_model(
-    model: IdentifiedModel, resonance: ResonanceReading | str, *, label: str = "frequency test"
+    model: IdentifiedModel, resonance: ResonanceReading | str, *, label: str = "frequency test", folder: str = "FOLDER"
 ) -> Findings:
     """A frequency test: measured is the peak of the curve (or `resonance` says why there is none)."""
     reading: dict[str, Quantity | None] = dict.fromkeys(RESONANCE)
@@ -73,15 +83,18 @@ def findings_of_model(
         parameters=model.parameters,
         vector=model.model.vector,
         covariance=model.covariance,
+        degrees_of_freedom=model.degrees_of_freedom,
         angle_unit=model.angle_unit,
         offset_known=model.clock.offset_known,
         measured=reading,
         implied=_implied(model.model, model.covariance, model.degrees_of_freedom, model.angle_unit, model.parameters),
         silence=silence,
+        recorded_time=model.clock.frames * model.clock.frame_interval,
+        folder=folder,
     )
 
 
-def findings_of_step(step: StepResult, *, label: str = "step test") -> Findings:
+def findings_of_step(step: StepResult, *, label: str = "step test", folder: str = "FOLDER") -> Findings:
     """A step test: measured are the pooled read-offs."""
     missing = {name: f"the {name.replace('_', ' ')} was not read off the steps" for name in step.quantities}
     return Findings(
@@ -90,11 +103,14 @@ def findings_of_step(step: StepResult, *, label: str = "step test") -> Findings:
         parameters=step.parameters,
         vector=step.model.vector,
         covariance=step.covariance,
+        degrees_of_freedom=step.degrees_of_freedom,
         angle_unit=step.angle_unit,
         offset_known=step.clock.offset_known,
         measured=step.quantities,
         implied=_implied(step.model, step.covariance, step.degrees_of_freedom, step.angle_unit, step.parameters),
         silence=missing,
+        recorded_time=step.clock.frames * step.clock.frame_interval,
+        folder=folder,
     )
 
 

@@ -18,11 +18,12 @@ from typing import Literal
 
 from excitation.errors import ExcitationError
 from freqid.crosscheck.comparison_result import ComparedRow, CrossCheck, NextTest
+from freqid.crosscheck.findings import Findings
 from freqid.estimate.model import IdentifiedModel
 from freqid.quantity import coverage_factor
 from freqid.step_test.step_result import StepResult
 
-__all__ = ["Forecast", "Promise", "TestKind", "propose_next_test"]
+__all__ = ["Forecast", "Promise", "TestKind", "propose_next_test", "propose_repeat"]
 
 TestKind = Literal["multisine", "step"]
 
@@ -31,6 +32,7 @@ SPARE = 1.15  # of the duration: the noise of the next run is not exactly that o
 FEWEST_FREEDOM = 60.0  # degrees of freedom that the coverage factor of the next test allows for
 SHORTEST_CHANGE = 1.2  # a test is repeated with at least this much less uncertainty
 LONGEST = 3600.0  # s
+NO_HINDRANCE = 0.5  # of the half width wanted: a test that certain need not be repeated
 
 _SETTLES = "which settles it unless the true difference lies just below the tolerance."
 _FALLS_SHORT = "but ± {:.2g} % is needed: lower the noise of the angle, or widen the tolerance."
@@ -96,6 +98,37 @@ def propose_next_test(
         return _planned(needs, forecast or usual, folder)
     except ExcitationError:  # the rig sheet tells too little to design a test
         return _planned(needs, usual, folder)
+
+
+def propose_repeat(check: CrossCheck, first: Findings, second: Findings) -> NextTest | None:
+    """The longer test of either side that would settle an unresolved comparison of any two results.
+
+    None where the verdict stands, or where neither side can be repeated. Uncertainty is taken to fall with the root of
+    the duration.
+    """
+    rows = [row for row in check.compared if row.tolerance is not None and row.difference is not None]
+    sides = [side for side in (first, second) if side.recorded_time > 0]
+    if check.verdict != "unresolved" or not rows or not sides:
+        return None
+    needs = [_need(row) for row in rows]
+    commands = []
+    for side in sides:
+        halves = [need.frequency_half if side is first else need.step_half for need in needs]
+        factor = max(half / need.wanted for need, half in zip(needs, halves, strict=True))
+        if factor < NO_HINDRANCE and len(sides) > 1:
+            continue
+        duration = _round_up(SPARE * side.recorded_time * max(factor * math.sqrt(2), SHORTEST_CHANGE) ** 2)
+        kind = "step" if side.kind == "step test" else "multisine"
+        commands.append(f"freqid excite {side.folder} --kind {kind} --duration {duration}")
+    if not commands:
+        return None
+    wanted = max(100 * need.wanted / need.mean for need in needs)
+    return NextTest(
+        command=commands[0],
+        reason=f"A longer test brings every difference to 0.4 of its tolerance (± {wanted:.2g} % at most).",
+        kind=commands[0].split("--kind ")[1].split()[0],
+        commands=tuple(commands),
+    )
 
 
 def _after_disagreement(check: CrossCheck, folder: str) -> NextTest:

@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from freqid.crosscheck.comparison_result import USUAL_LABELS, Cause, ComparedRow, CrossCheck, JointTest, NextTest
+from freqid.crosscheck.requirements import RequirementRow
 from freqid.errors import TestFolderError
 from freqid.quantity import Caveat, Quantity
 
@@ -35,6 +36,7 @@ def crosscheck_as_json(check: CrossCheck) -> dict[str, Any]:
         "joint": None if check.joint is None else asdict(check.joint),
         "causes": [cause.as_json() for cause in check.causes],
         "next_test": None if check.next_test is None else check.next_test.as_json(),
+        "requirements": [row.as_json() for row in check.requirements],
         "warnings": [c.as_json() for c in check.caveats],
     }
 
@@ -51,6 +53,7 @@ def read_crosscheck(folder: TestFolder) -> CrossCheck:
             causes=tuple(Cause.from_json(cause) for cause in content["causes"]),
             next_test=NextTest.from_json(content["next_test"]),
             labels=_labels(content.get("labels", USUAL_LABELS)),
+            requirements=tuple(RequirementRow.from_json(row) for row in content.get("requirements", ())),
             caveats=Caveat.all_from_json(content["warnings"]),
         )
     except (KeyError, TypeError, ValueError) as error:

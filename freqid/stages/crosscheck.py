@@ -4,15 +4,20 @@ results/crosscheck.json.
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from freqid.crosscheck.comparison import cross_check
 from freqid.crosscheck.comparison_result import CrossCheck
 from freqid.crosscheck.evidence import Recorded
+from freqid.crosscheck.findings import findings_of_model, findings_of_step
+from freqid.crosscheck.requirements import judge_requirements
 from freqid.crosscheck.result_file import write_crosscheck
 from freqid.estimate.resonance import read_resonance
 from freqid.estimate.result_files import read_identification
 from freqid.records import Run
 from freqid.rig import read_rig
 from freqid.run_file import read_run
+from freqid.stages import Progress, silent
 from freqid.stages.forecast import forecast_for
 from freqid.step_test.result_file import read_step_result
 from freqid.test_folder import TestFolder
@@ -20,8 +25,9 @@ from freqid.test_folder import TestFolder
 __all__ = ["cross_check_folder"]
 
 
-def cross_check_folder(folder: TestFolder) -> CrossCheck:
+def cross_check_folder(folder: TestFolder, *, progress: Progress = silent) -> CrossCheck:
     """Compare results/model.json with results/step.json and write results/crosscheck.json."""
+    progress("comparing the two tests")
     rig = read_rig(folder.rig)
     found, step = read_identification(folder), read_step_result(folder)
     tolerance = {name: getattr(rig.tolerance, name) for name in ("gain", "natural_frequency", "damping_ratio")}
@@ -39,6 +45,10 @@ def cross_check_folder(folder: TestFolder) -> CrossCheck:
         ),
         forecast=forecast_for(rig, found, step),
     )
+    requirements = judge_requirements(
+        rig.requirements, findings_of_model(found.model, read_resonance(found.response)), findings_of_step(step)
+    )
+    check = replace(check, requirements=requirements)
     sources = [folder.rig, folder.model, folder.response_h5, folder.step]
     write_crosscheck(folder, check, computed_from=sources)
     return check
