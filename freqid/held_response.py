@@ -65,14 +65,17 @@ class Drive:
     def through_smooth_samples(cls, voltage: Floats, *, start: float, interval: float, refine: int) -> Drive:
         """Cubic spline through the samples (M,), as straight lines between `refine` points per interval.
 
-        For a sine of frequency f the straight lines miss by (pi f interval / refine)^2 / 2 of its amplitude at most.
+        Straight lines between the points of a sine of frequency f would lose (pi f interval / refine)^2 / 3 of its
+        amplitude; the points are moved apart beforehand by what the lines lose (`_for_straight_lines`).
         """
-        from scipy.interpolate import CubicSpline
+        fine = np.asarray(voltage, dtype=float)
+        if refine > 1:
+            from scipy.interpolate import CubicSpline
 
-        order = np.arange(len(voltage))
-        fine = np.arange((len(voltage) - 1) * refine + 1) / refine
+            order = np.arange((len(voltage) - 1) * refine + 1) / refine
+            fine = CubicSpline(np.arange(len(voltage)), voltage)(order)
         return cls.from_samples(
-            CubicSpline(order, voltage)(fine), start=start, interval=interval / refine, smooth=True
+            _for_straight_lines(fine), start=start, interval=interval / refine, smooth=True
         )
 
     @property
@@ -100,6 +103,21 @@ class Drive:
             return (self.integral_at(end) - self.integral_at(end - width)) / width
         index, since = self.locate(end)
         return np.where(end < self.start, 0.0, self.value[index] + self.slope[index] * since)
+
+
+def _for_straight_lines(points: Floats) -> Floats:
+    """Points (M,) whose joining lines hold the given smooth signal: it divided by sinc^2, the transfer of the lines.
+
+    (x / sin x)^2 = 1 + s / 3 + 8 s^2 / 45 + 4 s^3 / 35 + 128 s^4 / 1575 + ... with s = sin^2 x and x = pi f interval,
+    and s is -1/4 of the second difference. Three terms miss by 4e-5 at eight points per period, 2e-7 at sixteen.
+    """
+    term, moved = points, points.copy()
+    for ratio in (1 / 3, 8 / 15, 9 / 14):  # of successive coefficients
+        bend = np.zeros_like(points)  # both ends stay where they are
+        bend[1:-1] = 2 * term[1:-1] - term[:-2] - term[2:]
+        term = ratio / 4 * bend
+        moved += term
+    return moved
 
 
 def free_decay(wn: float, zeta: float, time: Floats) -> Floats:

@@ -48,7 +48,7 @@ def lack_of_fit(
 
     `noise_freedom` is the total number of real degrees of freedom behind the variances.
     """
-    from scipy.stats import f as fisher
+    from scipy.special import fdtrc
 
     use = np.ones(len(measured.frequency), dtype=bool) if use is None else use
     misfit = whitened_misfit(measured, model)[use]
@@ -64,7 +64,7 @@ def lack_of_fit(
     if degrees < 1:
         return Adequacy(statistic=float("nan"), degrees_of_freedom=degrees, p_value=float("nan"))
     statistic = float(rest @ rest)
-    p_value = float(fisher.sf(statistic / degrees, degrees, max(noise_freedom, 1.0)))
+    p_value = float(fdtrc(degrees, max(noise_freedom, 1.0), statistic / degrees))
     return Adequacy(statistic=statistic, degrees_of_freedom=degrees, p_value=p_value)
 
 

@@ -47,16 +47,16 @@ class Feedthrough:
     @property
     def pole_p_value(self) -> float:
         """Chance of so much of an extra pole where there is none (one-sided)."""
-        from scipy.stats import t
+        from scipy.special import stdtr
 
-        return float(t.sf(self.deviation, self.degrees_of_freedom))
+        return float(stdtr(self.degrees_of_freedom, -self.deviation))
 
     @property
     def zero_p_value(self) -> float:
         """Chance of so much of a zero where there is none (one-sided)."""
-        from scipy.stats import t
+        from scipy.special import stdtr
 
-        return float(t.cdf(self.deviation, self.degrees_of_freedom))
+        return float(stdtr(self.degrees_of_freedom, self.deviation))
 
     @property
     def structure(self) -> str:

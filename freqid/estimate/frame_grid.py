@@ -35,7 +35,7 @@ class FrameGrid:
         position = np.concatenate([[0.0], np.cumsum(np.round(gaps / interval))])
         for _ in range(2):
             if np.ptp(position) > 0:
-                interval, begin = (float(v) for v in np.polyfit(position, stamp, 1))
+                interval, begin = _line(position, stamp)
             position = np.round((stamp - begin) / interval)
         position = position - position[0]
         order = np.arange(len(stamp))
@@ -44,7 +44,7 @@ class FrameGrid:
             slot=slot,
             size=int(slot[-1]) + 1,
             interval=interval,
-            jitter=float(np.std(stamp - np.polyval(np.polyfit(position, stamp, 1), position))),
+            jitter=_scatter(position, stamp),
         )
 
     @property
@@ -84,3 +84,17 @@ class FrameGrid:
     def filled(self, values: Floats) -> Floats:
         """`values` (N,) on the whole grid (size,), empty slots by straight lines."""
         return np.interp(np.arange(self.size), self.slot, values)
+
+
+def _line(position: Floats, stamp: Floats) -> tuple[float, float]:
+    """Slope and value at 0 of the least-squares line through the stamps; a level line through a single position."""
+    middle = float(np.mean(position))
+    apart = position - middle
+    size = float(apart @ apart)
+    slope = float(apart @ stamp) / size if size > 0 else 0.0
+    return slope, float(np.mean(stamp)) - slope * middle
+
+
+def _scatter(position: Floats, stamp: Floats) -> float:
+    slope, begin = _line(position, stamp)
+    return float(np.std(stamp - (begin + slope * position)))

@@ -8,7 +8,8 @@ residual
 
     cov = (J'J)^-1 (J' V J) (J'J)^-1,   J'VJ evaluated line by line with S   ("sandwich")
 
-Source: L. Ljung, *System Identification*, 2nd ed. 1999, ch. 7 and 9 (output error, asymptotic covariance).
+Source: L. Ljung, *System Identification*, 2nd ed. 1999, ch. 7 and 9 (output error, asymptotic covariance); damping of
+the steps: H. B. Nielsen, *Damping Parameter in Marquardt's Method*, IMM-REP-1999-05.
 """
 
 from __future__ import annotations
@@ -19,7 +20,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from freqid.errors import EstimationError
-from freqid.estimate.prediction import MotionParameters, Prediction, angle_only, free_parameters, predict
+from freqid.estimate.prediction import MotionParameters, Prediction, predict
 from freqid.estimate.record import Record
 from freqid.estimate.starting_values import Candidate, starting_values
 from freqid.second_order import SecondOrder
@@ -29,6 +30,11 @@ __all__ = ["RecordFit", "fit_record", "refine"]
 Floats = NDArray[np.float64]
 WELL_EXPLAINED = 0.98  # no other basin can be better than this by more than noise
 TRIAL_EVALUATIONS = 12  # enough to tell the basins of several starts apart
+TRIAL_FRAMES = 4000  # at least, where there are as many
+FIRST_DAMPING, LARGEST_DAMPING = 1e-3, 1e10  # of Marquardt, on a normal matrix of unit diagonal
+NEGLIGIBLE = 1e-4
+ROUNDING = 1e-13
+LONGEST_STEP = 3.0  # of the logarithms
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -59,15 +65,17 @@ class RecordFit:
 def fit_record(record: Record, *, starts: list[Candidate] | None = None) -> RecordFit:
     """Fit the record from the given starts, or from `starting_values`; the best end wins.
 
-    Raises EstimationError where no start leads anywhere.
+    Of a long record the starts see only some frames, evenly chosen. Raises EstimationError where no start leads
+    anywhere.
     """
     candidates = starting_values(record) if starts is None else starts
+    some = record.keep(np.arange(len(record.stamp)) % max(len(record.stamp) // TRIAL_FRAMES, 1) == 0)
     trials = []
     for candidate in candidates:
         start = MotionParameters(
             model=candidate.model, clock_ratio=candidate.clock_ratio, rest_angle=float(np.mean(record.angle))
         )
-        trial = refine(record, start, evaluations=TRIAL_EVALUATIONS)
+        trial = refine(some, start, evaluations=TRIAL_EVALUATIONS)
         if trial is not None:
             trials.append(trial)
             if trial.explained > WELL_EXPLAINED:
@@ -82,44 +90,61 @@ def fit_record(record: Record, *, starts: list[Candidate] | None = None) -> Reco
 
 
 def refine(record: Record, start: MotionParameters, *, evaluations: int = 100) -> RecordFit | None:
-    """Levenberg-Marquardt from one start; None where it fails."""
-    from scipy.optimize import least_squares
+    """Levenberg-Marquardt from one start, at most so many evaluations; None where it fails.
 
-    free = list(free_parameters(record))
-    base = start.vector
-    scale = np.ones(len(base))
-    scale[3] = 1 / start.model.natural_frequency / 10
-    scale[4] = scale[3] / max(record.stamp[-1] - record.stamp[0], 1e-9)
-    scale[[5, 6, 7]] = np.std(record.angle)
-    scale[0] = abs(start.model.gain) or 1.0
-    positive = [free.index(1), free.index(2)]
-
-    def unpack(x: Floats) -> MotionParameters:
-        vector = base.copy()
-        vector[free] = base[free] + x * scale[free]
-        vector[1:3] = base[1:3] * np.exp(np.clip(x[positive], -12, 12))
-        return MotionParameters.from_vector(vector)
-
-    def residual(x: Floats) -> Floats:
-        return record.angle - angle_only(record, unpack(x))
-
-    def jacobian(x: Floats) -> Floats:
-        p = unpack(x)
-        j = -predict(record, p).jacobian * scale[free]
-        j[:, positive] *= np.array([p.model.natural_frequency, p.model.damping_ratio])
-        return j
-
-    try:
-        found = least_squares(
-            residual, np.zeros(len(free)), jac=jacobian, method="lm", x_scale="jac", max_nfev=evaluations
-        )
-        p = unpack(found.x)
-        prediction = predict(record, p)
-    except (ValueError, FloatingPointError, np.linalg.LinAlgError):
+    Natural frequency and damping ratio move in proportion. The descent ends after a step that promised less than
+    `NEGLIGIBLE` of the residual's variance, so less than a hundredth of a standard uncertainty in any direction.
+    """
+    current = _at(record, start)
+    if current is None:
         return None
-    if not np.all(np.isfinite(prediction.jacobian)):
+    damping, growth = FIRST_DAMPING, 2.0
+    for _ in range(evaluations - 1):
+        slopes = current.prediction.jacobian * _scale(current)
+        size = np.maximum(np.linalg.norm(slopes, axis=0), 1e-300)
+        normal = (slopes.T @ slopes) / np.outer(size, size)
+        downhill = (slopes.T @ current.residual) / size
+        step = np.linalg.solve(normal + damping * np.eye(len(size)), downhill)
+        promised = float(step @ (downhill + damping * step))
+        trial = _at(record, _moved(current, step / size))
+        gained = -np.inf if trial is None else current.sum_of_squares - trial.sum_of_squares
+        if trial is not None and gained > 0:
+            settled = promised < NEGLIGIBLE * trial.sum_of_squares / max(trial.degrees_of_freedom, 1)
+            current = trial
+            if settled:
+                break
+            damping *= max(1 / 3, 1 - (2 * gained / promised - 1) ** 3)
+            growth = 2.0
+        elif damping > LARGEST_DAMPING or promised <= ROUNDING * current.sum_of_squares:
+            break
+        else:
+            damping, growth = damping * growth, growth * 2
+    return current
+
+
+def _at(record: Record, p: MotionParameters) -> RecordFit | None:
+    """The record predicted with `p`; None where that overflows."""
+    with np.errstate(all="ignore"):
+        prediction = predict(record, p)
+    if not (np.all(np.isfinite(prediction.jacobian)) and np.all(np.isfinite(prediction.angle))):
         return None
     return RecordFit(parameters=p, prediction=prediction, residual=record.angle - prediction.angle)
+
+
+def _scale(fit: RecordFit) -> Floats:
+    """What one unit of each free parameter's step changes it by: natural frequency and damping ratio by e times."""
+    scale = np.ones(8)
+    scale[1:3] = fit.parameters.vector[1:3]
+    return scale[list(fit.prediction.free)]
+
+
+def _moved(fit: RecordFit, step: Floats) -> MotionParameters:
+    vector = fit.parameters.vector
+    full = np.zeros(8)
+    full[list(fit.prediction.free)] = step
+    vector[1:3] *= np.exp(np.clip(full[1:3], -LONGEST_STEP, LONGEST_STEP))
+    full[1:3] = 0.0
+    return MotionParameters.from_vector(vector + full)
 
 
 def with_model(fit: RecordFit, model: SecondOrder) -> MotionParameters:

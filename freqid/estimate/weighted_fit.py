@@ -30,6 +30,8 @@ __all__ = ["AddedColumn", "WeightedFit", "covariance_of", "fit_column", "fit_wei
 
 Floats = NDArray[np.float64]
 ITERATIONS = 4
+LONGEST_STEP = 0.9  # of natural frequency and damping ratio: farther off, the record does not determine them
+SETTLED = 1e-2  # of the standard uncertainties: a last step no longer than this leaves its square
 MODEL = slice(0, 4)  # the columns of the model's own parameters
 
 
@@ -70,12 +72,12 @@ def fit_weighted(record: Record, fit: RecordFit, noise: NoiseSpectrum) -> Weight
         step = _solve(normal, weighted.T @ current.residual)
         vector = current.parameters.vector
         vector[free] += step
-        if not (vector[1] > 0 and vector[2] > 0):
+        if np.any(np.abs(vector[1:3] / current.parameters.vector[1:3] - 1) > LONGEST_STEP):
             break
         parameters = MotionParameters.from_vector(vector)
         prediction = predict(record, parameters)
         current = RecordFit(parameters=parameters, prediction=prediction, residual=record.angle - prediction.angle)
-        if np.all(np.abs(step) <= 1e-4 * np.sqrt(np.diag(_inverse(normal)))):
+        if np.all(np.abs(step) <= SETTLED * np.sqrt(np.diag(_inverse(normal)))):
             break
     weighted = _weigh(grid, current.prediction.jacobian, level)
     covariance, degrees = _sandwich(grid, current.prediction.jacobian, weighted, (level, freedom))
