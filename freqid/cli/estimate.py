@@ -10,7 +10,10 @@ import click
 from freqid.cli.options import folder_argument, json_option
 from freqid.cli.output import print_caveats, print_json, print_table, progress_bar, quantity_rows
 from freqid.cli.recovered import tell_recovered
+from freqid.estimate.amplitude_dependence import AmplitudeDependence
+from freqid.estimate.distortion_summary import DistortionSummary
 from freqid.estimate.identification import Identification
+from freqid.estimate.model import IdentifiedModel
 from freqid.estimate.result_files import model_as_json
 from freqid.stages.estimate import estimate_folder
 from freqid.test_folder import TestFolder
@@ -53,7 +56,37 @@ def print_identification(found: Identification) -> None:
         quantity_rows(parameters), columns=("model", "value ± 95 %", "unit"), title="Model from the frequency test"
     )
     print_table(quantity_rows(model.derived), columns=("derived from it", "value ± 95 %", "unit"))
+    if model.dependence is not None:
+        print_table(_trends(model.dependence), columns=("against amplitude", "change ± 95 %", "unit"))
     print_table(_facts(found))
+
+
+def _trends(dependence: AmplitudeDependence) -> list[tuple[str, str, str]]:
+    """Change of each quantity from the smallest to the largest amplitude, in percent."""
+    rows = []
+    for trend in dependence.trends:
+        change, half = 100 * trend.change.value, 100 * trend.change.expanded_uncertainty
+        rows.append((trend.name.replace("_", " "), f"{change:+.2g} ± {half:.2g}", "%"))
+    return rows
+
+
+def _distortion(one: DistortionSummary) -> str:
+    """One kind of distortion around the resonance, in words."""
+    if not one.significant:
+        return f"{one.kind}: none above the noise (below {100 * one.relative.interval_95[1]:.2g} % of the answer)"
+    return f"{one.kind}: {100 * one.relative.value:.2g} % of the answer, {one.excess.value:.2g} times the noise"
+
+
+def _measured_at(model: IdentifiedModel) -> list[tuple[str, str]]:
+    """The amplitude and the distortion, where they are known."""
+    rows = []
+    if model.amplitude is not None:
+        a, unit = model.amplitude, model.angle_unit
+        rows.append(("measured at", f"{a.rms_voltage:.3g} V rms, {a.rms_angle:.3g} {unit} rms, {a.peak_angle:.3g} "
+                                    f"{unit} to one side"))
+    if model.distortion:
+        rows.append(("distortion", "; ".join(_distortion(one) for one in model.distortion)))
+    return rows  # fmt: skip
 
 
 def _facts(found: Identification) -> list[tuple[str, str]]:
@@ -74,4 +107,5 @@ def _facts(found: Identification) -> list[tuple[str, str]]:
         ("frames", f"{clock.frames} read, {clock.lost_frames} lost, stamps off their grid by {1e3 * clock.jitter:.2g} "
                    f"ms rms"),
         ("model", f"explains {100 * model.explained:.2f} % of the angle's variance; {adequate}"),
+        *_measured_at(model),
     ]  # fmt: skip
