@@ -4,7 +4,7 @@ Named is the mechanism with the highest score, if it reaches `NAMED`; beside it 
 (score lower by less than 10, Kass & Raftery's "very strong") and, weaker, those that explain more than half as much.
 One that merely contains the first (all three numbers free, where one suffices) is not repeated.
 
-    strength = rise over that of the best  *  (1 - exp(- score / 20)),        halved where the best refutes it
+    strength = score over that of the best  *  (1 - exp(- score / 20)),        halved where the best refutes it
 """
 
 from __future__ import annotations
@@ -61,19 +61,21 @@ def _same_cause(trial: Trial, kept: list[Trial]) -> bool:
 def _cause(trial: Trial, named: list[Trial], trials: Trials, evidence: Evidence) -> Cause:
     best = named[0]
     unit = evidence.model.angle_unit
-    words = words_for(trial, trials, angle_unit=unit, folder=evidence.folder)
-    refuted = best.score - trial.score >= VERY_STRONG
-    strength = trial.rise / best.rise * (1 - math.exp(-trial.score / SURE)) * (0.5 if refuted else 1.0)
+    all_words = [words_for(other, trials, angle_unit=unit, folder=evidence.folder) for other in named]
+    words = all_words[named.index(trial)]
+    ahead = best.score - trial.score
+    part = 0.5 if ahead >= VERY_STRONG else 1.0
+    strength = part * trial.score / best.score * (1 - math.exp(-trial.score / SURE))
     rivals = [
-        words_for(other, trials, angle_unit=unit, folder=evidence.folder)
-        for other in named
+        others_words
+        for other, others_words in zip(named, all_words, strict=True)
         if other is not trial and abs(other.score - trial.score) < VERY_STRONG
     ]
     return Cause(
         cause=words.code,
         strength=float(np.clip(strength, 0.01, 0.99)),
         evidence=f"{words.finding}. {_what_it_explains(trial, trials, unit)}",
-        against=_against(words, rivals, trial, best, refuted=refuted),
+        against=_against(words, rivals, trial, all_words[0], ahead=ahead),
         exhibit=exhibit_for(trial, trials, evidence),
         settling_test=words.settling_test,
     )
@@ -92,19 +94,18 @@ def _what_it_explains(trial: Trial, trials: Trials, unit: str) -> str:
 
 
 def _against(
-    words: MechanismWords, rivals: list[MechanismWords], trial: Trial, best: Trial, *, refuted: bool
+    words: MechanismWords, rivals: list[MechanismWords], trial: Trial, best: MechanismWords, *, ahead: float
 ) -> str:
     said = [words.doubt] if words.doubt else []
-    if refuted:
-        said.append(f"{_plain(best.mechanism.code)} explains more (by {best.score - trial.score:.3g}).")
-    if rivals:
-        names = " and ".join(rival.code.replace("_", " ") for rival in rivals)
-        said.append(f"These records do not tell it from {names}: see the settling test.")
+    if ahead >= VERY_STRONG:
+        said.append(f"{_plain(best).capitalize()} explains more (score higher by {ahead:.3g}).")
+    for rival in rivals:
+        said.append(f"These records do not tell it from {_plain(rival)}: see the settling test.")
     share = trial.fit.effective_share
     if share < 0.6:
         said.append("What it leaves over still hangs together from frame to frame: it is not the whole story.")
     return " ".join(said)
 
 
-def _plain(code: str) -> str:
-    return code.replace("_", " ").capitalize()
+def _plain(words: MechanismWords) -> str:
+    return words.code.replace("_", " ")

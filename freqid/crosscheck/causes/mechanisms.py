@@ -31,7 +31,7 @@ Change = Callable[[RecordedTest, SecondOrder, Floats], SecondOrder]
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Mechanism:
-    """A fault as a hypothesis: `build` plants it, or `change` gives one test another rig, or `add` adds to the angle.
+    """A fault as a hypothesis: `build` plants it, `change` gives a test another rig, `add` adds to the angle.
 
     `starts` are sets of numbers to begin from; `difference` the steps of the derivatives; `low` and `high` the bounds.
     At first only `looked_at` of the numbers (the leading ones) are varied; the others have no slope at the start, or
@@ -161,7 +161,10 @@ def _driver(tests: tuple[RecordedTest, ...], volts: float, fn: float) -> list[Me
     return [
         _threshold("saturation", _clip_levels(tests), -0.005 * volts, (0.05 * volts, volts),
                 lambda t, p, n: PlantedFaults(saturation=float(n[0]))),
-        _threshold("step_was_a_ramp", (0.06 / fn, 0.15 / fn, 0.4 / fn), 0.01 / fn, (0.0, 3 / fn), ramp),
+        replace(
+            _threshold("step_was_a_ramp", (0.06 / fn, 0.15 / fn, 0.4 / fn), 0.01 / fn, (0.0, 3 / fn), ramp),
+            change=lambda t, model, n: _earlier(model, float(n[0]) / 2 if t.kind == "step" else 0.0),
+        ),
     ]  # fmt: skip
 
 
@@ -173,13 +176,24 @@ def _clip_levels(tests: tuple[RecordedTest, ...]) -> tuple[float, ...]:
 
 
 def _lags(fn: float) -> list[Mechanism]:
+    """What lags also delays; the delay of the rig makes up for it, so that the rest of the motion keeps its place."""
     natural = 1 / (2 * math.pi * fn)
+    pole = _threshold(
+        "extra_pole", (0.05 * natural, 0.2 * natural), 0.01 * natural, (SMALLEST_LAG * natural, 5 * natural),
+        lambda t, p, n: PlantedFaults(driver_pole=1 / (2 * math.pi * float(n[0]))),
+    )  # fmt: skip
+    exposure = _threshold(
+        "hidden_exposure", (0.03 / fn, 0.1 / fn), 0.005 / fn, (0.0, 1 / fn),
+        lambda t, p, n: PlantedFaults(hidden_exposure=float(n[0])),
+    )  # fmt: skip
     return [
-        _threshold("extra_pole", (0.1 * natural, 0.25 * natural), 0.01 * natural, (SMALLEST_LAG * natural, 5 * natural),
-                lambda t, p, n: PlantedFaults(driver_pole=1 / (2 * math.pi * float(n[0])))),
-        _threshold("hidden_exposure", (0.06 / fn, 0.15 / fn), 0.005 / fn, (0.0, 1 / fn),
-                lambda t, p, n: PlantedFaults(hidden_exposure=float(n[0]))),
-    ]  # fmt: skip
+        replace(pole, change=lambda t, model, n: _earlier(model, float(n[0]))),
+        replace(exposure, change=lambda t, model, n: _earlier(model, float(n[0]) / 2)),
+    ]
+
+
+def _earlier(model: SecondOrder, by: float) -> SecondOrder:
+    return replace(model, delay=model.delay - by)
 
 
 def _drift(tests: tuple[RecordedTest, ...], typical: float) -> Mechanism:
