@@ -11,6 +11,7 @@ from freqid.capture.clock_map import ClockMap
 from freqid.capture.simulated_rig import SimulatedRig, SimulatedSensor
 from freqid.crosscheck.comparison_result import Cause, ComparedRow, CrossCheck, JointTest, NextTest, RowVerdict
 from freqid.crosscheck.exhibit import Exhibit, Series
+from freqid.crosscheck.requirements import RequirementRow
 from freqid.estimate.frequency_response import FrequencyResponse
 from freqid.estimate.identification import Identification
 from freqid.estimate.model import Adequacy, IdentifiedModel
@@ -188,6 +189,13 @@ def cross_check(*rows: ComparedRow) -> CrossCheck:
             Cause(cause="amplitude_dependence", strength=0.7, evidence="Large steps are <damped> more & longer.",
                   against="Two <small> steps are not.", exhibit=exhibit(),
                   settling_test="A test at half the amplitude."),
+        ),
+        requirements=(
+            RequirementRow(
+                requirement="percent_overshoot_max", quantity="percent_overshoot", sense="max", limit=20.0, unit="%",
+                frequency_test=quantity(68.4, "%", 0.2), step_test=None, frequency_verdict="not met",
+                step_verdict="not decided", verdict="not met", reason="by <one> test",
+            ),
         ),
         next_test=NextTest(command="freqid excite vane --kind step --duration 90", reason="More steps settle it."),
     )

@@ -9,6 +9,7 @@ from collections.abc import Mapping
 from dataclasses import asdict, dataclass, field
 from typing import TYPE_CHECKING, Any, Literal
 
+from freqid.notebook_form import shown_by
 from freqid.quantity import Caveat, Quantity
 
 if TYPE_CHECKING:
@@ -155,3 +156,5 @@ class CrossCheck:
     labels: tuple[str, str] = USUAL_LABELS
     requirements: tuple[RequirementRow, ...] = ()
     caveats: tuple[Caveat, ...] = ()
+
+    _repr_html_ = shown_by("cross_check_html")

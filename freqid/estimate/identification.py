@@ -35,6 +35,7 @@ from freqid.estimate.prediction import angle_only
 from freqid.estimate.record import Record
 from freqid.estimate.record_fit import RecordFit
 from freqid.estimate.structures import BetterStructure, find_better_structure
+from freqid.notebook_form import shown_by
 from freqid.quantity import Caveat, Quantity
 from freqid.records import Run
 
@@ -58,6 +59,8 @@ class Identification:
     residual: Floats
     angle: Floats
     distortion: DistortionLevels | None = None
+
+    _repr_html_ = shown_by("identification_html")
 
 
 def identify(run: Run, *, method: Method = "auto") -> Identification:

@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 
 from freqid.capture.clock_map import ClockMap
 from freqid.derived import derived_quantities
+from freqid.notebook_form import shown_by
 from freqid.parameter_quantities import quantities_of
 from freqid.quantity import Caveat, Quantity
 from freqid.second_order import SecondOrder
@@ -67,6 +68,8 @@ class IdentifiedModel:
     amplitude: MeasuredAmplitude | None = None
     dependence: AmplitudeDependence | None = None
     distortion: tuple[DistortionSummary, ...] = ()
+
+    _repr_html_ = shown_by("model_html")
 
     @property
     def parameters(self) -> dict[str, Quantity | None]:

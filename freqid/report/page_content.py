@@ -12,6 +12,7 @@ from dataclasses import fields
 from typing import Any
 
 from freqid.crosscheck.comparison_result import Cause, ComparedRow, CrossCheck
+from freqid.crosscheck.requirements import RequirementRow
 from freqid.estimate.model import IdentifiedModel
 from freqid.quantity import Caveat, Quantity
 from freqid.records import Run
@@ -43,6 +44,7 @@ def page_content(inputs: ReportInputs) -> dict[str, Any]:
         "reasons": _reasons(check),
         "joint": _joint(check),
         "causes": [] if check is None else [_cause(cause) for cause in check.causes],
+        "requirements": [] if check is None else [_requirement(row) for row in check.requirements],
         "next_test": None if check is None else check.next_test,
         "adequacy": None if found is None else _adequacy(found.model),
         "model_numbers": [] if found is None else _numbers(found.model.parameters, found.model.derived),
@@ -111,6 +113,19 @@ def _cause(cause: Cause) -> dict[str, Any]:
         "evidence": cause.evidence,
         "against": cause.against,
         "settling_test": cause.settling_test,
+    }
+
+
+def _requirement(row: RequirementRow) -> dict[str, str]:
+    word = "at most" if row.sense == "max" else "at least"
+    return {
+        "label": label_of(row.quantity),
+        "unit": unit_shown(row.unit),
+        "limit": f"{word} {minus(f'{row.limit:.6g}')}",
+        "frequency_test": without_unit(row.frequency_test),
+        "step_test": without_unit(row.step_test),
+        "verdict": row.verdict,
+        "reason": row.reason,
     }
 
 

@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 
 from freqid.capture.clock_map import ClockMap
 from freqid.derived import derived_quantities
+from freqid.notebook_form import shown_by
 from freqid.parameter_quantities import quantities_of
 from freqid.quantity import Caveat, Quantity
 from freqid.second_order import SecondOrder
@@ -79,6 +80,8 @@ class StepResult:
     undetermined: tuple[str, ...] = ()
     caveats: tuple[Caveat, ...] = ()
     runs: tuple[str, ...] = ()
+
+    _repr_html_ = shown_by("step_html")
 
     @property
     def parameters(self) -> dict[str, Quantity | None]:

@@ -106,6 +106,15 @@ def test_page_says_verdict_reason_causes_and_next_command(inputs: ReportInputs, 
     assert text.index("The two tests disagree") < text.index("<figure")
 
 
+def test_page_judges_the_acceptance_limits(page: str) -> None:
+    """Each limit stands with both tests' values, the verdict and what is lacking; none, no section."""
+    section = page.split('<section id="requirements">')[1].split("</section>")[0]
+    for words in ("percent overshoot", "at most 20", "68.40 ± 0.39", "<b>not met</b>", "by &lt;one&gt;"):
+        assert words in section
+    without = replace(full_inputs(), crosscheck=replace(cross_check(), requirements=()))
+    assert 'id="requirements"' not in write_report(without)
+
+
 def test_page_tells_what_was_done_to_the_data(page: str) -> None:
     """Notes, caveats, left-out frames, lost frames, hashes, versions, settings and rig sheet are all told."""
     text = unescape(page)
