@@ -1,8 +1,9 @@
 """What will this voltage do to the rig, and where does it look? Drawn before anything is driven.
 
-Three panels: the voltage against time between its limits; its spectrum over what the response owes to natural
-frequency and damping ratio (both relative to their largest, so only the shapes compare); the swing it is predicted to
-cause, for every rig of the step test's uncertainty box, against the end stops.
+Three panels: the voltage against time between its limits; its spectrum and that of the angle it is predicted to cause,
+over what the response owes to natural frequency and damping ratio (all relative to their largest, so only the shapes
+compare), with the lines that are left free to show distortion; the swing it is predicted to cause, for every rig of the
+step test's uncertainty box, against the end stops.
 """
 
 from __future__ import annotations
@@ -18,7 +19,7 @@ from excitation.profile import Profile
 from excitation.rig_model import RigModel
 from excitation.swing import hold_response, predicted_angle
 from freqid.report.envelope import thinned
-from freqid.report.figure_style import LIGHT, Palette, dress, new_figure
+from freqid.report.figure_style import LIGHT, MARK, Palette, dress, new_figure
 from freqid.report.gain_and_phase import frequency_ticks
 
 if TYPE_CHECKING:
@@ -30,6 +31,7 @@ __all__ = ["draw_profile_spectrum", "draw_profile_swing", "draw_profile_voltage"
 Floats = NDArray[np.float64]
 _STRETCHES = 600  # of the time axis: the swing is shown by its extremes in each
 _FINER = 4
+_MOST_MARKS = 300
 _NEGLIGIBLE = 1e-3  # of the largest amplitude: below it a line of a non-periodic voltage is not shown
 
 
@@ -37,7 +39,7 @@ def profile_card_figure(
     profile: Profile, rigs: Sequence[RigModel], limits: Limits, *, angle_unit: str = "deg", palette: Palette = LIGHT
 ) -> Figure:
     """The card: voltage, spectrum and, where `rigs` (the likeliest first) are given, sensitivities and swing."""
-    figure, axes = new_figure(height=6.2 if rigs else 4.2, rows=3 if rigs else 2, palette=palette)
+    figure, axes = new_figure(height=6.6 if rigs else 4.4, rows=3 if rigs else 2, palette=palette)
     draw_profile_voltage(axes[0], profile, limits, palette=palette)
     draw_profile_spectrum(axes[1], profile, rigs[0] if rigs else None, palette=palette)
     if rigs:
@@ -60,22 +62,25 @@ def draw_profile_voltage(axes: Axes, profile: Profile, limits: Limits, *, palett
 def draw_profile_spectrum(
     axes: Axes, profile: Profile, rig: RigModel | None = None, *, palette: Palette = LIGHT
 ) -> None:
-    """Amplitude of the held voltage at its lines, and the sensitivities of the response, each to its largest."""
+    """Amplitude of the held voltage at its lines and of the angle, and the sensitivities, each to its largest."""
     dress(axes, palette)
     frequency, amplitude = _spectrum(profile)
     shown = amplitude / max(float(np.max(amplitude)), 1e-300)
     if profile.lines.size:
-        axes.vlines(frequency, 0, shown, color=palette.noise, linewidth=1.0)
+        axes.vlines(frequency, 0, shown, color=palette.noise, linewidth=1.2)
     else:
         axes.fill_between(*thinned(frequency, shown), color=palette.noise, alpha=0.5, linewidth=0)
     low, high = float(frequency[0]) / 1.1, float(frequency[-1]) * 1.1
     axes.set(xscale="log", ylim=(0, 1.05), ylabel="relative to the largest", xlabel="frequency (Hz)")
     frequency_ticks(axes, (low, high))
-    words = "grey: voltage"
+    words = ["grey: voltage"]
     if rig is not None:
+        _angle(axes, rig, frequency, amplitude, palette)
         _sensitivities(axes, rig, (low, high), palette)
-        words += ";   lines: what the response owes to\n— natural frequency   - - damping ratio"
-    axes.set_title(words, loc="left", fontsize=8.5, color=palette.model)
+        words[0] += "; ochre: the angle it causes"
+        words.append("lines: what it owes to natural frequency —, damping ratio - -")
+    words += _detection(axes, profile, palette)
+    axes.set_title("\n".join(words), loc="left", fontsize=8.5, color=palette.model)
 
 
 def draw_profile_swing(
@@ -129,6 +134,25 @@ def _last_above(amplitude: Floats) -> int:
     """Where 99.9 % of the power of the spectrum has been passed."""
     power = np.cumsum(amplitude**2)
     return int(min(np.searchsorted(power, 0.999 * power[-1]) + 1, len(amplitude) - 1))
+
+
+def _angle(axes: Axes, rig: RigModel, frequency: Floats, amplitude: Floats, palette: Palette) -> None:
+    angle = amplitude * np.abs(rig.response(frequency))
+    shown = angle / max(float(np.max(angle)), 1e-300)
+    if frequency.size > _MOST_MARKS:
+        axes.plot(*thinned(frequency, shown), color=palette.step_test, linewidth=0.8)
+    else:
+        axes.plot(frequency, shown, color=palette.step_test, linestyle="none", marker=MARK["step_test"], markersize=2.6)
+
+
+def _detection(axes: Axes, profile: Profile, palette: Palette) -> list[str]:
+    """Marks under the lines that are left free, and what to say of them."""
+    even, odd = profile.detection_lines
+    for free, length in ((even, 0.03), (odd, 0.07)):
+        axes.vlines(free, 0, length, color=palette.distortion, linewidth=1.0)
+    if not even.size and not odd.size:
+        return []
+    return [f"plum: left free for distortion, {even.size} even (short), {odd.size} odd (long)"]
 
 
 def _sensitivities(axes: Axes, rig: RigModel, band: tuple[float, float], palette: Palette) -> None:

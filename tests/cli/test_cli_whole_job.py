@@ -45,7 +45,7 @@ def test_rehearsal_makes_every_file_of_a_test(rehearsed: TestFolder) -> None:
     made = ("response.h5", "response.csv", "model.json", "step.json", "crosscheck.json")
     results = {f"results/{name}" for name in made}
     assert profiles | results | {"rig.toml", "runs/response-001.h5", "runs/step-001.h5", "report.html"} <= names
-    assert {name for name in names if name.startswith("figures/")}
+    assert {"figures/profile_card.svg", "figures/step_profile_card.svg"} <= names
     assert not [name for name in names if ".part" in name or "tmp" in name]
 
 
