@@ -1,6 +1,7 @@
 """What stands behind the sound interface in these tests? A spring-centred vane in software, and a recorder beside it.
 
     python plant_client.py vane --settings FILE       JACK client `vane`: ports drive, spare -> loopback, angle
+                                                      (and echo, for the recorder, where the loopback is no echo)
     python plant_client.py recorder --settings FILE   JACK client `recorder`: keeps every sample that reached the vane
     python plant_client.py pulse --settings FILE      the vane from the monitor of the sink `drive` to the sink `angle`
 
@@ -62,6 +63,11 @@ class PlantSettings:
     def write(self, path: Path) -> None:
         """As JSON, for the client process."""
         path.write_text(json.dumps(asdict(self)), encoding="utf-8")
+
+    @property
+    def faithful(self) -> bool:
+        """Whether the loopback is the drive, sample for sample."""
+        return self.loopback_gain == 1.0 and self.loopback_ends is None
 
     @classmethod
     def read(cls, path: Path) -> PlantSettings:
@@ -132,11 +138,14 @@ def _run_vane(settings: PlantSettings) -> None:
     client.inports.register("spare")
     loopback = client.outports.register("loopback")
     angle = client.outports.register("angle")
+    echo = None if settings.faithful else client.outports.register("echo")
 
     def process(frames: int) -> None:
         sent_back, turned = vane.process(drive.get_array().astype(np.float64))
         loopback.get_array()[:] = sent_back
         angle.get_array()[:] = turned
+        if echo is not None:
+            echo.get_array()[:] = drive.get_array()
 
     client.set_process_callback(process)
     _serve(client, settings, lambda: None)
@@ -152,7 +161,8 @@ def _run_recorder(settings: PlantSettings) -> None:
         os.write(record, frame + bytes(heard.get_buffer()))
 
     client.set_process_callback(process)
-    _serve(client, settings, lambda: _patiently(lambda: client.connect("vane:loopback", heard)))
+    echo = "vane:loopback" if settings.faithful else "vane:echo"
+    _serve(client, settings, lambda: _patiently(lambda: client.connect(echo, heard)))
 
 
 def _client(name: str, settings: PlantSettings) -> Any:

@@ -52,8 +52,14 @@ class Fault:
     says: str  # regular expression, in the last line of the program, or of the next command where it recovers
     ramped: bool = True
     recovers: bool = False
+    played_out: bool = False  # the program may go on to the end of the profile
     plant: dict[str, float] = field(default_factory=dict)
     environment: dict[str, str] = field(default_factory=dict)
+
+    @property
+    def built_in(self) -> bool:
+        """Whether it happens by itself, so that nobody outside knows when."""
+        return self.strike is _nothing
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -61,8 +67,8 @@ class Outcome:
     """What was left. Times in s, voltages in V."""
 
     name: str
-    ended_after: float | None  # None: hangs
-    status: int | None
+    ended_after: float | None  # None where nobody knows when the fault happened
+    status: int | None  # None: hangs
     message: str
     kept: float  # of the profile
     lost: float  # sent before the fault, not in the file
@@ -127,12 +133,13 @@ FAULTS = (
     Fault(name="angle near stops", strike=_nothing, says="guard: angle", plant={"gain": 24.0}),
     Fault(name="loopback dies", strike=_nothing, says="guard: loopback", plant={"loopback_ends": 2.0}),
     Fault(name="disk full", strike=_fill_disk, says="No space left"),
-    Fault(name="child paused 0.3 s", strike=_pause_child, says="not verified|complete", ramped=False),
+    Fault(name="child paused 0.3 s", strike=_pause_child, says="not verified", ramped=False, played_out=True),
     Fault(
         name="callback late",
         strike=_nothing,
-        says="not verified|complete",
+        says="not verified",
         ramped=False,
+        played_out=True,
         environment={"FREQID_PLANT_FAULT": "stall@2.0"},
     ),
     Fault(
@@ -149,7 +156,7 @@ def struck(fault: Fault, session: SoundSession, rig: JackRig, *, after: float) -
     since = rig.frames_sent()
     capture = session.start("--device", "vane", "--armed", **fault.environment)
     try:
-        capture.wait_until_driven(rig, since, after)
+        capture.wait_until_driven(rig, since, 0.1 if fault.built_in else after)
         scene = Scene(capture=capture, rig=rig, folder=session.folder)
         family = psutil.Process(capture.process.pid).children(recursive=True)
         fault.strike(scene)
@@ -158,7 +165,7 @@ def struck(fault: Fault, session: SoundSession, rig: JackRig, *, after: float) -
     finally:
         capture.kill_all()
     message = _next_command(session) if fault.recovers else capture.last_line()
-    ended = None if ended_after is None or fault.strike is _nothing else ended_after
+    ended = None if fault.built_in else ended_after
     return _measured(fault.name, session, rig, since, frame, (ended, status, message), fault)
 
 
@@ -197,7 +204,7 @@ def _measured(
         status=ending[1],
         message=re.sub(r"\s+", " ", ending[2]),
         kept=seconds or 0.0,
-        lost=0.0 if fault.strike is _nothing else max(driven - (seconds or 0.0), 0.0),
+        lost=0.0 if fault.built_in else max(driven - (seconds or 0.0), 0.0),
         readable=seconds is not None,
         complete=complete,
         largest_step=largest_step(sent),
@@ -224,6 +231,7 @@ class Refusal:
     options: tuple[str, ...] = ("--device", "vane", "--armed")
     sheet: tuple[str, str] | None = None  # replaced in rig.toml
     environment: dict[str, str] = field(default_factory=dict)
+    server_rate: float = 1.0  # of the server, over the rate of the profile
     hides_portaudio: bool = False
 
 
@@ -231,7 +239,8 @@ REFUSALS = (
     Refusal(name="not armed", says="not armed", options=("--device", "vane")),
     Refusal(name="unknown device", says="unknown.*nobody", options=("--device", "nobody", "--armed")),
     Refusal(name="too many channels", says="channel", options=("--device", "vane", "--armed", "--angle-channel", "5")),
-    Refusal(name="wrong rate", says="Hz", sheet=("sample_rate = {rate}.0", "sample_rate = 44100.0")),
+    Refusal(name="rate of the server", says="refuses.*Hz.*prefers", server_rate=0.5),
+    Refusal(name="rate of the profile", says="designed for", sheet=("sample_rate = {rate}.0", "sample_rate = 441.0")),
     Refusal(name="above the limit", says="limit", sheet=("voltage = 5.0", "voltage = 0.5")),
     Refusal(name="no server", says="unknown|no sound interface", environment={"JACK_DEFAULT_SERVER": "nobody"}),
     Refusal(name="no PortAudio", says="PortAudio", hides_portaudio=True),
