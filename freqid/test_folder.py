@@ -247,16 +247,19 @@ class TestFolder:
             check_format(path, content, format=format, version=version)
         return content
 
-    def provenance(self, *, format: str, version: int = 1, computed_from: Iterable[Path] = ()) -> dict[str, Any]:
-        """What every result file says of itself; `computed_from` lists the files it was computed from."""
+    def provenance(
+        self, *, format: str, version: int = 1, computed_from: Iterable[Path] | Mapping[Path, str | None] = ()
+    ) -> dict[str, Any]:
+        """What every result file says of itself and of the files it comes from, with their sha256 where known already."""
         from excitation.hdf5_file import file_sha256
 
+        known = computed_from if isinstance(computed_from, Mapping) else {}
         return {
             "format": format,
             "format_version": version,
             "freqid_version": freqid.__version__,
             "created": datetime.now(UTC).isoformat(timespec="seconds"),
-            "computed_from": {self.relative_name(path): file_sha256(path) for path in computed_from},
+            "computed_from": {self.relative_name(path): known.get(path) or file_sha256(path) for path in computed_from},
         }
 
     def relative_name(self, path: Path) -> str:

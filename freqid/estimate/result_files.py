@@ -12,7 +12,7 @@ import csv
 import io
 import json
 import math
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 from dataclasses import fields
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -20,7 +20,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from excitation.errors import ExcitationError
-from excitation.hdf5_file import read_hdf5, write_hdf5
+from excitation.hdf5_file import file_sha256, read_hdf5, write_hdf5
 from freqid.capture.clock_map import ClockMap
 from freqid.derived import undefined_reasons
 from freqid.errors import TestFolderError
@@ -45,12 +45,18 @@ RESPONSE_FORMAT = "freqid response"
 DISTORTION = "distortion/"
 
 
-def write_identification(folder: TestFolder, found: Identification, *, computed_from: Iterable[Path]) -> None:
-    """Write response.h5, response.csv and model.json of the folder, each whole or not at all."""
-    sources = list(computed_from)
+def write_identification(
+    folder: TestFolder, found: Identification, *, computed_from: Iterable[Path] | Mapping[Path, str | None]
+) -> None:
+    """Write response.h5, response.csv and model.json of the folder, each whole or not at all.
+
+    `computed_from` names the runs, with their sha256 where it is known (a large file takes long to hash).
+    """
+    known = computed_from if isinstance(computed_from, Mapping) else {}
+    sources = {path: known.get(path) or file_sha256(path) for path in computed_from}
     _write_response(folder, found, sources)
     write_text(folder.response_csv, _csv(found))
-    content = folder.provenance(format=MODEL_FORMAT, computed_from=[*sources, folder.response_h5])
+    content = folder.provenance(format=MODEL_FORMAT, computed_from={**sources, folder.response_h5: None})
     folder.write_json(folder.model, {**content, **model_as_json(found.model)})
 
 
@@ -160,7 +166,7 @@ def _model(content: dict[str, Any]) -> IdentifiedModel:
     return model
 
 
-def _write_response(folder: TestFolder, found: Identification, sources: list[Path]) -> None:
+def _write_response(folder: TestFolder, found: Identification, sources: Mapping[Path, str | None]) -> None:
     unit = found.response.angle_unit
     measured = _arrays(found.response, "", unit)
     distortion = {} if found.distortion is None else _arrays(found.distortion, DISTORTION, unit)

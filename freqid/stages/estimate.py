@@ -5,9 +5,10 @@ from __future__ import annotations
 from freqid.errors import EstimationError
 from freqid.estimate.combination import combine
 from freqid.estimate.identification import Identification, Method, identify
+from freqid.estimate.long_run import read_for_estimate
 from freqid.estimate.result_files import write_identification
 from freqid.records import Run, RunKind
-from freqid.run_file import read_run
+from freqid.run_file import read_run, read_run_facts
 from freqid.stages import Progress, silent
 from freqid.test_folder import TestFolder
 
@@ -32,20 +33,20 @@ def estimate_folder(
         progress(f"estimating from {one.name}", number / len(runs))
         found.append(identify(one, method=method))
     result = combine(found)
-    write_identification(folder, result, computed_from=[folder.run(one.name) for one in runs])
+    write_identification(folder, result, computed_from={folder.run(one.name): one.file_sha256 for one in runs})
     return result
 
 
 def choose_runs(folder: TestFolder, kind: RunKind, name: str | None) -> list[Run]:
     """The runs meant by `name`: None the latest complete one, "all" every complete one, else that one.
 
-    A run named is taken even if it ended early.
+    A run named is taken even if it ended early. Long response runs come shortened (`read_for_estimate`).
     """
+    read = read_for_estimate if kind == "response" else read_run
     if name is not None and name != "all":
-        return [read_run(folder.run(name))]
+        return [read(folder.run(name))]
     folder.latest_run_name(kind)  # says what is missing where there is none
-    runs = (read_run(folder.run(one)) for one in reversed(folder.run_names(kind)))
-    complete = [run for run in runs if run.complete]
+    complete = [one for one in folder.run_names(kind) if read_run_facts(folder.run(one)).complete]
     if not complete:
         raise EstimationError(f"{folder.runs}: no {kind} run is complete; name one with --run to use it nevertheless")
-    return complete[::-1] if name == "all" else complete[:1]
+    return [read(folder.run(one)) for one in (complete if name == "all" else complete[-1:])]
