@@ -14,22 +14,22 @@ the steps: H. B. Nielsen, *Damping Parameter in Marquardt's Method*, IMM-REP-199
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from freqid.errors import EstimationError
-from freqid.estimate.prediction import MotionParameters, Prediction, angle_only, predict
+from freqid.estimate.prediction import MotionParameters, Prediction, predict
 from freqid.estimate.record import Record
 from freqid.estimate.starting_values import Candidate, starting_values
 from freqid.second_order import SecondOrder
 
-__all__ = ["RecordFit", "fit_record", "is_half_wave", "refine"]
+__all__ = ["RecordFit", "fit_record", "refine"]
 
 Floats = NDArray[np.float64]
+LEAST_WHITE = 0.7  # von Neumann's ratio over its value in white noise
 WELL_EXPLAINED = 0.98  # no other basin can be better than this by more than noise
-ASKEW = 2.0  # sums of squares up to so many times the best are worth a fit of the other sign
 TRIAL_EVALUATIONS = 12  # enough to tell the basins of several starts apart
 TRIAL_FRAMES = 4000  # at least, where there are as many
 FIRST_DAMPING, LARGEST_DAMPING = 1e-3, 1e10  # of Marquardt, on a normal matrix of unit diagonal
@@ -79,7 +79,7 @@ def fit_record(record: Record, *, starts: list[Candidate] | None = None) -> Reco
         trial = refine(some, start, evaluations=TRIAL_EVALUATIONS)
         if trial is not None:
             trials.append(trial)
-            if trial.explained > WELL_EXPLAINED:
+            if trial.explained > WELL_EXPLAINED and _leaves_noise(trial.residual):
                 break
     trials.sort(key=lambda fit: fit.sum_of_squares)
     best = refine(record, trials[0].parameters) if trials else None
@@ -87,28 +87,6 @@ def fit_record(record: Record, *, starts: list[Candidate] | None = None) -> Reco
         raise EstimationError(
             "no second-order model could be fitted to the record: check that input and angle belong together", None
         )
-    return _with_better_sign(record, best)
-
-
-def is_half_wave(record: Record) -> bool:
-    """Whether the voltage's second half period is the first one reversed (odd lines only)."""
-    periodicity = record.periodicity
-    return periodicity is not None and bool(np.all(np.round(periodicity.lines * periodicity.period) % 2 == 1))
-
-
-def _with_better_sign(record: Record, fit: RecordFit) -> RecordFit:
-    """The fit, or one reversed and half a period off: with odd lines on two clocks only the onset tells them apart."""
-    if record.common_clock or record.periodicity is None or not is_half_wave(record):
-        return fit
-    best, m = fit, fit.parameters.model
-    for shift in (-0.5, 0.5):
-        other = replace(m, gain=-m.gain, delay=m.delay + shift * record.periodicity.period)
-        start = replace(fit.parameters, model=other)
-        # a fit pulled askew by the wrong onset is still better the right way round
-        if float(np.sum((record.angle - angle_only(record, start)) ** 2)) < ASKEW * fit.sum_of_squares:
-            trial = refine(record, start)
-            if trial is not None and trial.sum_of_squares < best.sum_of_squares:
-                best = trial
     return best
 
 
@@ -124,7 +102,7 @@ def refine(record: Record, start: MotionParameters, *, evaluations: int = 100) -
     damping, growth = FIRST_DAMPING, 2.0
     for _ in range(evaluations - 1):
         slopes = current.prediction.jacobian * _scale(current)
-        size = np.maximum(np.linalg.norm(slopes, axis=0), 1e-300)
+        size = np.maximum(np.linalg.norm(slopes, axis=0), 1e-150)  # its square is still a number
         normal = (slopes.T @ slopes) / np.outer(size, size)
         downhill = (slopes.T @ current.residual) / size
         step = np.linalg.solve(normal + damping * np.eye(len(size)), downhill)
