@@ -20,6 +20,7 @@ from numpy.typing import NDArray
 
 from freqid.capture.sound.interface import Exchange, Float32s, SoundDevice, StreamRequest
 from freqid.errors import CaptureError
+from freqid.held_response import free_decay
 
 __all__ = ["SimulatedFaults", "SimulatedInterface", "SimulatedPlant"]
 
@@ -54,7 +55,7 @@ class SimulatedPlant:
     output_full_scale: float
     loopback_full_scale: float
     angle_full_scale: float
-    round_trip_frames: int = 2048
+    round_trip: float = 0.02  # s, and one block
     seed: int = 0
     faults: SimulatedFaults = field(default_factory=SimulatedFaults)
 
@@ -128,42 +129,63 @@ class _Rig:
     """The two input channels that follow from the output, block after block."""
 
     def __init__(self, plant: SimulatedPlant, rate: float) -> None:
-        from scipy.signal import cont2discrete
-
-        self.plant = plant
-        wn = 2 * math.pi * plant.natural_frequency
-        system = ([plant.gain * wn**2], [1.0, 2 * plant.damping_ratio * wn, wn**2])
-        numerator, self._denominator, _ = cont2discrete(system, 1 / rate, method="foh")
-        self._numerator = np.ravel(numerator)
-        self._state = np.zeros(2)
-        self._late = np.zeros(plant.round_trip_frames)  # V on their way to the loopback
+        self.plant, self._rate = plant, rate
+        self._natural = 2 * math.pi * plant.natural_frequency
+        self._state = (0.0, 0.0)  # angle per unit gain in V, its rate over the natural angular frequency
+        self._before = 0.0  # V at the end of the last block
+        line = max(1, round(plant.round_trip * rate))
+        self._late = np.zeros(line)  # V on their way to the loopback
         whole, fraction = divmod(plant.delay * rate, 1.0)
-        self._to_rig = np.zeros(plant.round_trip_frames + int(whole) + 1)
+        self._to_rig = np.zeros(line + int(whole) + 1)
         self._weights = (1 - fraction, fraction)
         self._rng = np.random.default_rng(plant.seed)
+        self._decay = np.empty((0, 2))
 
     def lose(self, n_frames: int) -> None:
         """The next frames on both ways come so much later."""
-        self._late = np.concatenate([np.full(n_frames, self._late[0] if self._late.size else 0.0), self._late])
+        self._late = np.concatenate([np.full(n_frames, self._late[0]), self._late])
         self._to_rig = np.concatenate([np.full(n_frames, self._to_rig[0]), self._to_rig])
 
     def answer(self, sent: Float32s, *, loopback_off: bool) -> Float32s:
         """Loopback and angle (n, 2) in digital full scale; what was sent (n,) takes the round trip to arrive."""
-        from scipy.signal import lfilter
-
         plant, n = self.plant, sent.size
         voltage = sent.astype(np.float64) * plant.output_full_scale
         loopback, self._late = _through(self._late, voltage)
         self._to_rig = np.concatenate([self._to_rig, voltage])
         arriving = self._weights[0] * self._to_rig[1 : n + 1] + self._weights[1] * self._to_rig[:n]
         self._to_rig = self._to_rig[n:]
-        angle, self._state = lfilter(self._numerator, self._denominator, arriving, zi=self._state)
-        angle = angle + plant.noise * self._rng.standard_normal(n)
+        angle = plant.gain * self._moved(arriving) + plant.noise * self._rng.standard_normal(n)
         if loopback_off:
             loopback = np.zeros(n)
         return np.stack([loopback / plant.loopback_full_scale, angle / plant.angle_full_scale], axis=1).astype(
             np.float32
         )
+
+    def _moved(self, voltage: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Angle per unit gain at the instants of the voltage (n,): straight lines from the last sample through all.
+
+        Over a piece with slope s the motion about the particular solution u + s (t - 2 zeta / wn) decays freely
+        (`freqid.held_response`); what each piece adds is carried on by the free decay, a convolution.
+        """
+        zeta, n = self.plant.damping_ratio, voltage.size
+        if len(self._decay) < n + 1:
+            self._decay = free_decay(self._natural, zeta, np.arange(n + 1) / self._rate)
+        from_angle, from_rate = self._decay[: n + 1, 0], self._decay[: n + 1, 1]
+        begin = np.concatenate([[self._before], voltage[:-1]])
+        rate = (voltage - begin) * self._rate / self._natural
+        lag = 2 * zeta * rate
+        added = voltage - lag - from_angle[1] * (begin - lag) - from_rate[1] * rate
+        added_rate = rate + from_rate[1] * (begin - lag) - (from_angle[1] - 2 * zeta * from_rate[1]) * rate
+        angle, speed = self._state
+        moved = (
+            np.convolve(from_angle[:n], added)[:n] + np.convolve(from_rate[:n], added_rate)[:n]
+            + from_angle[1:] * angle + from_rate[1:] * speed
+        )  # fmt: skip
+        own_rate = from_angle - 2 * zeta * from_rate  # rate from unit rate; from unit angle it is minus `from_rate`
+        last = float(own_rate[n - 1 :: -1] @ added_rate - from_rate[n - 1 :: -1] @ added)
+        self._state = (float(moved[-1]), last + float(own_rate[n] * speed - from_rate[n] * angle))
+        self._before = float(voltage[-1])
+        return moved
 
 
 def _through(line: NDArray[np.float64], values: NDArray[np.float64]) -> tuple[NDArray[np.float64], NDArray[np.float64]]:

@@ -127,6 +127,7 @@ class _LoopbackCheck:
         self._at = 0  # frame of the profile that self._recorded begins with
         self.match: LoopbackMatch | None = None
         self.problems: list[str] = []
+        self._shifts = (0.0, 0.0)
         self.largest_shift = self.largest_remainder = 0.0
 
     def take(self, frames: NDArray[np.float32]) -> None:
@@ -195,8 +196,9 @@ class _LoopbackCheck:
         self.largest_remainder = max(self.largest_remainder, remainder)
         moves = float(np.ptp(sent)) > MOVING * self._departure
         if moves and uncertainty * SURE < STEP:
+            self._shifts = (min(self._shifts[0], shift), max(self._shifts[1], shift))
             self.largest_shift = max(self.largest_shift, abs(shift))
-            if abs(shift) > STEP:
+            if self._shifts[1] - self._shifts[0] > STEP:  # the delay of the match may lie between two
                 self._report(
                     f"the delay of the loopback is off by {shift:.1f} frames at {frame / rate:.2f} s (frames lost, or"
                     " not DC-coupled)"
