@@ -35,8 +35,8 @@ from sound_session import SoundSession
 
 OFTEN = ("server killed", "server stopped", "child killed", "child stopped", "parent killed")
 RATE = 48000  # Hz
-DURATION = 12.0  # s of profile
-LATEST = 8.0  # s of drive after which a fault is struck at the latest
+DURATION = 10.0  # s of profile
+LATEST = 5.0  # s of drive after which a fault is struck at the latest
 
 
 def main() -> int:

@@ -51,6 +51,7 @@ pcm.vane {
     hint { show on description "vane" }
 }
 """
+CLOCK = "context.properties = {{ default.clock.rate = {rate} default.clock.quantum = 256 }}\n"
 
 
 def what_pipewire_lacks() -> str | None:
@@ -88,7 +89,7 @@ def pipewire_rig(plant: PlantSettings | None = None) -> Iterator[PipeWireRig]:
     plant = plant or PlantSettings()
     with ExitStack() as stack:
         folder = Path(stack.enter_context(tempfile.TemporaryDirectory(prefix="pw-")))  # short: socket names are
-        environment = _environment(folder)
+        environment = _environment(folder, plant)
 
         def start(name: str, *command: str) -> subprocess.Popen[bytes]:
             return stack.enter_context(child(command, environment, folder / f"{name}.log"))
@@ -112,8 +113,10 @@ def pipewire_rig(plant: PlantSettings | None = None) -> Iterator[PipeWireRig]:
         yield PipeWireRig(plant=plant, environment=environment)
 
 
-def _environment(folder: Path) -> dict[str, str]:
+def _environment(folder: Path, plant: PlantSettings) -> dict[str, str]:
     (folder / "asound.conf").write_text(ALSA, encoding="ascii")
+    (clock := folder / "pipewire" / "pipewire.conf.d").mkdir(parents=True)
+    (clock / "clock.conf").write_text(CLOCK.format(rate=plant.sample_rate), encoding="ascii")
     return {
         **os.environ,
         "XDG_RUNTIME_DIR": str(folder),

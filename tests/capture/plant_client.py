@@ -200,7 +200,7 @@ def _serve(client: Any, settings: PlantSettings, begin: Callable[[], None]) -> N
 
 
 def _run_pulse(settings: PlantSettings) -> None:
-    form = ["--raw", "--format=float32le", "--channels=2", f"--rate={settings.sample_rate}", "--latency-msec=40"]
+    form = ["--raw", "--format=float32le", "--channels=2", f"--rate={settings.sample_rate}", "--latency-msec=100"]
     vane, frame = Vane(settings), 2 * np.dtype("<f4").itemsize
     vane.process(np.zeros(256))  # everything is loaded before sound flows: what waits in pipes is delay for good
     say = subprocess.Popen(["pacat", *form, "-d", "angle"], stdin=subprocess.PIPE)

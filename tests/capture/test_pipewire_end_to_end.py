@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import os
+import re
 from pathlib import Path
 
 import pytest
@@ -11,9 +12,9 @@ from pipewire_rig import pipewire_rig, what_pipewire_lacks
 from plant_client import PlantSettings
 from sound_session import SoundSession
 
-RATE = 48000  # Hz, that of the servers: nothing is resampled
+RATE = 8000  # Hz, that of the servers too: nothing is resampled
 VANE = PlantSettings(
-    sample_rate=RATE, gain=12.2, natural_frequency=3.03, damping_ratio=0.115, delay_frames=1008, noise=0.3
+    sample_rate=RATE, gain=12.2, natural_frequency=3.03, damping_ratio=0.115, delay_frames=168, noise=0.3
 )
 
 
@@ -27,6 +28,16 @@ def pipewire_programs() -> None:
         pytest.skip(missing)
 
 
+def capture_until_verified(session: SoundSession) -> None:
+    """In real time a busy machine may lose a block; then the run says so, is not used, and is done again."""
+    for _ in range(4):
+        capture = session.start("--device", "vane", "--armed")
+        if capture.wait() == 0:
+            return
+        assert re.search("not verified|guard: loopback", capture.last_line()), capture.text()
+    pytest.fail(f"four runs did not verify: {capture.text()}")
+
+
 @pytest.mark.usefixtures("pipewire_programs")
 def test_vane_is_found_through_alsa(tmp_path: Path) -> None:
     """Every 95 % interval holds the vane's true value; the loopback divides a round trip of a few tenths of a second
@@ -36,7 +47,7 @@ def test_vane_is_found_through_alsa(tmp_path: Path) -> None:
         session = SoundSession(folder=tmp_path / "a vane é", environment=rig.environment)
         session.new(RATE)
         session.do("excite", "--duration", "10", "--band", "1", "8", "--seed", "1")
-        session.do("capture", "--device", "vane", "--armed")
+        capture_until_verified(session)
     found = json.loads(session.do("estimate", "--json"))["parameters"]
     for name in ("gain", "natural_frequency", "damping_ratio", "delay"):
         low, high = found[name]["interval_95"]
