@@ -250,7 +250,7 @@ class TestFolder:
     def provenance(
         self, *, format: str, version: int = 1, computed_from: Iterable[Path] | Mapping[Path, str | None] = ()
     ) -> dict[str, Any]:
-        """What every result file says of itself and of the files it comes from, with their sha256 where known already."""
+        """What every result file says of itself and of the files it comes from (with their sha256 where known)."""
         from excitation.hdf5_file import file_sha256
 
         known = computed_from if isinstance(computed_from, Mapping) else {}

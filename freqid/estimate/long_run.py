@@ -89,12 +89,12 @@ class Shortening:
 
 
 def _plan(opened: OpenRun) -> Shortening | None:
-    """How to shorten the run; None where it is short, or its streams were not sampled together."""
+    """How to shorten the run; None where it is short, a step test, or its streams were not sampled together."""
     voltage, angle = opened.input, opened.angle
     rate = voltage.rate
     if voltage.size + angle.size <= LONGEST_WHOLE or rate is None or angle.rate != rate or voltage.size != angle.size:
         return None
-    if not opened.facts.common_clock:
+    if not opened.facts.common_clock or opened.facts.kind == "step":
         return None
     periodicity = opened.facts.input.periodicity
     highest = _highest_frequency(voltage, rate) if periodicity is None else float(periodicity.lines[-1])

@@ -12,11 +12,11 @@ from freqid.crosscheck.evidence import Recorded
 from freqid.crosscheck.findings import findings_of_model, findings_of_step
 from freqid.crosscheck.requirements import judge_requirements
 from freqid.crosscheck.result_file import write_crosscheck
+from freqid.estimate.long_run import read_for_estimate
 from freqid.estimate.resonance import read_resonance
 from freqid.estimate.result_files import read_identification
 from freqid.records import Run
 from freqid.rig import read_rig
-from freqid.run_file import read_run
 from freqid.stages import Progress, silent
 from freqid.stages.forecast import forecast_for
 from freqid.step_test.result_file import read_step_result
@@ -56,4 +56,4 @@ def cross_check_folder(folder: TestFolder, *, progress: Progress = silent) -> Cr
 
 def _runs(folder: TestFolder, names: tuple[str, ...]) -> tuple[Run, ...]:
     """The raw runs behind a result, as far as they still lie in the folder."""
-    return tuple(read_run(folder.run(name)) for name in names if folder.run(name).exists())
+    return tuple(read_for_estimate(folder.run(name)) for name in names if folder.run(name).exists())

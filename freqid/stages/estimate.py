@@ -8,7 +8,7 @@ from freqid.estimate.identification import Identification, Method, identify
 from freqid.estimate.long_run import read_for_estimate
 from freqid.estimate.result_files import write_identification
 from freqid.records import Run, RunKind
-from freqid.run_file import read_run, read_run_facts
+from freqid.run_file import read_run_facts
 from freqid.stages import Progress, silent
 from freqid.test_folder import TestFolder
 
@@ -42,11 +42,10 @@ def choose_runs(folder: TestFolder, kind: RunKind, name: str | None) -> list[Run
 
     A run named is taken even if it ended early. Long response runs come shortened (`read_for_estimate`).
     """
-    read = read_for_estimate if kind == "response" else read_run
     if name is not None and name != "all":
-        return [read(folder.run(name))]
+        return [read_for_estimate(folder.run(name))]
     folder.latest_run_name(kind)  # says what is missing where there is none
     complete = [one for one in folder.run_names(kind) if read_run_facts(folder.run(one)).complete]
     if not complete:
         raise EstimationError(f"{folder.runs}: no {kind} run is complete; name one with --run to use it nevertheless")
-    return [read(folder.run(one)) for one in (complete if name == "all" else complete[-1:])]
+    return [read_for_estimate(folder.run(one)) for one in (complete if name == "all" else complete[-1:])]

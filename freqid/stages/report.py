@@ -13,11 +13,11 @@ import freqid
 from excitation.hdf5_file import file_sha256
 from freqid.crosscheck.result_file import read_crosscheck
 from freqid.errors import TestFolderError
+from freqid.estimate.long_run import read_for_estimate
 from freqid.estimate.result_files import read_identification
 from freqid.freshness import changed_sources
 from freqid.records import Run
 from freqid.rig import read_rig
-from freqid.run_file import read_run
 from freqid.stages import Progress, silent
 from freqid.step_test.result_file import read_step_result
 from freqid.test_folder import TestFolder, write_text
@@ -92,7 +92,7 @@ def gather(folder: TestFolder) -> Any:
 
 def _run(folder: TestFolder, names: tuple[str, ...]) -> Run | None:
     path = folder.run(names[-1]) if names else None
-    return read_run(path) if path is not None and path.exists() else None
+    return read_for_estimate(path) if path is not None and path.exists() else None
 
 
 def _refuse_stale(folder: TestFolder, path: Path, verb: str) -> None:
