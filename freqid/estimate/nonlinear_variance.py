@@ -8,7 +8,7 @@ the response and, through the weights of the fit, the covariance of the paramete
     C = N^-1 [sum (2 / s_n^2)^2 (s_NL^2 / 2) Re(S^H S)] N^-1,    N = sum (2 / s_n^2) Re(S^H S)
 
 with S the sensitivity of the response, s_n^2 and s_NL^2 the complex variances of noise and distortion. It is added
-only where the distortion is significant over all odd detection lines (1 in 200 records of noise alone).
+only where the distortion is significant over all odd detection lines at 5 %.
 
 Source: Pintelon & Schoukens, *System Identification*, 2nd ed. 2012, ch. 4 (best linear approximation and its
 variances).
@@ -28,8 +28,9 @@ from freqid.second_order import SecondOrder
 __all__ = ["NonlinearVariance", "nonlinear_variance"]
 
 Floats = NDArray[np.float64]
-SIGNIFICANT = 0.005
+SIGNIFICANT = 0.05
 NEIGHBOURS = 2  # on either side
+FREEDOM_OF_LINE = 1.0  # half that of Gaussian noise: neighbours share products of the same lines (simulated cubic rig)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -47,11 +48,11 @@ class NonlinearVariance:
         return len(self.at)
 
     def freedom_near(self, frequency: float) -> float:
-        """Degrees of freedom of the level around `frequency`: two for each detection line within half an octave, and
-        for at least as many as are averaged.
+        """Degrees of freedom of the level around `frequency`: of the detection lines within half an octave, and of at
+        least as many as are averaged.
         """
         near = int(np.sum(np.abs(np.log2(self.at / frequency)) <= 0.5))
-        return 2.0 * min(max(near, 2 * NEIGHBOURS + 1), self.lines)
+        return FREEDOM_OF_LINE * min(max(near, 2 * NEIGHBOURS + 1), self.lines)
 
     def added_to(self, measured: FrequencyResponse, freedom: float) -> tuple[FrequencyResponse, float]:
         """The response with noise and distortion in its variance, and the degrees of freedom of all lines together.
@@ -61,10 +62,10 @@ class NonlinearVariance:
         own = self.relative * measured.gain**2
         total = measured.variance + own
         share = own / total
-        window = float(2 * min(2 * NEIGHBOURS + 1, self.lines))
+        window = FREEDOM_OF_LINE * min(2 * NEIGHBOURS + 1, self.lines)
         each = 1 / ((1 - share) ** 2 / measured.degrees_of_freedom + share**2 / window)
         mean = float(np.mean(share))
-        together = 1 / ((1 - mean) ** 2 / freedom + mean**2 / (2 * self.lines))
+        together = 1 / ((1 - mean) ** 2 / freedom + mean**2 / (FREEDOM_OF_LINE * self.lines))
         recorded = measured.noise / np.sqrt(measured.variance)  # angle per unit of response
         return replace(
             measured, variance=total, degrees_of_freedom=each, nonlinear=np.sqrt(own) * recorded
