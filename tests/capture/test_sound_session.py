@@ -68,7 +68,7 @@ def play(folder: TestFolder) -> Play:
 
 
 def test_complete_run_is_verified_and_holds_what_was_sent(folder: TestFolder, play: Play) -> None:
-    """The loopback is the profile one round trip later; the run is read-only, on one clock, from a quarter second on."""
+    """The loopback is the profile one round trip later; the run is read-only, on one clock, from -0.25 s on."""
     (folded,) = play()
     run = read_run(folded.path)
     profile = read_profile(folder.profile_h5)
@@ -113,7 +113,7 @@ def test_level_beyond_a_limit_is_refused_before_anything_sounds(folder: TestFold
     """One level too high refuses them all."""
     from excitation.errors import LimitExceeded
 
-    with pytest.raises(LimitExceeded, match="swing|voltage"):
+    with pytest.raises(LimitExceeded, match=r"swing|voltage"):
         play(levels=(0.5, 2.0))
     assert not folder.runs.exists()
 
@@ -141,7 +141,9 @@ def test_periods_repeat_the_steady_part(folder: TestFolder, play: Play) -> None:
         ({"stops_at": 3.0}, "the sound interface stopped delivering data"),
     ],
 )
-def test_fault_is_told_and_the_run_marked(faults: dict[str, Any], expected: str, folder: TestFolder, play: Play) -> None:
+def test_fault_is_told_and_the_run_marked(
+    faults: dict[str, Any], expected: str, folder: TestFolder, play: Play
+) -> None:
     """What was recorded is a readable run, incomplete, with the reason; `estimate` does not take it unless named."""
     (folded,) = play(failed=expected, faults=SimulatedFaults(**faults))
     run = read_run(folded.path)

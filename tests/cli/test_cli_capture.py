@@ -110,3 +110,39 @@ def test_failed_writing_leaves_no_run(
     assert main(["capture", str(planned.path), "--simulate"]) == 1
     assert "No space left on device" in capsys.readouterr().err
     assert os.listdir(planned.runs) == []
+
+
+def test_simulated_levels_and_runs(planned: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
+    """Numbers after --levels, apart or by commas; every run its own file, its voltage scaled, its seed the next."""
+    words = ["capture", str(planned.path), "--simulate", "--seed", "3", "--levels", "0.5", "1", "--runs", "2", "--json"]
+    assert main(words) == 0
+    told = json.loads(capsys.readouterr().out)["runs"]
+    assert [one["run"] for one in told] == [f"response-00{n}" for n in (1, 2, 3, 4)]
+    profile = read_profile(planned.profile_h5)
+    half, whole = (read_run(planned.run(f"response-00{n}")).input.voltage for n in (1, 3))
+    assert np.array_equal(whole, profile.voltage) and np.array_equal(half, profile.voltage / 2)
+    assert "played at 0.5 times the designed voltage" in " ".join(told[0]["notes"])
+    assert told[3]["notes"][-1] == "simulated with seed 6"
+    assert main(["capture", str(planned.path), "--simulate", "--levels", "0.5,1"]) == 0
+
+
+@pytest.mark.parametrize(
+    ("words", "expected"),
+    [
+        (["--levels", "half"], "is no list of numbers"),
+        (["--levels", "0"], "must be above 0"),
+        (["--levels", "1", "-1"], "No such option"),
+        (["--loopback-channel", "0"], "is no channel"),
+        (["--loopback-channel", "left"], "is no channel"),
+        (["--guard", "1.5"], "1.5 is not in the range"),
+        (["--runs", "0"], "0 is not in the range"),
+        (["--reads", "0.7"], "--reads belongs to --calibrate"),
+        (["--simulate", "--angle-channel", "2"], "exclude each other"),
+        (["--simulate", "--periods", "3"], "go through a sound interface"),
+    ],
+)
+def test_wrong_usage_is_status_2(words: list[str], expected: str, planned: TestFolder, capsys: Any) -> None:
+    """One line that says which word does not fit."""
+    assert main(["capture", str(planned.path), *words]) == 2
+    err = capsys.readouterr().err
+    assert expected in err and err.count("\n") == 1
