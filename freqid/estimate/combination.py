@@ -4,6 +4,7 @@ Every run is estimated alone; the parameter vectors are averaged with the invers
 they scatter more than their uncertainties allow (chi-square at 5 %), the uncertainties are enlarged by that ratio, from
 five runs on each parameter by its own, and rest on the degrees of freedom of that scatter; a caveat says so.
 On separate clocks each run has its own offset: then the delay is not averaged and stays that of the last run.
+A misfit of the model that the runs share does not average out and stays in the uncertainty.
 Runs of different amplitude (rms voltages more than 20 % apart) are first held against each other
 (`amplitude_dependence`);
 where the rig depends on amplitude, only the runs at the amplitude of the last one are averaged.
@@ -31,6 +32,7 @@ from freqid.estimate.distortion_summary import distortion_caveats, summarize_rea
 from freqid.estimate.frequency_response import FrequencyResponse
 from freqid.estimate.identification import Identification
 from freqid.estimate.measured_amplitude import mean_amplitude
+from freqid.estimate.misfit_covariance import enlarged_by_lines
 from freqid.estimate.model import Adequacy, IdentifiedModel
 from freqid.estimate.realisations import mean_response
 from freqid.quantity import Caveat
@@ -101,18 +103,48 @@ def _mean(found: Sequence[Identification]) -> Identification:
     )
     scatter = summarize_realisations(combined, fitted.natural_frequency)
     amplitudes = [model.amplitude for model in models if model.amplitude is not None]
+    adequacy = _adequacy(combined.response, fitted, models)
+    degrees = sum(one.degrees_of_freedom for one in models) if freedom is None else freedom
+    if adequacy.p_value < 0.05:
+        joint, degrees = _with_lasting_misfit(combined.response, fitted, joint, degrees, models)
     model = replace(
         last,
         model=fitted,
         covariance=joint,
-        degrees_of_freedom=sum(one.degrees_of_freedom for one in models) if freedom is None else freedom,
-        adequacy=_adequacy(combined.response, fitted, models),
+        degrees_of_freedom=degrees,
+        adequacy=adequacy,
         amplitude=mean_amplitude(amplitudes) if amplitudes else None,
         distortion=(*last.distortion, *scatter),
         runs=tuple(name for one in models for name in one.runs),
-        caveats=(*last.caveats, *distortion_caveats(scatter), *caveat),
+        caveats=(*_lasting(last.caveats, adequacy), *distortion_caveats(scatter), *caveat),
     )
     return replace(found[-1], model=model, response=combined.response)
+
+
+def _lasting(caveats: Sequence[Caveat], adequacy: Adequacy) -> list[Caveat]:
+    """What the last run's caveats still say of the mean, which may be adequate where the run was not."""
+    return [caveat for caveat in caveats if caveat.code != "model_inadequate" or not adequacy.adequate]
+
+
+def _with_lasting_misfit(
+    response: FrequencyResponse,
+    model: SecondOrder,
+    covariance: Floats,
+    degrees_of_freedom: float,
+    models: Sequence[IdentifiedModel],
+) -> tuple[Floats, float]:
+    """A misfit that every run shares does not average out: at lines the covariance is enlarged by what the mean
+    response still shows of it, otherwise no variance falls below the mean of the runs' own.
+    """
+    if response.method == "periodic":
+        held = tuple(number for number in range(4) if covariance[number, number] == 0)
+        enlarged = enlarged_by_lines(response, model, covariance, held=held)
+        return enlarged.covariance, min(degrees_of_freedom, enlarged.degrees_of_freedom)
+    own = np.mean([np.diag(one.covariance) for one in models], axis=0)
+    stated = np.diag(covariance)
+    ratio = np.maximum(own / np.where(stated > 0, stated, np.inf), 1.0)
+    fewest = min(one.degrees_of_freedom for one in models)
+    return covariance * np.sqrt(np.outer(ratio, ratio)), min(degrees_of_freedom, fewest)
 
 
 def _adequacy(response: FrequencyResponse, model: SecondOrder, models: Sequence[IdentifiedModel]) -> Adequacy:

@@ -14,6 +14,9 @@ from freqid.estimate.combination import combine
 from freqid.estimate.frequency_response import FrequencyResponse
 from freqid.estimate.identification import Identification, identify
 from freqid.estimate.realisations import mean_response, robust_mean, same_voltage
+from freqid.estimate.record import Record
+from freqid.held_response import HeldResponse
+from freqid.records import Run
 from freqid.second_order import SecondOrder
 
 Floats = NDArray[np.float64]
@@ -196,3 +199,28 @@ def test_own_clocks_are_brought_together_before_averaging() -> None:
     mean = mean_response(found, models, common_clock=False)
     assert mean.realisations == 2
     np.testing.assert_allclose(mean.response.response, models[1].response(frequency), rtol=1e-12)
+
+
+def test_a_misfit_that_every_run_shares_does_not_average_out() -> None:
+    """A second mode at 6 Hz in every run: three runs with new phases leave the natural frequency as uncertain as the
+    misfit makes it: more than half the variance of one run stays. Of three straight runs a third stays, but for the
+    harmonic instead of the plain mean of three covariances that differ by up to a third: 25 %.
+    """
+
+    def seen_twice(run: Run) -> Run:
+        """The same run with a second mode in the angle."""
+        record = Record.from_run(run)
+        beside = HeldResponse(record.drive, 6.0, 0.1).mean(run.angle.time - VANE.delay, 0.0)
+        return replace(run, angle=replace(run.angle, angle=run.angle.angle + beside))
+
+    orders = odd_orders(31, 1)
+    plain = [distorted_run(multisine(orders, number), number) for number in range(3)]
+    found = [identify(seen_twice(run)) for run in plain]
+    together = combine(found).model
+    assert not together.adequacy.adequate
+    assert "model_inadequate" in [caveat.code for caveat in together.caveats]
+    single = np.mean([np.diag(one.model.covariance)[:3] for one in found], axis=0)
+    assert np.all(np.diag(together.covariance)[:3] > single / 2)
+    straight_runs = [identify(run) for run in plain]
+    own = np.mean([np.diag(one.model.covariance)[:3] for one in straight_runs], axis=0)
+    np.testing.assert_allclose(np.diag(combine(straight_runs).model.covariance)[:3], own / 3, rtol=0.25)
