@@ -138,7 +138,17 @@ def _weighted(record: Record, fit: RecordFit) -> Motion:
     lines = None if record.periodicity is None else LineRegression.of(record, fit)
     noise = None if lines is None else steady_noise(record, fit, lines)
     weighted = covariance_of(record, fit) if noise is None else fit_weighted(record, fit, noise)
-    return Motion(record=record, weighted=weighted, lines=lines, caveats=())
+    return Motion(record=record, weighted=_with_shared_stamp_error(record, weighted), lines=lines, caveats=())
+
+
+def _with_shared_stamp_error(record: Record, weighted: WeightedFit) -> WeightedFit:
+    """What all stamps may be wrong by together is the delay's alone; an unknown clock offset holds it anyway."""
+    free = weighted.fit.prediction.free
+    if not record.common_clock or record.stamp_uncertainty == 0 or 3 not in free:
+        return weighted
+    covariance = weighted.covariance.copy()
+    covariance[free.index(3), free.index(3)] += record.stamp_uncertainty**2
+    return replace(weighted, covariance=covariance)
 
 
 def _ran_away(record: Record, fit: RecordFit) -> bool:

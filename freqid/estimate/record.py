@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 from freqid.capture.simulated_rig import STAMP_TO_EXPOSURE_END
 from freqid.errors import EstimationError
 from freqid.estimate.frame_grid import FrameGrid
+from freqid.estimate.rounded_stamps import evened
 from freqid.held_response import Drive
 from freqid.quantity import Caveat
 from freqid.records import InputStream, Periodicity, Run
@@ -34,7 +35,7 @@ class Record:
     add its free decay. `held_delay` is set where the delay is not to be
     fitted. `same_rows` is true where voltage and angle stand in the same rows of one log. `frame_interval` is the
     spacing the
-    sensor meant to keep, s.
+    sensor meant to keep, s. `stamp_uncertainty` is the standard uncertainty that all stamps share, s.
     """
 
     drive: Drive
@@ -49,6 +50,7 @@ class Record:
     periodicity: Periodicity | None
     caveats: tuple[Caveat, ...]
     same_rows: bool = False
+    stamp_uncertainty: float = 0.0
 
     def keep(self, chosen: NDArray[np.bool_]) -> Record:
         """The record with the chosen frames (N,) only."""
@@ -78,6 +80,9 @@ class Record:
         if not usable.all():
             caveats.append(Caveat("unreadable_frames", f"{int((~usable).sum())} frames without a readable angle were "
                                                        f"left out."))
+        stamp, step = evened(stamp)
+        if step:
+            caveats.append(_rounded(step))
         drive, remarks = _drive(run.input, run.name)
         stamp = stamp + STAMP_TO_EXPOSURE_END[a.stamp] * a.exposure
         if run.common_clock and not run.input.commanded:
@@ -102,7 +107,16 @@ class Record:
             periodicity=run.input.periodicity,
             caveats=(*caveats, *remarks),
             same_rows=run.common_clock and not run.input.commanded,
+            stamp_uncertainty=step / np.sqrt(12),
         )
+
+
+def _rounded(step: float) -> Caveat:
+    return Caveat(
+        "stamps_rounded",
+        f"The angle's stamps are rounded to {step:.3g} s; the frames were taken as evenly spaced. Whether they are "
+        f"rounded to the nearest or down is not known: a delay on a common clock is uncertain by {step / 2:.2g} s.",
+    )
 
 
 def _drive(source: InputStream, name: str) -> tuple[Drive, list[Caveat]]:
