@@ -20,7 +20,7 @@ from freqid.estimate.motion import Motion, parameter_covariance
 from freqid.estimate.nonlinear_variance import nonlinear_variance
 from freqid.estimate.periodic import LineRegression, periodic_response
 
-__all__ = ["MeasuredResponse", "measure_response"]
+__all__ = ["MeasuredResponse", "joint_freedom", "measure_response"]
 
 Floats = NDArray[np.float64]
 POOLED = 4  # independent points on either side that share their noise estimate
@@ -68,7 +68,7 @@ def _at_lines(motion: Motion, lines: LineRegression) -> MeasuredResponse:
     if known is not None:
         held = tuple(number for number in range(4) if number not in fit.prediction.free)
         own = known.covariance(measured, model, held=held)
-        degrees = _joint_freedom(covariance, own, degrees, known.freedom_near(model.natural_frequency))
+        degrees = joint_freedom(covariance, own, degrees, known.freedom_near(model.natural_frequency))
         covariance = covariance + own
         measured, freedom = known.added_to(measured, freedom)
     return MeasuredResponse(
@@ -82,8 +82,11 @@ def _at_lines(motion: Motion, lines: LineRegression) -> MeasuredResponse:
     )
 
 
-def _joint_freedom(first: Floats, second: Floats, first_freedom: float, second_freedom: float) -> float:
-    """Degrees of freedom of the least certain variance of a sum of two covariances (Welch-Satterthwaite)."""
+def joint_freedom(first: Floats, second: Floats, first_freedom: float, second_freedom: float) -> float:
+    """Degrees of freedom of the least certain variance of a sum of two covariances (N, N) with their own.
+
+    Source: Welch and Satterthwaite, JCGM 100:2008, G.4.
+    """
     one, other = np.diag(first), np.diag(second)
     known = one + other > 0
     share = other[known] / (one + other)[known]

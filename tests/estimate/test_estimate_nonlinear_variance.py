@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 
 from freqid.estimate.distortion import EVEN, ODD, DistortionLevels
 from freqid.estimate.frequency_response import FrequencyResponse
-from freqid.estimate.measured_response import MeasuredResponse, measure_response
+from freqid.estimate.measured_response import MeasuredResponse, joint_freedom, measure_response
 from freqid.estimate.motion import estimate_motion
 from freqid.estimate.nonlinear_variance import NonlinearVariance, nonlinear_variance
 from freqid.estimate.record import Record
@@ -151,3 +151,17 @@ def test_degrees_of_freedom_of_a_sum_lie_between_those_of_its_parts() -> None:
     assert loud.degrees_of_freedom == pytest.approx(5.0, rel=1e-2)
     assert quiet.degrees_of_freedom == pytest.approx(100.0, rel=1e-2)
     assert together == pytest.approx(2000.0, rel=1e-2)
+
+
+def test_joint_degrees_of_freedom_of_the_gum() -> None:
+    """JCGM 100:2008, H.1: 25, 5.8, 3.9, 6.7, 2.9 and 16.6 nm with 18, 24, 5, 8, 50 and 2 degrees (confirmed)
+    make 32 nm with 16 effective degrees (from memory; 16.75 by an independent computation).
+    """
+    parts = [(25.0, 18), (5.8, 24), (3.9, 5), (6.7, 8), (2.9, 50), (16.6, 2)]
+    total, freedom = np.array([[parts[0][0] ** 2]]), float(parts[0][1])
+    for part, degrees in parts[1:]:
+        freedom = joint_freedom(total, np.array([[part**2]]), freedom, float(degrees))
+        total = total + part**2
+    assert float(np.sqrt(total[0, 0])) == pytest.approx(32, abs=0.5)
+    assert int(freedom) == 16
+    assert freedom == pytest.approx(16.75, abs=0.01)
