@@ -25,7 +25,7 @@ __all__ = ["probable_causes"]
 def probable_causes(evidence: Evidence) -> tuple[Cause, ...]:
     """Causes for which the data speak, strongest first."""
     from_records = causes_from_records(evidence)
-    from_results = () if from_records else causes_from_results(evidence)
-    from_data = causes_from_data(evidence)
-    found = sorted([*from_records, *from_results, *from_data], key=lambda cause: -cause.strength)
+    from_results = () if from_records.causes else causes_from_results(evidence)
+    from_data = causes_from_data(evidence, silent_losses=from_records.silent_losses)
+    found = sorted([*from_records.causes, *from_results, *from_data], key=lambda cause: -cause.strength)
     return tuple(found) if found else causes_of_an_open_verdict(evidence)

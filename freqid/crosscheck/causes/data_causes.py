@@ -8,6 +8,7 @@ off (the step test's own limit). Too little data is no fault but the plain reaso
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 
 import numpy as np
 
@@ -24,9 +25,11 @@ FRAMES_PER_PERIOD = 8
 CHANCE = 4.0  # standard deviations of a count
 
 
-def causes_from_data(evidence: Evidence) -> tuple[Cause, ...]:
-    """Causes that lie in the data, strongest first."""
-    clocks = (("frequency test", evidence.model.clock), ("step test", evidence.step.clock))
+def causes_from_data(evidence: Evidence, *, silent_losses: bool = True) -> tuple[Cause, ...]:
+    """Causes that lie in the data, strongest first; `silent_losses` tells whether those found are believed."""
+    clocks = [("frequency test", evidence.model.clock), ("step test", evidence.step.clock)]
+    if not silent_losses:
+        clocks = [(name, replace(clock, silently_lost_at=np.empty(0))) for name, clock in clocks]
     found = [
         *(_lost_frames(name, clock) for name, clock in clocks),
         _low_frame_rate(evidence.model.model, evidence),

@@ -10,6 +10,7 @@ One that merely contains the first (all three numbers free, where one suffices) 
 from __future__ import annotations
 
 import math
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -20,7 +21,7 @@ from freqid.crosscheck.causes.recorded_tests import prepared_tests
 from freqid.crosscheck.comparison_result import Cause
 from freqid.crosscheck.evidence import Evidence
 
-__all__ = ["causes_from_records"]
+__all__ = ["RecordCauses", "causes_from_records"]
 
 VERY_STRONG = 10.0
 WORTH_NAMING = 0.5  # of the best rise
@@ -29,14 +30,40 @@ MOST_NAMED = 3
 CONTAINED = {"operating_point": ("scale_error", "time_scale", "damping_differs")}
 
 
-def causes_from_records(evidence: Evidence) -> tuple[Cause, ...]:
-    """Causes for which the raw records speak, strongest first; none where no record is at hand."""
+@dataclass(frozen=True, slots=True, kw_only=True)
+class RecordCauses:
+    """Causes for which the raw records speak, strongest first, and whether silent losses are believed beside them."""
+
+    causes: tuple[Cause, ...] = ()
+    silent_losses: bool = True
+
+
+def causes_from_records(evidence: Evidence) -> RecordCauses:
+    """Causes for which the raw records speak; none where no record is at hand.
+
+    Silent losses that an estimate found are one more explanation of the same misfit: they are believed where a healthy
+    rig with them explains more than any mechanism without them.
+    """
     tests = prepared_tests(evidence)
     if not tests:
-        return ()
-    trials = try_mechanisms(tests)
+        return RecordCauses()
+    trials, believed = try_mechanisms(tests), True
+    losses = len(evidence.model.clock.silently_lost_at) + len(evidence.step.clock.silently_lost_at)
+    if losses:
+        without = try_mechanisms(prepared_tests(evidence, with_losses=False))
+        best = without.found[0].score if without.found else 0.0
+        if _score_of_losses(losses, trials, without) < best:
+            trials, believed = without, False
     named = _named(trials)
-    return tuple(_cause(trial, named, trials, evidence) for trial in named)
+    return RecordCauses(
+        causes=tuple(_cause(trial, named, trials, evidence) for trial in named), silent_losses=believed
+    )
+
+
+def _score_of_losses(losses: int, trials: Trials, without: Trials) -> float:
+    """Rise by putting the losses back, less the price of an instant for each (and of a whole frame's shift)."""
+    rise = trials.healthy.log_likelihood - without.healthy.log_likelihood
+    return rise - losses * math.log(trials.n_frames)
 
 
 def _named(trials: Trials) -> list[Trial]:

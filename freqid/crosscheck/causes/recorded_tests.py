@@ -62,17 +62,17 @@ class RecordedTest:
         return p.clock_ratio * self.record.stamp - p.model.delay - self.record.exposure / 2
 
 
-def prepared_tests(evidence: Evidence) -> tuple[RecordedTest, ...]:
-    """All records at hand, frequency tests first; those that cannot be fitted are left out."""
+def prepared_tests(evidence: Evidence, *, with_losses: bool = True) -> tuple[RecordedTest, ...]:
+    """All records at hand, frequency tests first; those that cannot be fitted are left out.
+
+    `with_losses` puts the silently lost frames that the estimates found back into the stamps.
+    """
     recorded = evidence.recorded
-    found = [
-        _prepared(run, evidence.model.model, evidence.model.clock, single=len(recorded.response_runs) == 1)
-        for run in _most_different(recorded.response_runs)
-    ]
-    found += [
-        _prepared(run, evidence.step.model, evidence.step.clock, single=len(recorded.step_runs) == 1)
-        for run in _most_different(recorded.step_runs)
-    ]
+    found = []
+    for runs, result in ((recorded.response_runs, evidence.model), (recorded.step_runs, evidence.step)):
+        clock = result.clock if with_losses else replace(result.clock, silently_lost_at=np.empty(0))
+        for run in _most_different(runs):
+            found.append(_prepared(run, result.model, clock, single=len(runs) == 1))
     return tuple(one for one in found if one is not None)
 
 
