@@ -14,6 +14,7 @@ An hour takes 6 GB of disk in the temporary folder (TMPDIR) while it runs.
 from __future__ import annotations
 
 import argparse
+import math
 import os
 import sys
 import tempfile
@@ -31,12 +32,10 @@ from jack_rig import jack_rig, what_is_missing
 from plant_client import PlantSettings
 from sound_session import Capture, SoundSession
 
+from excitation.profile_file import read_profile
 from freqid.run_file import read_run_facts
 
 RATE = 48000  # Hz
-PERIOD = 2.0  # s
-LEAD_AND_TAIL = 0.75  # s kept before and after the profile
-PATIENCE = 60.0  # s without growth
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -64,9 +63,10 @@ def main() -> int:
         if not arguments.real_time:
             rig.freewheel(True)
         begun = time.monotonic()
-        capture = session.start("--device", "vane", "--armed", "--periods", str(round(arguments.seconds / PERIOD)))
+        period = (read_profile(session.folder / "profile.h5").period_samples or RATE) / RATE
+        capture = session.start("--device", "vane", "--armed", "--periods", str(math.ceil(arguments.seconds / period)))
         samples = list(_followed(capture, session.folder / "runs"))
-        status = capture.wait(600.0)
+        status = capture.wait(1800.0)
         _print_summary(samples, session, time.monotonic() - begun)
         print(f"exit status {status}: {capture.last_line()}")
         return status
@@ -112,16 +112,20 @@ def _print(sample: Sample) -> None:
 
 
 def _print_summary(samples: list[Sample], session: SoundSession, elapsed: float) -> None:
-    _print(samples[-1])
     recorded = max(sample.recorded for sample in samples)
+    while_recording = [sample for sample in samples if sample.recorded > 0 and sample.memory[1] > 0]
     for number, name in enumerate(("program", "stream process")):
-        memory = np.array([sample.memory[number] for sample in samples if sample.recorded > 0])
-        spent = max(sample.processor[number] for sample in samples)
+        memory = np.array([sample.memory[number] for sample in while_recording])
         tenth = memory[: max(1, len(memory) // 10)].max()
+        spent = max(sample.processor[number] for sample in while_recording)
         print(
-            f"{name}: {tenth:.1f} MB at most in the first tenth, {memory.max():.1f} MB in the whole;"
+            f"{name}, while recording: {tenth:.1f} MB at most in the first tenth, {memory.max():.1f} MB in the whole;"
             f" {100 * spent / recorded:.2f} % of one processor in real time"
         )
+    print(
+        f"program, to the end (verifying and writing the run): {max(sample.memory[0] for sample in samples):.1f} MB,"
+        f" {max(sample.processor[0] for sample in samples):.1f} s of processor time"
+    )
     file = session.runs()[-1]
     facts = read_run_facts(file)
     print(

@@ -15,7 +15,6 @@ from __future__ import annotations
 
 import argparse
 import contextlib
-import fcntl
 import os
 import shutil
 import signal
@@ -150,6 +149,8 @@ def jack_rig(plant: PlantSettings | None = None, *, period: int = 1024, recorder
 @contextmanager
 def _server_name() -> Iterator[str]:
     """A name of the pool, for this process alone."""
+    import fcntl  # there is none on Windows, where this file must only be read
+
     end = time.monotonic() + 600.0
     while True:
         for name in SERVER_NAMES:

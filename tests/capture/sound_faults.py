@@ -28,6 +28,8 @@ from freqid.run_file import read_run
 __all__ = ["FAULTS", "REFUSALS", "Fault", "Outcome", "Refusal", "refused", "struck"]
 
 HANGS = 30.0  # s after which a program is said to hang
+# Windows lacks these; there is no rig there either, but the file is read
+KILL, STOP, HANG_UP = (getattr(signal, name, signal.SIGTERM) for name in ("SIGKILL", "SIGSTOP", "SIGHUP"))
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -121,15 +123,15 @@ def _nothing(scene: Scene) -> None:
 
 STOPPED = "stopped delivering data"
 FAULTS = (
-    Fault(name="server killed", strike=_signal_server(signal.SIGKILL), says=STOPPED, ramped=False),
-    Fault(name="server stopped", strike=_signal_server(signal.SIGSTOP), says=STOPPED, ramped=False),
-    Fault(name="child killed", strike=_signal_child(signal.SIGKILL), says="ended by itself", ramped=False),
-    Fault(name="child stopped", strike=_signal_child(signal.SIGSTOP), says="no sign of life", ramped=False),
-    Fault(name="parent killed", strike=_signal_program(signal.SIGKILL), says="incomplete", recovers=True),
+    Fault(name="server killed", strike=_signal_server(KILL), says=STOPPED, ramped=False),
+    Fault(name="server stopped", strike=_signal_server(STOP), says=STOPPED, ramped=False),
+    Fault(name="child killed", strike=_signal_child(KILL), says="ended by itself", ramped=False),
+    Fault(name="child stopped", strike=_signal_child(STOP), says="no sign of life", ramped=False),
+    Fault(name="parent killed", strike=_signal_program(KILL), says="incomplete", recovers=True),
     Fault(name="Ctrl-C", strike=_signal_program(signal.SIGINT), says=r"interrupted \(SIGINT\)"),
     Fault(name="Ctrl-C twice", strike=_interrupt_twice, says=r"interrupted \(SIGINT\)"),
     Fault(name="SIGTERM", strike=_signal_program(signal.SIGTERM), says=r"interrupted \(SIGTERM\)"),
-    Fault(name="terminal closed", strike=_signal_program(signal.SIGHUP), says=r"interrupted \(SIGHUP\)"),
+    Fault(name="terminal closed", strike=_signal_program(HANG_UP), says=r"interrupted \(SIGHUP\)"),
     Fault(name="angle near stops", strike=_nothing, says="guard: angle", plant={"gain": 24.0}),
     Fault(name="loopback dies", strike=_nothing, says="guard: loopback", plant={"loopback_ends": 2.0}),
     Fault(name="disk full", strike=_fill_disk, says="No space left"),
