@@ -10,7 +10,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Literal
 
-from freqid.capture.sound.interface import SoundDevice, StreamRequest
+from freqid.capture.sound.interface import OTHERWISE, SoundDevice, StreamRequest
 from freqid.errors import CaptureError
 
 __all__ = ["ChannelMap", "choose_device", "stream_request"]
@@ -55,7 +55,7 @@ def choose_device(devices: Sequence[SoundDevice], wanted: str | None, *, needs: 
         There is none, or more than one; the message lists the devices it could be.
     """
     if not devices:
-        raise CaptureError("no sound interface: the system lists none; connect one and see `freqid devices`")
+        raise CaptureError(f"no sound interface: the system lists none; connect one, see `freqid devices`, {OTHERWISE}")
     able = [device for device in devices if _is_able(device, needs)]
     if wanted is None:
         return _only(able, "no device is named, and", "give --device")

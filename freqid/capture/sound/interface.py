@@ -17,6 +17,7 @@ from freqid.quantity import in_unit
 
 __all__ = [
     "FLAG_NAMES",
+    "OTHERWISE",
     "Exchange",
     "Float32s",
     "OpenStream",
@@ -28,6 +29,7 @@ __all__ = [
 
 Float32s = NDArray[np.float32]
 
+OTHERWISE = "or play the exported profile with your own output and use `freqid import`"
 FLAG_NAMES = ("input underflow", "input overflow", "output underflow", "output overflow")  # bit 0 to bit 3
 
 

@@ -10,12 +10,10 @@ from __future__ import annotations
 from types import ModuleType
 from typing import Any
 
-from freqid.capture.sound.interface import Exchange, SoundDevice, StreamRequest
+from freqid.capture.sound.interface import OTHERWISE, Exchange, SoundDevice, StreamRequest
 from freqid.errors import CaptureError
 
 __all__ = ["PortAudio"]
-
-HOW_TO_GO_ON = "or play the exported profile with your own output and use `freqid import`"
 
 
 class PortAudio:
@@ -94,7 +92,7 @@ def _library() -> ModuleType:
     except (OSError, ImportError) as error:
         raise CaptureError(
             f"no sound interface can be reached: {error}; install the PortAudio library (Debian and Ubuntu: package"
-            f" libportaudio2; it comes with the Windows and macOS packages), {HOW_TO_GO_ON}"
+            f" libportaudio2; it comes with the Windows and macOS packages), {OTHERWISE}"
         ) from None
     library: ModuleType = sounddevice
     return library

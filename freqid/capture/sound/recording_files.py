@@ -93,10 +93,12 @@ def prepared_files(files: RecordingFiles, samples: Float32s, n_frames: int) -> I
 
 def _reserve(path: Path, size: int) -> None:
     with open(path, "wb") as file:
+        allocate = getattr(os, "posix_fallocate", None)
+        if allocate is None:
+            file.truncate(size)  # on Windows that takes the room
+            return
         try:
-            os.posix_fallocate(file.fileno(), 0, size)
-        except AttributeError:  # Windows takes the room with the size
-            file.truncate(size)
+            allocate(file.fileno(), 0, size)
         except OSError as error:
             if error.errno == errno.ENOSPC:
                 raise  # others: the file system cannot; then nothing is kept

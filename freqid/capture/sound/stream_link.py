@@ -212,5 +212,5 @@ def _environment() -> dict[str, str]:
 def _apart() -> dict[str, Any]:
     """A session of its own: Ctrl-C and a closed terminal reach the recording process alone."""
     if sys.platform == "win32":
-        return {"creationflags": subprocess.CREATE_NEW_PROCESS_GROUP}
+        return {"creationflags": subprocess.CREATE_NEW_PROCESS_GROUP | subprocess.ABOVE_NORMAL_PRIORITY_CLASS}
     return {"start_new_session": True}
