@@ -41,6 +41,11 @@ class Evidence:
     folder: str = "FOLDER"
 
     @property
+    def gains_are_opposite(self) -> bool:
+        """Whether one test sees the angle move against the voltage and the other with it."""
+        return self.model.model.gain * self.step.model.gain < 0
+
+    @property
     def rows(self) -> dict[str, ComparedRow]:
         """The compared quantities by name."""
         return {row.quantity: row for row in self.check.compared}

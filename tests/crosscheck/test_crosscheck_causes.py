@@ -39,6 +39,13 @@ def test_everything_different_is_neither() -> None:
     assert causes(check) == []
 
 
+def test_a_reversed_sensor_is_named() -> None:
+    """Gains of the same size and opposite sign: nothing else needs to be tried."""
+    check = checked(frequency_test(VANE * [-1, 1, 1, 1]), step_test())
+    assert causes(check) == ["sensor_reversed"]
+    assert "-12 deg/V in the frequency test and +12 in the step test" in check.causes[0].evidence
+
+
 def test_an_inadequate_model_is_evidence() -> None:
     """Misfit twice the noise: strength 1 - 1/2."""
     check = checked(frequency_test(moved("gain", 0.1), p_value=1e-9), step_test())

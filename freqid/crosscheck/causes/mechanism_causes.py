@@ -45,7 +45,7 @@ def causes_from_records(evidence: Evidence) -> RecordCauses:
     rig with them explains more than any mechanism without them.
     """
     tests = prepared_tests(evidence)
-    if not tests:
+    if not tests or evidence.gains_are_opposite:
         return RecordCauses()
     trials, believed = try_mechanisms(tests), True
     losses = len(evidence.model.clock.silently_lost_at) + len(evidence.step.clock.silently_lost_at)

@@ -123,7 +123,7 @@ def _first_look(rig: SharedRig, mechanism: Mechanism, state: Floats, healthy: Jo
     for start in mechanism.starts:
         try:
             objective, numbers = rig.first_order(mechanism, np.array(start), state, known)
-        except CaptureError:
+        except (CaptureError, np.linalg.LinAlgError):
             continue
         found.append(_Look(rise=-objective - healthy.log_likelihood, numbers=numbers))
     return sorted(found, key=lambda look: -look.rise)

@@ -21,6 +21,8 @@ def causes_from_results(evidence: Evidence) -> tuple[Cause, ...]:
     left to be told.
     """
     rows, model, step = evidence.rows, evidence.model, evidence.step
+    if evidence.gains_are_opposite:
+        return (_reversed(model, step),)
     if evidence.recorded.step_runs and evidence.recorded.response_runs:
         found = [_inadequate_model(model)]
     elif evidence.check.verdict == "agree":
@@ -28,6 +30,18 @@ def causes_from_results(evidence: Evidence) -> tuple[Cause, ...]:
     else:
         found = [_scale_error(rows), _time_scale(rows), _inadequate_model(model), _unequal_steps(step)]
     return tuple(c for c in found if c is not None)
+
+
+def _reversed(model: IdentifiedModel, step: StepResult) -> Cause:
+    return Cause(
+        cause="sensor_reversed",
+        strength=0.95,
+        evidence=(
+            f"The gain is {model.model.gain:+.3g} {model.angle_unit}/V in the frequency test and"
+            f" {step.model.gain:+.3g} in the step test: sensor or output is reversed in one of them."
+        ),
+        settling_test="Apply a small voltage by hand and see which way the angle moves in either log.",
+    )
 
 
 def _relative(row: ComparedRow) -> tuple[float, float] | None:
