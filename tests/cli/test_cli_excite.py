@@ -20,6 +20,18 @@ SHORT = ("--duration", "12", "--band", "1", "8")
 FILES = ("profile.csv", "profile.h5", "profile.json", "profile.wav")
 
 
+@pytest.fixture
+def figure() -> None:
+    """Asked for by a test that looks at the figure."""
+
+
+@pytest.fixture(autouse=True)
+def undrawn(request: pytest.FixtureRequest, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Nothing is drawn where no test looks at it: the drawing takes longer than the design."""
+    if "figure" not in request.fixturenames:
+        monkeypatch.setattr("freqid.stages.excite._drawn", lambda *_: None)
+
+
 def designed(folder: TestFolder, capsys: pytest.CaptureFixture[str], *words: str) -> dict[str, Any]:
     """What `freqid excite FOLDER --json` tells."""
     assert main(["excite", str(folder.path), "--json", *words]) == 0
@@ -71,6 +83,7 @@ def test_lightly_damped_rig_is_safe_between_the_corners_too(
     assert max(swings) < 30.0
 
 
+@pytest.mark.usefixtures("figure")
 def test_design_is_written_as_told(folder: TestFolder, capsys: pytest.CaptureFixture[str]) -> None:
     """The four files appear, the JSON file holds what was printed, and the rig sheet's sha256 stands in it."""
     told = designed(folder, capsys, "--band", "0.5", "10", "--duration", "25", "--seed", "3")
