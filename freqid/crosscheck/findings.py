@@ -96,7 +96,7 @@ def findings_of_model(
 
 def findings_of_step(step: StepResult, *, label: str = "step test", folder: str = "FOLDER") -> Findings:
     """A step test: measured are the pooled read-offs."""
-    missing = {name: f"the {name.replace('_', ' ')} was not read off the steps" for name in step.quantities}
+    missing = dict.fromkeys(step.quantities, "not read off the steps")
     return Findings(
         label=label,
         kind="step test",

@@ -15,7 +15,7 @@ from freqid.report.amplitude_ladder import amplitude_figure, rungs_of
 from freqid.report.cause_card import cause_figure
 from freqid.report.data_ribbon import ribbon_figure, ribbon_of
 from freqid.report.gain_and_phase import gain_and_phase_figure
-from freqid.report.quantity_words import label_of, with_uncertainty
+from freqid.report.quantity_words import label_of, sentence_case, with_uncertainty
 from freqid.report.report_inputs import ReportInputs
 from freqid.report.residual_ladder import residual_figure
 from freqid.report.step_figure import step_figure_of
@@ -63,7 +63,7 @@ def _causes(inputs: ReportInputs) -> dict[str, ReportFigure]:
     return {
         f"cause_{cause.cause}": ReportFigure(
             figure=cause_figure(cause.exhibit),
-            caption=f"{cause.exhibit.title.rstrip('.')}.",
+            caption=f"{sentence_case(cause.exhibit.title).rstrip('.')}.",
             alternative=f"{cause.exhibit.title.rstrip('.')}. {cause.evidence}",
         )
         for cause in (() if check is None else check.causes)

@@ -17,7 +17,16 @@ from freqid.estimate.model import IdentifiedModel
 from freqid.quantity import Caveat, Quantity
 from freqid.records import Run
 from freqid.report.data_words import clock_sentences, run_sentences
-from freqid.report.quantity_words import interval, label_of, minus, number, unit_shown, with_uncertainty, without_unit
+from freqid.report.quantity_words import (
+    interval,
+    label_of,
+    minus,
+    number,
+    sentence_case,
+    unit_shown,
+    with_uncertainty,
+    without_unit,
+)
 from freqid.report.report_inputs import ReportInputs
 from freqid.rig import TABLES, Rig
 from freqid.step_test.step_result import StepResult
@@ -79,8 +88,8 @@ def _compared(row: ComparedRow) -> dict[str, str]:
         "step_test": without_unit(row.step_test),
         "difference": without_unit(row.difference),
         "en": "" if row.en is None else minus(f"{row.en:.2f}"),
-        "tolerance": "not set" if row.tolerance is None else f"± {row.tolerance:.3g}",
-        "verdict": row.verdict,
+        "tolerance": "" if row.tolerance is None else f"± {row.tolerance:.3g}",
+        "verdict": "" if row.verdict == "not judged" else row.verdict,
     }
 
 
@@ -127,11 +136,6 @@ def _requirement(row: RequirementRow) -> dict[str, str]:
         "verdict": row.verdict,
         "reason": row.reason,
     }
-
-
-def sentence_case(text: str) -> str:
-    """The text with its first letter large."""
-    return text[:1].upper() + text[1:]
 
 
 def _adequacy(model: IdentifiedModel) -> str:

@@ -10,7 +10,17 @@ import math
 
 from freqid.quantity import Quantity
 
-__all__ = ["UNDETERMINED", "interval", "label_of", "minus", "number", "unit_shown", "with_uncertainty", "without_unit"]
+__all__ = [
+    "UNDETERMINED",
+    "interval",
+    "label_of",
+    "minus",
+    "number",
+    "sentence_case",
+    "unit_shown",
+    "with_uncertainty",
+    "without_unit",
+]
 
 UNDETERMINED = "undetermined"
 
@@ -75,3 +85,8 @@ def minus(text: str) -> str:
     if not text.startswith("-"):
         return text
     return text[1:] if not text.strip("-0.") else f"−{text[1:]}"
+
+
+def sentence_case(text: str) -> str:
+    """The text with its first letter large."""
+    return text[:1].upper() + text[1:]
