@@ -44,7 +44,7 @@ def _mean_of_five(part: str) -> Callable[..., float]:
     """Value or standard uncertainty of the mean of five readings that scatter by far more than they are uncertain."""
 
     def value(**readings: float) -> float:
-        from freqid.step_test.evaluation import pool
+        from freqid.step_test.pooling import pool
 
         mean = pool([_with_expanded(reading, 1e-9) for reading in readings.values()])
         return float(getattr(mean, part))

@@ -18,16 +18,20 @@ from freqid.errors import StepTestError
 from freqid.estimate.identification import clock_caveats, clock_map
 from freqid.estimate.motion import Motion, estimate_motion, parameter_covariance
 from freqid.estimate.record import Record
-from freqid.quantity import Caveat, Quantity, coverage_factor
+from freqid.quantity import Caveat, Quantity
 from freqid.records import Run
 from freqid.second_order import SecondOrder
 from freqid.step_relations import logarithmic_decrement
-from freqid.step_test.reading import StepFrames, read_step
+from freqid.step_test.envelope import fit_decay
+from freqid.step_test.pooling import pool
+from freqid.step_test.reading import StepFrames, read_extremes, read_step
+from freqid.step_test.single_steps import step_parameters
 from freqid.step_test.smooth_curve import HALF_WIDTH_IN_PERIODS
+from freqid.step_test.static_line import StaticLine, fit_static_line
 from freqid.step_test.step_result import STEP_QUANTITIES, StepReading, StepResult
 from freqid.step_test.steps import VoltageStep, find_steps
 
-__all__ = ["evaluate_steps", "pool"]
+__all__ = ["evaluate_steps"]
 
 Floats = NDArray[np.float64]
 
@@ -61,11 +65,12 @@ def evaluate_steps(run: Run) -> StepResult:
     noise = float(np.sqrt(weighted.fit.sum_of_squares / weighted.fit.degrees_of_freedom))
     readings, caveats = [], [*record.caveats, *motion.caveats]
     exact = _exact(motion, record.angle_unit)
+    alone = step_parameters(motion, noise)
     for step in steps:
         frames = _frames(record, motion, step, record.angle, noise)
         smooth = _frames(record, motion, step, weighted.fit.prediction.angle, noise)
         if frames is not None and smooth is not None:
-            readings.append(_reading(frames, smooth, step, exact, motion))
+            readings.append(replace(_reading(frames, smooth, step, exact, motion), parameters=alone(step)))
     if not readings:
         raise StepTestError(
             f"{run.name}: {len(steps)} steps, but none is held for {FEWEST_FRAMES_IN_A_HOLD} frames and "
@@ -84,6 +89,19 @@ def evaluate_steps(run: Run) -> StepResult:
         undetermined=motion.undetermined,
         caveats=(*caveats, *more, *clock_caveats(record)),
         runs=(run.name,),
+        decay=fit_decay([r.extremes for r in readings if r.extremes is not None], angle_unit=record.angle_unit),
+        static_line=_static_line(readings, record.angle_unit),
+    )
+
+
+def _static_line(readings: list[StepReading], angle_unit: str) -> StaticLine | None:
+    settled = [(r.voltage_after, r.level, r.direction == "up") for r in readings if r.level is not None]
+    return fit_static_line(
+        np.array([voltage for voltage, _, _ in settled]),
+        np.array([level.value for _, level, _ in settled]),
+        np.array([level.standard_uncertainty for _, level, _ in settled]),
+        np.array([up for _, _, up in settled], dtype=bool),
+        angle_unit=angle_unit,
     )
 
 
@@ -164,6 +182,8 @@ def _reading(
         voltage_before=step.before,
         voltage_after=step.after,
         quantities={name: quantities.get(name) for name in STEP_QUANTITIES},
+        level=Quantity.normal(frames.after[0], frames.angle_unit, frames.after[1]),
+        extremes=read_extremes(frames, half_width=half_width),
     )
 
 
@@ -215,27 +235,3 @@ def _words(name: str) -> str:
     if not figures or head not in ("settling", "rise", "delay"):
         return name.replace("_", " ")
     return f"{head} time ({figures.replace('_', '-')} %)"
-
-
-def pool(values: list[Quantity]) -> Quantity | None:
-    """Weighted mean of several readings of one quantity; None of none.
-
-    The standard uncertainty is the larger of the internal (weights) and the external one (scatter, JCGM 100 4.2.3).
-    """
-    if not values:
-        return None
-    value = np.array([q.value for q in values])
-    u = np.array([max(q.standard_uncertainty, 1e-300) for q in values])
-    weight = u**-2.0
-    mean = float(np.sum(weight * value) / np.sum(weight))
-    internal = float(1 / np.sqrt(np.sum(weight)))
-    n = len(values)
-    if n == 1:
-        return Quantity.normal(mean, values[0].unit, internal)
-    external = float(np.sqrt(np.sum(weight * (value - mean) ** 2) / np.sum(weight) / (n - 1)))
-    if external <= internal:
-        return Quantity.normal(mean, values[0].unit, internal)
-    half = max(coverage_factor(n - 1) * external, coverage_factor() * internal)
-    return Quantity(
-        value=mean, unit=values[0].unit, standard_uncertainty=external, interval_95=(mean - half, mean + half)
-    )

@@ -15,9 +15,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from freqid.quantity import Quantity
+from freqid.step_test.envelope import Extremes
 from freqid.step_test.smooth_curve import SmoothCurve
 
-__all__ = ["StepFrames", "read_step"]
+__all__ = ["StepFrames", "read_extremes", "read_step"]
 
 Floats = NDArray[np.float64]
 
@@ -46,6 +47,29 @@ class StepFrames:
 
 def read_step(frames: StepFrames, *, half_width: float) -> dict[str, Quantity | None]:
     """Everything that can be read off one step; None where it cannot."""
+    trace = _trace(frames, half_width)
+    gain_uncertainty = float(np.hypot(frames.before[1], frames.after[1]) / abs(frames.voltage_change))
+    readings: dict[str, Quantity | None] = dict(trace.crossings())
+    readings.update(trace.settling())
+    readings.update(trace.extremes(frames.period))
+    readings["static_gain"] = Quantity.normal(
+        (frames.after[0] - frames.before[0]) / frames.voltage_change, f"{frames.angle_unit}/V", gain_uncertainty
+    )
+    return readings
+
+
+def read_extremes(frames: StepFrames, *, half_width: float) -> Extremes:
+    """Every peak and trough that stands clear of the noise, in angle units; none for a sluggish rig."""
+    trace, change = _trace(frames, half_width), frames.after[0] - frames.before[0]
+    clear = np.array(trace.clear_extremes(), dtype=int)
+    return Extremes(
+        time=trace.time[clear],
+        deviation=(trace.level[clear] - 1) * change,
+        uncertainty=np.hypot(trace.noise[clear], trace.ends) * abs(change),
+    )
+
+
+def _trace(frames: StepFrames, half_width: float) -> _Trace:
     curve = SmoothCurve(time=frames.time, angle=frames.angle, half_width=half_width, noise=frames.noise)
     grid = np.arange(0.0, frames.time[-1], frames.period / POINTS_PER_PERIOD)
     grid = grid[grid > 0]
@@ -54,15 +78,7 @@ def read_step(frames: StepFrames, *, half_width: float) -> dict[str, Quantity | 
     level = (value - frames.before[0]) / change
     noise = spread / abs(change)
     ends = float(np.hypot(frames.before[1], frames.after[1]) / abs(change))
-    trace = _Trace(time=grid, level=level, slope=slope / change, noise=noise, ends=ends)
-    gain_uncertainty = float(np.hypot(frames.before[1], frames.after[1]) / abs(frames.voltage_change))
-    readings: dict[str, Quantity | None] = dict(trace.crossings())
-    readings.update(trace.settling())
-    readings.update(trace.extremes(frames.period))
-    readings["static_gain"] = Quantity.normal(
-        change / frames.voltage_change, f"{frames.angle_unit}/V", gain_uncertainty
-    )
-    return readings
+    return _Trace(time=grid, level=level, slope=slope / change, noise=noise, ends=ends)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -122,9 +138,8 @@ class _Trace:
             return None
         return float(self.time[outside[-1] + 1])
 
-    def extremes(self, period: float) -> dict[str, Quantity | None]:
-        """Overshoot, peak time, decrement and time constant from the peaks and troughs about the settled level."""
-        none = dict.fromkeys(("percent_overshoot", "peak_time", "log_decrement", "time_constant"))
+    def clear_extremes(self) -> list[int]:
+        """Places of the peaks and troughs about the settled level, as long as they stand clear of the noise."""
         deviation = self.level - 1
         turning = np.flatnonzero(np.diff(np.sign(self.slope)) != 0) + 1
         first = self._crossing(0.9)[0]
@@ -136,6 +151,13 @@ class _Trace:
             if not (np.isfinite(deviation[j]) and wanted * deviation[j] > CLEAR * u):
                 break
             clear.append(int(j))
+        return clear
+
+    def extremes(self, period: float) -> dict[str, Quantity | None]:
+        """Overshoot, peak time, decrement and time constant from the peaks and troughs about the settled level."""
+        none = dict.fromkeys(("percent_overshoot", "peak_time", "log_decrement", "time_constant"))
+        deviation = self.level - 1
+        clear = self.clear_extremes()
         if not clear:
             none["percent_overshoot"] = self._no_overshoot()
             return none
@@ -155,7 +177,8 @@ class _Trace:
         hidden = 100 * float(np.hypot(np.nanmedian(self.noise), self.ends)) if np.isfinite(self.noise).any() else np.nan
         if not np.isfinite(hidden):
             return None
-        return Quantity(value=0.0, unit="%", standard_uncertainty=hidden, interval_95=(0.0, 2 * hidden))
+        most = (CLEAR + 2) * hidden  # an extreme just not clear, and its noise
+        return Quantity(value=0.0, unit="%", standard_uncertainty=most / 2, interval_95=(0.0, most))
 
     def _decay(self, clear: Floats, deviation: Floats) -> dict[str, Quantity | None]:
         """Straight line through ln|extreme| against its number and its time, weighted with its uncertainty."""

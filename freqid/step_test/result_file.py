@@ -13,6 +13,8 @@ from freqid.derived import undefined_reasons
 from freqid.errors import TestFolderError
 from freqid.quantity import Caveat, Quantity
 from freqid.second_order import PARAMETER_ORDER, SecondOrder
+from freqid.step_test.envelope import Decay, Extremes
+from freqid.step_test.static_line import StaticLine
 from freqid.step_test.step_result import StepReading, StepResult
 
 if TYPE_CHECKING:
@@ -49,6 +51,9 @@ def step_as_json(result: StepResult) -> dict[str, Any]:
         "degrees_of_freedom": result.degrees_of_freedom,
         "derived": plain(result.derived),
         "steps": [step.as_json() for step in result.steps],
+        "groups": [group.as_json() for group in (*result.by_direction, *result.by_amplitude)],
+        "decay": None if result.decay is None else result.decay.as_json(),
+        "static_line": None if result.static_line is None else result.static_line.as_json(),
         "clock": result.clock.as_json(),
         "explained": result.explained,
         "undetermined": list(result.undetermined),
@@ -79,6 +84,9 @@ def _result(content: dict[str, Any]) -> StepResult:
                 voltage_before=row["voltage_before"],
                 voltage_after=row["voltage_after"],
                 quantities=back(row["quantities"]),
+                level=Quantity.from_json(row.get("level")),
+                extremes=None if row.get("extremes") is None else Extremes.from_json(row["extremes"]),
+                parameters=back(row.get("parameters", {})),
             )
             for row in content["steps"]
         ),
@@ -91,4 +99,6 @@ def _result(content: dict[str, Any]) -> StepResult:
         undetermined=tuple(content["undetermined"]),
         caveats=Caveat.all_from_json(content["warnings"]),
         runs=tuple(content["runs"]),
+        decay=Decay.from_json(content.get("decay")),
+        static_line=StaticLine.from_json(content.get("static_line")),
     )

@@ -15,7 +15,7 @@ from freqid.step_relations import (
     normalised_settling_time,
     percent_overshoot,
 )
-from freqid.step_test.evaluation import pool
+from freqid.step_test.pooling import pool
 from freqid.step_test.reading import StepFrames, read_step
 from freqid.step_test.smooth_curve import SmoothCurve
 
