@@ -10,6 +10,7 @@ Source: sine fitting with known frequencies, IEEE Std 1241; products of cosines 
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -20,6 +21,7 @@ __all__ = ["HarmonicBasis"]
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
 ORTHOGONAL = 1e-10  # relative product below which two lines are taken as orthogonal
+CHUNK = 8192  # instants at a time: their powers stay close to the processor
 RIDGE = 1e-12  # of the unit diagonal: keeps two columns that coincide from ending in an error
 
 
@@ -85,14 +87,28 @@ class HarmonicBasis:
         return np.block([[lines, beside], [beside.T, coupled[len(lines) :]]])
 
     def _sums(self, values: Floats, highest: int) -> Complexes:
-        """Sums (highest + 1, ...) of values times the powers 0, 1, ... of `turn`."""
-        power = np.ones(len(self.turn), dtype=complex)
-        weights = np.ascontiguousarray(values.T, dtype=complex)
-        sums = np.empty((highest + 1, *values.shape[1:]), dtype=complex)
-        for order in range(highest + 1):
-            sums[order] = weights @ power
-            power *= self.turn
-        return sums
+        """Sums (highest + 1, ...) of values times the powers 0, 1, ... of `turn`.
+
+        Power b n + a is power a times power b of the n-th, so of all powers only some 2 sqrt(highest) are worked out.
+        """
+        n = math.isqrt(highest) + 1
+        sums = np.zeros((*values.shape[1:], n * n), dtype=complex)
+        for begin in range(0, len(self.turn), CHUNK):
+            turn = self.turn[begin : begin + CHUNK]
+            small = _powers(turn, n)
+            large = _powers(small[-1] * turn, n)
+            weighted = values[begin : begin + CHUNK].T[..., None, :] * large
+            sums += (weighted @ small.T).reshape(sums.shape)
+        return np.asarray(np.moveaxis(sums[..., : highest + 1], -1, 0))
+
+
+def _powers(turn: Complexes, count: int) -> Complexes:
+    """Powers 0 to count - 1 of each value, (count, S)."""
+    powers = np.empty((count, len(turn)), dtype=complex)
+    powers[0] = 1.0
+    for order in range(1, count):
+        np.multiply(powers[order - 1], turn, out=powers[order])
+    return powers
 
 
 def _inverse(scaled: Floats, lines: int) -> Floats:

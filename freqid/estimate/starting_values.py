@@ -26,6 +26,7 @@ Floats = NDArray[np.float64]
 DAMPING_GRID = (0.05, 0.2, 0.7, 2.0)
 FREQUENCY_RATIO = 1.15
 POINTS_PER_PERIOD = 16  # of the highest excited frequency, on the bank's grid
+MOST_RATIOS = 32  # on either side, before a part of the record is looked at first
 WIDER = 1.1  # than the band, for what the bank looks at
 LARGEST_RATIO_ERROR = 1.6e-3  # of two ordinary crystal clocks; design limit 1e-3
 
@@ -55,9 +56,10 @@ def starting_values(record: Record, *, count: int = 4) -> list[Candidate]:
 def _input_band(record: Record) -> tuple[float, float]:
     """Frequencies below which 1 % and 99.9 % of the input's power lies, Hz."""
     value = record.drive.value - np.mean(record.drive.value)
-    power = np.cumsum(np.abs(np.fft.rfft(value)) ** 2)
+    size = _smooth_size(len(value))
+    power = np.cumsum(np.abs(np.fft.rfft(value, size)) ** 2)
     share = power / power[-1]
-    resolution = 1 / (len(value) * record.drive.interval)
+    resolution = 1 / (size * record.drive.interval)
     return float(np.searchsorted(share, 0.01) * resolution), float((np.searchsorted(share, 0.999) + 1) * resolution)
 
 
@@ -111,8 +113,8 @@ class _Bank:
         average = np.sinc(self._frequency * self._step) * np.exp(-1j * np.pi * self._frequency * self._step)
         self._drive = self._spectrum(averaged) / average
         self._sum = float(np.sum(averaged))
-        self._spectra: dict[float, NDArray[np.complex64]] = {}
-        self._energy = float(np.sum(self._resampled(1.0) ** 2))
+        self._spectra: dict[tuple[float, int], tuple[NDArray[np.complex64], float]] = {}
+        self._whole = len(self._resampled(1.0))
 
     def _spectrum(self, values: Floats) -> NDArray[np.complex64]:
         """Bins of the band, without the mean; seven digits are enough for a start, and twice as fast."""
@@ -124,26 +126,37 @@ class _Bank:
         when = self._record.stamp[0] + self._step / ratio * np.arange(n)
         return np.asarray(np.interp(when, self._record.stamp, self._angle))
 
-    def match(self, frequency: float, damping: float, ratio: float) -> list[Candidate]:
-        """The two best lags of one rig."""
+    def _angle_spectrum(self, ratio: float, count: int) -> tuple[NDArray[np.complex64], float]:
+        """Spectrum and energy of the liveliest `count` steps of the angle, the rest silenced."""
+        if (ratio, count) not in self._spectra:
+            values = self._resampled(ratio)
+            if count < self._whole:
+                energy = np.concatenate([[0.0], np.cumsum(values**2)])
+                begin = int(np.argmax(energy[count:] - energy[: len(energy) - count]))
+                values[:begin] = 0.0
+                values[begin + count :] = 0.0
+            self._spectra[ratio, count] = self._spectrum(values), float(np.sum(values**2))
+        return self._spectra[ratio, count]
+
+    def match(self, frequency: float, damping: float, ratio: float, *, count: int | None = None) -> list[Candidate]:
+        """The two best lags of one rig, for the whole angle or the liveliest `count` steps of it."""
         unit = SecondOrder(gain=1.0, natural_frequency=frequency, damping_ratio=damping)
         x = (self._frequency / frequency).astype(np.float32)
         shape = self._drive / ((1 - x * x) + np.complex64(2j * damping) * x)
         # Parseval; the mean belongs to the grid, not to the padding
         own = 2 * float(np.vdot(shape, shape).real) / self._size
         own += self._sum**2 * (1 / self._size - 1 / len(self._grid))
-        if not (own > 0 and self._energy > 0):
+        spectrum, energy = self._angle_spectrum(ratio, self._whole if count is None else count)
+        if not (own > 0 and energy > 0):
             return []
-        if ratio not in self._spectra:
-            self._spectra[ratio] = self._spectrum(self._resampled(ratio))
         product = np.zeros(self._size // 2 + 1, dtype=np.complex64)
-        product[1 : len(shape) + 1] = self._spectra[ratio] * np.conj(shape)
+        product[1 : len(shape) + 1] = spectrum * np.conj(shape)
         correlation = np.fft.irfft(product, self._size)
         strength = self._within(np.abs(correlation), int(self._span * ratio / self._step) + 1)
         results = []
         for _ in range(2):
             best = int(np.argmax(strength))
-            results.append(self._candidate(unit, ratio, best, float(correlation[best]) / own, own))
+            results.append(self._candidate(unit, ratio, best, float(correlation[best]) / own, own / energy))
             exclude = max(int(0.1 / frequency / self._step), 1)
             strength[np.arange(best - exclude, best + exclude + 1) % self._size] = 0.0
         return results
@@ -158,30 +171,44 @@ class _Bank:
             strength[n_angle : self._size - len(self._grid) + 1] = 0.0
         return strength
 
-    def _candidate(self, unit: SecondOrder, ratio: float, best: int, gain: float, own: float) -> Candidate:
+    def _candidate(self, unit: SecondOrder, ratio: float, best: int, gain: float, share: float) -> Candidate:
         moved = (best if best < self._size // 2 else best - self._size) * self._step
         # the shape's grid begins at grid[0] of the drive's clock, the angle's at ratio * stamp[0]
         lag = moved + ratio * self._record.stamp[0] - self._grid[0]
         return Candidate(
             model=replace(unit, gain=float(gain), delay=float(lag)),
             clock_ratio=ratio,
-            explained=float(gain**2 * own / self._energy),
+            explained=float(gain**2 * share),
         )
 
     def match_ratios(self, candidate: Candidate) -> list[Candidate]:
-        """The same rig at clock ratios so spaced that a tenth of its cycle slips between them over the record."""
+        """The same rig at clock ratios so spaced that a tenth of its cycle slips between them over the record.
+
+        In a long record with a period the liveliest part is looked at first, where few ratios need to be tried, then
+        longer parts with the ratios around the best.
+        """
         m = candidate.model
-        spacing = 0.2 / (m.natural_frequency * self._span)
-        if spacing > LARGEST_RATIO_ERROR:
+        slip = 0.2 / m.natural_frequency
+        if slip / self._span > LARGEST_RATIO_ERROR:
             return []
-        steps = int(LARGEST_RATIO_ERROR / spacing) + 1
-        ratios = (1 + k * spacing for k in range(-steps, steps + 1) if k)
-        return [
-            c
-            for r in ratios
-            if abs(r - 1) <= LARGEST_RATIO_ERROR
-            for c in self.match(m.natural_frequency, m.damping_ratio, r)[:1]
-        ]
+        centre, reach, span = 1.0, LARGEST_RATIO_ERROR, self._span
+        if self._record.periodicity is not None:
+            span = min(span, MOST_RATIOS * slip / LARGEST_RATIO_ERROR)
+        while True:
+            spacing = slip / span
+            steps = int(reach / spacing) + 1
+            ratios = [r for r in centre + spacing * np.arange(-steps, steps + 1) if abs(r - 1) <= LARGEST_RATIO_ERROR]
+            count = self._whole if span >= self._span else int(span / self._step)
+            found = [
+                c
+                for r in ratios
+                if r != 1.0 or count < self._whole
+                for c in self.match(m.natural_frequency, m.damping_ratio, float(r), count=count)[:1]
+            ]
+            if span >= self._span or not found:
+                return found
+            centre, reach = max(found, key=lambda c: c.explained).clock_ratio, 2 * spacing
+            span = min(4 * span, self._span)
 
 
 def _smooth_size(least: int) -> int:
