@@ -93,9 +93,10 @@ def profile_of(seconds: float) -> Profile:
     """A multisine of 200 lines."""
     return design_multisine(
         MultisineSettings(
-            band=(0.3, 12.42), duration=seconds, sample_rate=1000.0, limits=LIMITS, rigs=(VANE,), grid="odd"
+            band=(0.3, 12.42), duration=seconds, period=min(33.0, seconds / 3), sample_rate=1000.0,
+            limits=LIMITS, rigs=(VANE,), grid="odd",
         )
-    )
+    )  # fmt: skip
 
 
 def logged_folder(path: Path, seconds: float) -> tuple[TestFolder, Path]:
