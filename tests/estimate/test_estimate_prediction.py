@@ -67,7 +67,8 @@ def test_jacobian_equals_numerical_differences(
     Gain, rest and start enter linearly. The angle's second derivative jumps with the staircase, so a difference over
     a lag of 2 h errs by up to h times half the greatest jump, wn^2 K 0.2 V, beside a rate of some wn K 0.3 V: h wn /
     3 = 6e-6 for h = 1e-6 s. Differences by natural frequency and damping ratio with 1e-5 of the value err by
-    (1e-5 Q)^2 / 6 < 1e-7. The exposure on a clock of another ratio is 1e-3 shorter or longer in proportion: nothing of order 1.
+    (1e-5 Q)^2 / 6 < 1e-7. The exposure on a clock of another ratio is 1e-3 shorter or longer in proportion: nothing
+    of order 1.
     Bound: 5e-5 of the column's greatest.
     """
     model = SecondOrder(gain=12.0, natural_frequency=3.0, damping_ratio=damping, delay=0.02)
