@@ -43,6 +43,7 @@ from freqid.resonance_relations import (
     resonance_gain_ratio,
 )
 from freqid.step_relations import (
+    logarithmic_decrement,
     normalised_delay_time_50,
     normalised_peak_time,
     normalised_rise_time_0_90,
@@ -52,7 +53,7 @@ from freqid.step_relations import (
     percent_overshoot,
 )
 
-__all__ = ["DERIVED_NAMES", "derived_quantities", "settling_quantity", "undefined_reasons"]
+__all__ = ["DERIVED_NAMES", "decrement_quantity", "derived_quantities", "settling_quantity", "undefined_reasons"]
 
 Floats = NDArray[np.float64]
 
@@ -185,6 +186,19 @@ def settling_quantity(
         standard_uncertainty=spread.standard_uncertainty,
         interval_95=(float(min(value, max(spread.low, 0.0))), float(max(value, spread.high))),
     )
+
+
+def decrement_quantity(
+    parameters: ArrayLike, covariance: ArrayLike, *, degrees_of_freedom: float = math.inf
+) -> Quantity | None:
+    """Logarithmic decrement of one full cycle; None from a damping ratio of 1 on, where there is no oscillation.
+
+    Parameters, uncertainty and errors as for `derived_quantities`.
+    """
+    estimate = checked_estimate(parameters, covariance, degrees_of_freedom)
+    value = float(logarithmic_decrement(estimate.point[DAMPING]))
+    uncertainty = propagated(lambda point: float(logarithmic_decrement(point[DAMPING])), estimate, [DAMPING])
+    return Quantity.finite_or_none(value, "1", uncertainty, degrees_of_freedom)
 
 
 def undefined_reasons(

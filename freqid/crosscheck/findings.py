@@ -13,14 +13,12 @@ from dataclasses import dataclass, field
 import numpy as np
 from numpy.typing import NDArray
 
-from freqid.derived import derived_quantities, settling_quantity
-from freqid.derived_uncertainty import DAMPING, checked_estimate, propagated
+from freqid.derived import decrement_quantity, derived_quantities, settling_quantity
 from freqid.estimate.model import IdentifiedModel
 from freqid.estimate.resonance import ResonanceReading
 from freqid.quantity import Quantity
 from freqid.resonance_relations import half_power_width_ratio
 from freqid.second_order import SecondOrder
-from freqid.step_relations import logarithmic_decrement
 from freqid.step_test.step_result import StepResult
 
 __all__ = ["Findings", "TestKind", "findings_of_model", "findings_of_step", "half_power_width"]
@@ -143,16 +141,9 @@ def _implied(
     )
     implied["half_power_width"] = half_power_width(model, covariance, degrees_of_freedom=degrees_of_freedom)
     implied["static_gain"] = parameters["gain"]
-    implied["log_decrement"] = _decrement(model, covariance, degrees_of_freedom)
+    implied["log_decrement"] = decrement_quantity(
+        model.vector, covariance, degrees_of_freedom=degrees_of_freedom
+    )
     if parameters["gain"] is None:
         implied["resonance_gain"] = None
     return implied
-
-
-def _decrement(model: SecondOrder, covariance: Floats, degrees_of_freedom: float) -> Quantity | None:
-    if model.damping_ratio >= 1:
-        return None
-    estimate = checked_estimate(model.vector, covariance, degrees_of_freedom)
-    u = propagated(lambda point: float(logarithmic_decrement(point[DAMPING])), estimate, [DAMPING])
-    value = float(logarithmic_decrement(model.damping_ratio))
-    return Quantity.finite_or_none(value, "1", u, degrees_of_freedom)

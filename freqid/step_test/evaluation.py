@@ -13,7 +13,7 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
-from freqid.derived import derived_quantities
+from freqid.derived import decrement_quantity, derived_quantities
 from freqid.errors import StepTestError
 from freqid.estimate.identification import clock_caveats, clock_map
 from freqid.estimate.motion import Motion, estimate_motion, parameter_covariance
@@ -23,6 +23,7 @@ from freqid.records import Run
 from freqid.second_order import SecondOrder
 from freqid.step_relations import logarithmic_decrement
 from freqid.step_test.envelope import fit_decay
+from freqid.step_test.hold_frames import FEWEST_FRAMES_IN_A_HOLD, damped_period, frames_of_step
 from freqid.step_test.pooling import pool
 from freqid.step_test.reading import StepFrames, read_extremes, read_step
 from freqid.step_test.single_steps import step_parameters
@@ -35,10 +36,8 @@ __all__ = ["evaluate_steps"]
 
 Floats = NDArray[np.float64]
 
-FEWEST_FRAMES_IN_A_HOLD = 12
 FRAMES_PER_PERIOD = 8
-SETTLED_SHARE = 0.3  # of a hold, at its end, that is averaged for the settled level
-SETTLED_TIME_CONSTANTS = 3.0  # a hold shorter than this many time constants is not settled
+LONGEST_STEP = 0.1  # of a period: a longer change of the voltage is a ramp
 
 
 def evaluate_steps(run: Run) -> StepResult:
@@ -66,17 +65,20 @@ def evaluate_steps(run: Run) -> StepResult:
     readings, caveats = [], [*record.caveats, *motion.caveats]
     exact = _exact(motion, record.angle_unit)
     alone = step_parameters(motion, noise)
+    unsettled = 0
     for step in steps:
-        frames = _frames(record, motion, step, record.angle, noise)
-        smooth = _frames(record, motion, step, weighted.fit.prediction.angle, noise)
+        frames = frames_of_step(motion, step, record.angle, noise)
+        smooth = frames_of_step(motion, step, weighted.fit.prediction.angle, noise)
         if frames is not None and smooth is not None:
             readings.append(replace(_reading(frames, smooth, step, exact, motion), parameters=alone(step)))
+            unsettled += not frames.settled
     if not readings:
         raise StepTestError(
-            f"{run.name}: {len(steps)} steps, but none is held for {FEWEST_FRAMES_IN_A_HOLD} frames and "
-            f"{SETTLED_TIME_CONSTANTS:g} time constants ({model.slowest_decay:.3g} s each): hold each level longer"
+            f"{run.name}: {len(steps)} steps, but none is held for {FEWEST_FRAMES_IN_A_HOLD} frames: hold each level "
+            f"longer"
         )
-    quantities, more = _pooled(readings, model, record)
+    quantities, more = _pooled(readings, motion, record)
+    more += _step_caveats(steps, unsettled, model)
     return StepResult(
         quantities=quantities,
         steps=tuple(readings),
@@ -94,6 +96,30 @@ def evaluate_steps(run: Run) -> StepResult:
     )
 
 
+def _step_caveats(steps: list[VoltageStep], unsettled: int, model: SecondOrder) -> list[Caveat]:
+    """What is not as a step test should be: holds that end too soon, ramps in place of steps."""
+    told = []
+    if unsettled:
+        told.append(
+            Caveat(
+                "unfinished_settling",
+                f"{unsettled} of {len(steps)} steps were not held until the rig had settled (3 time constants of "
+                f"{model.slowest_decay:.3g} s): their levels are those of the fitted model; hold each level longer.",
+            )
+        )
+    longest = max(step.duration for step in steps)
+    if longest > LONGEST_STEP * damped_period(model):
+        told.append(
+            Caveat(
+                "ramp_instead_of_step",
+                f"The voltage takes up to {longest:.3g} s to change, {longest / damped_period(model):.2g} periods of "
+                "the rig: the fit uses it as it is; what was read off is corrected by the fitted model and counts from "
+                "the middle of the change.",
+            )
+        )
+    return told
+
+
 def _static_line(readings: list[StepReading], angle_unit: str) -> StaticLine | None:
     settled = [(r.voltage_after, r.level, r.direction == "up") for r in readings if r.level is not None]
     return fit_static_line(
@@ -103,46 +129,6 @@ def _static_line(readings: list[StepReading], angle_unit: str) -> StaticLine | N
         np.array([up for _, _, up in settled], dtype=bool),
         angle_unit=angle_unit,
     )
-
-
-def _frames(
-    record: Record, motion: Motion, step: VoltageStep, angle: Floats, noise: float
-) -> StepFrames | None:
-    """Frames of the hold after `step` with the angles `angle` (N,), or None where it is too short to be read."""
-    p = motion.weighted.fit.parameters
-    m = p.model
-    # the exposure mean belongs to the middle of the exposure
-    time = p.clock_ratio * record.stamp - m.delay - record.exposure / 2
-    onset = step.time
-    before = (time >= onset - SETTLED_SHARE * (onset - step.plateau_start)) & (time < onset - step.duration)
-    hold = (time >= onset) & (time < step.plateau_stop)
-    length = min(step.plateau_stop, float(time[-1])) - onset
-    settled = time >= onset + (1 - SETTLED_SHARE) * length
-    after = hold & settled
-    if hold.sum() < FEWEST_FRAMES_IN_A_HOLD or before.sum() < 3 or after.sum() < 3:
-        return None
-    if length < SETTLED_TIME_CONSTANTS * m.slowest_decay or onset - step.plateau_start < 2 * m.slowest_decay:
-        return None
-    return StepFrames(
-        time=time[hold] - onset,
-        angle=angle[hold],
-        before=_level(angle[before], noise),
-        after=_level(angle[after], noise),
-        voltage_change=step.change,
-        noise=noise,
-        period=_period(m),
-        angle_unit=record.angle_unit,
-    )
-
-
-def _level(angle: Floats, noise: float) -> tuple[float, float]:
-    return float(np.mean(angle)), noise / float(np.sqrt(len(angle)))
-
-
-def _period(m: SecondOrder) -> float:
-    """Period of the damped oscillation; for a sluggish rig that of its natural frequency."""
-    damped = np.sqrt(max(1 - m.damping_ratio**2, 0.25))
-    return float(1 / (m.natural_frequency * damped))
 
 
 def _exact(motion: Motion, angle_unit: str) -> dict[str, float]:
@@ -176,34 +162,37 @@ def _reading(
     p = motion.weighted.fit.parameters
     rest_voltage = motion.record.drive.rest
     predicted = p.rest_angle + model.gain * (step.after - rest_voltage)
-    quantities["steady_state_error"] = Quantity.normal(frames.after[0] - predicted, frames.angle_unit, frames.after[1])
+    error = Quantity.normal(frames.after[0] - predicted, frames.angle_unit, frames.after[1])
+    quantities["steady_state_error"] = error if frames.settled else None
     return StepReading(
         time=step.time,
         voltage_before=step.before,
         voltage_after=step.after,
         quantities={name: quantities.get(name) for name in STEP_QUANTITIES},
-        level=Quantity.normal(frames.after[0], frames.angle_unit, frames.after[1]),
+        level=Quantity.normal(frames.after[0], frames.angle_unit, frames.after[1]) if frames.settled else None,
         extremes=read_extremes(frames, half_width=half_width),
     )
 
 
 def _pooled(
-    readings: list[StepReading], model: SecondOrder, record: Record
+    readings: list[StepReading], motion: Motion, record: Record
 ) -> tuple[dict[str, Quantity | None], list[Caveat]]:
     pooled: dict[str, Quantity | None] = {}
     caveats: list[Caveat] = []
-    coarse = _period(model) / record.frame_interval < FRAMES_PER_PERIOD
+    model = motion.weighted.fit.parameters.model
+    frames_per_period = damped_period(model) / record.frame_interval
+    coarse = frames_per_period < FRAMES_PER_PERIOD
+    between = _between_frames(motion, record.angle_unit) if coarse else {}
     timed = {"percent_overshoot", "peak_time", "delay_time_50", "rise_time_0_90", "rise_time_10_90", "log_decrement"}
     for name in STEP_QUANTITIES:
         values = [q for r in readings if (q := r.quantities[name]) is not None]
         if coarse and name in timed:
-            pooled[name] = None
+            pooled[name] = between.get(name)
             caveats.append(
                 Caveat(
                     "too_few_frames",
-                    f"The {_words(name)} was not read off: {_period(model) / record.frame_interval:.1f} frames per "
-                    f"period, "
-                    f"{FRAMES_PER_PERIOD} are needed; take the value of the fitted model.",
+                    f"The {_words(name)} lies between the frames: {frames_per_period:.1f} frames per period, "
+                    f"{FRAMES_PER_PERIOD} are needed to read it off; the value is that of the fitted model.",
                 )
             )
             continue
@@ -211,6 +200,15 @@ def _pooled(
         if pooled[name] is None:
             caveats.append(Caveat(f"no_{name}", _why_missing(name, model)))
     return pooled, caveats
+
+
+def _between_frames(motion: Motion, angle_unit: str) -> dict[str, Quantity | None]:
+    """What the fitted model says of the response between too few frames, with its uncertainty."""
+    model, covariance = motion.weighted.fit.parameters.model, parameter_covariance(motion.weighted)
+    freedom = motion.weighted.degrees_of_freedom
+    found = derived_quantities(model.vector, covariance, angle_unit=angle_unit, degrees_of_freedom=freedom)
+    found["log_decrement"] = decrement_quantity(model.vector, covariance, degrees_of_freedom=freedom)
+    return found
 
 
 def _possible(name: str, quantity: Quantity | None) -> Quantity | None:

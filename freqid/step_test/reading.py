@@ -32,7 +32,8 @@ class StepFrames:
     """Frames of one hold (`time` from the onset, s), its settled levels with their standard uncertainties, the change
     of voltage.
 
-    `period` is the oscillation's period, or the time constant's equivalent for an overdamped rig.
+    `period` is the oscillation's period, or the time constant's equivalent for an overdamped rig. `settled` is false
+    where a level is that of the fitted model, because the hold ended too soon; then there is no static gain to read.
     """
 
     time: Floats
@@ -43,6 +44,7 @@ class StepFrames:
     noise: float
     period: float
     angle_unit: str
+    settled: bool = True
 
 
 def read_step(frames: StepFrames, *, half_width: float) -> dict[str, Quantity | None]:
@@ -52,7 +54,7 @@ def read_step(frames: StepFrames, *, half_width: float) -> dict[str, Quantity | 
     readings: dict[str, Quantity | None] = dict(trace.crossings())
     readings.update(trace.settling())
     readings.update(trace.extremes(frames.period))
-    readings["static_gain"] = Quantity.normal(
+    readings["static_gain"] = None if not frames.settled else Quantity.normal(
         (frames.after[0] - frames.before[0]) / frames.voltage_change, f"{frames.angle_unit}/V", gain_uncertainty
     )
     return readings

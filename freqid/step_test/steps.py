@@ -21,7 +21,7 @@ __all__ = ["VoltageStep", "find_steps"]
 Floats = NDArray[np.float64]
 
 SMALLEST_STEP = 0.05  # of the whole voltage range; smaller changes belong to a plateau
-LONGEST_CHANGE = 0.05  # of the shorter plateau beside it
+LONGEST_CHANGE = 0.5  # of the shorter plateau beside it; a long change is a ramp, which the evaluation tells
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
