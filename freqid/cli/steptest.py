@@ -24,7 +24,11 @@ __all__ = ["command", "print_step_result"]
 def command(folder: Path, run: str | None, as_json: bool) -> None:
     """Read overshoot, times and static gain off every step of a step run in FOLDER, and fit its model.
 
-    Times count from the onset of the response. Writes results/step.json. Example: freqid steptest vane
+    Times count from the onset of the response. Writes results/step.json.
+
+    \b
+    Example:
+      freqid steptest vane
     """
     test = TestFolder.existing(folder)
     tell_recovered(test)
@@ -53,6 +57,31 @@ def print_step_result(result: StepResult) -> None:
         rows,
         columns=(f"{counted}, {up} up", "read off ± 95 %", "unit", "fit implies"),
     )
+    _print_groups(result)
+    for line in _friction_lines(result):
+        click.echo(line)
+
+
+def _print_groups(result: StepResult) -> None:
+    """Steps up beside steps down, and each size beside the others where there are several."""
+    groups = [*result.by_direction, *(result.by_amplitude if len(result.by_amplitude) > 1 else ())]
+    shown = ("gain", "natural_frequency", "damping_ratio")
+    rows = []
+    for group in groups:
+        numbers = [" ± ".join(q.rounded()) if (q := group.parameters.get(name)) is not None else "" for name in shown]
+        rows.append((f"{group.group}, {group.n_steps}", *numbers))
+    if len(rows) > 1:
+        print_table(rows, columns=("steps", *(name.replace("_", " ") for name in shown)))
+
+
+def _friction_lines(result: StepResult) -> list[str]:
+    lines = []
+    if result.decay is not None:
+        d = result.decay
+        lines.append(f"Swings: {d.kind} (damping ratio {d.damping_ratio}, dry friction worth {d.friction_angle})")
+    if result.static_line is not None and result.static_line.hysteresis is not None:
+        lines.append(f"Levels: hysteresis between up and down {result.static_line.hysteresis}")
+    return lines
 
 
 def quantity_rows_by_name(quantities: dict) -> list[tuple[str, tuple[str, str]]]:  # type: ignore[type-arg]

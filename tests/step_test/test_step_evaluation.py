@@ -199,8 +199,8 @@ def test_an_excitation_without_steps_is_refused(
 
 
 def test_holds_too_short_to_settle_take_the_models_levels(vane_model: SecondOrder, recorded: Recorder) -> None:
-    """Three time constants of 0.44 s are needed, half a second is held: no static gain is read, the fit holds the truth,
-    and it is told.
+    """Three time constants of 0.44 s are needed, half a second is held: no static gain is read, the fit holds the
+    truth, and it is told.
     """
     levels = np.repeat([0.0, 1.0] * 12, 250)
     drive = InputStream(time=np.arange(6000) / 500, voltage=levels, hold="zero-order", commanded=True)
