@@ -109,13 +109,16 @@ CHANNEL = click.IntRange(min=1)
 @click.option("--seed", type=click.IntRange(min=0), help="Of the simulated noise; drawn, and noted, unless given.")
 @json_option
 def command(folder: Path, kind: RunKind, simulate: bool, as_json: bool, **words: Any) -> None:  # fmt: skip
-    """Play the profile in FOLDER and record voltage and angle as a new run.
+    """Play the profile in FOLDER and record voltage and angle as a new run: --device NAME, or --simulate.
 
     `--kind response` plays profile.*, `--kind step` plays step_profile.*. Through a sound interface the voltage comes
     back on one input (the loopback) and the angle on another; the cautions are shown and must be acknowledged. Ctrl-C
     at any time brings the voltage to the bias in a ramp and keeps what was recorded.
 
-    Examples: freqid capture vane --simulate; freqid capture vane --device "USB" --levels 0.5 1
+    \b
+    Examples:
+      freqid capture vane --simulate --seed 1
+      freqid capture vane --kind step --simulate --seed 2
     """
     channels = SoundChannels(
         device=words["device"],

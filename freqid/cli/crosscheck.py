@@ -33,8 +33,12 @@ def command(folder: Path, others: tuple[Path, ...], against: tuple[str, ...], as
 
     With OTHERS: the tests of FOLDER against those of the other folders, like against like. With --against: the tests
     of FOLDER against typed values. Exit status 0 agree, 3 disagree, 4 unresolved. Writes results/crosscheck.json, or
-    results/comparison.json. Examples: freqid crosscheck vane; freqid crosscheck vane last-month; freqid crosscheck
-    vane --against "natural_frequency=3.0 ± 0.1"
+    results/comparison.json.
+
+    \b
+    Examples:
+      freqid crosscheck vane
+      freqid crosscheck vane --against "natural_frequency=3.0 ± 0.1"
     """
     if others or against:
         return _compared(TestFolder.existing(folder), others, against, as_json=as_json)

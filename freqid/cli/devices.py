@@ -16,7 +16,11 @@ __all__ = ["command"]
 def command(as_json: bool) -> None:
     """List the sound interfaces with what they can do.
 
-    `freqid capture FOLDER --device` takes a number, a name or a part of a name of this list. Example: freqid devices
+    `freqid capture FOLDER --device` takes a number, a name or a part of a name of this list.
+
+    \b
+    Example:
+      freqid devices
     """
     found = list_sound_interfaces()
     if as_json:

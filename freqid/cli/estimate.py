@@ -33,7 +33,11 @@ def command(
 ) -> None:  # fmt: skip
     """Estimate clock map, frequency response and second-order model from a run in FOLDER.
 
-    Writes results/response.h5, results/response.csv and results/model.json. Example: freqid estimate vane
+    Writes results/response.h5, results/response.csv and results/model.json.
+
+    \b
+    Example:
+      freqid estimate vane
     """
     test = TestFolder.existing(folder)
     tell_recovered(test)

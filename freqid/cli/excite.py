@@ -60,6 +60,11 @@ def command(
 
     The amplitude is the largest at which voltage, slew rate and predicted swing stay within their limits for
     every rig the step test allows. The files .h5, .csv and .wav hold the same samples.
+
+    \b
+    Examples:
+      freqid excite vane
+      freqid excite vane --kind step
     """
     if kind == "step" and band is not None:
         raise click.UsageError("--band has no meaning for --kind step; leave it out")

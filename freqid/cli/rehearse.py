@@ -20,7 +20,10 @@ def command(folder: Path, seed: int) -> None:
     """Design, run, estimate, cross-check and report on the simulated rig of FOLDER's rig.toml: the dry run.
 
     Without a rig sheet the built-in vane is used, in a new folder ("rehearsal" unless named).
-    Example: freqid rehearse
+
+    \b
+    Example:
+      freqid rehearse
     """
     with progress_bar() as progress:
         done = rehearse(folder, seed=seed, progress=progress)
