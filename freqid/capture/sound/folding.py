@@ -112,7 +112,7 @@ def _first_pass(journal: Path, ending: str | None) -> tuple[dict[str, Any], str 
             verification.take(entry)
         elif "end" in entry:
             ending = entry["end"]
-    return heading, ending, verification.result()
+    return heading, ending, verification.result(played_out=ending is None)
 
 
 def _unverified(verified: Verified) -> str | None:
