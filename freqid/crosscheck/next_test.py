@@ -38,6 +38,18 @@ _SETTLES = "which settles it unless the true difference lies just below the tole
 _FALLS_SHORT = "but ± {:.2g} % is needed: lower the noise of the angle, or widen the tolerance."
 
 
+_AT_HALF_THE_STEP = frozenset({"dry_friction", "end_stop", "backlash"})
+_AT_A_THIRD_OF_THE_LEVEL = frozenset({"hardening_spring", "softening_spring"})
+_REPEATED = (
+    "repeat the frequency test with new phases at the operating point and amplitude of the step test: if the result "
+    "stays, the rig differs between the tests; if it moves, something drifts."
+)
+_DISTORTED = (
+    "Nonlinear distortion, not noise, limits the frequency test: a longer one would not help. A run at half the "
+    "voltage shows whether the rig depends on amplitude (`freqid estimate --run all`)."
+)
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Promise:
     """What a test of this kind, `duration` (s) and `amplitude` (V; None: as before) will reach: standard uncertainties
@@ -77,7 +89,7 @@ def propose_next_test(
     if check.verdict == "agree":
         return None
     if check.verdict == "disagree":
-        return _after_disagreement(check, folder)
+        return _after_disagreement(check, step, folder)
     unresolved = [row for row in check.compared if row.verdict == "unresolved"]
     lacking = [row for row in unresolved if row.difference is None or row.tolerance is None]
     if lacking:
@@ -93,6 +105,8 @@ def propose_next_test(
             command=f"freqid crosscheck {folder}",
             reason="Nothing is judged without a tolerance: set those of [tolerance] in rig.toml, then run it again.",
         )
+    if any(found.significant for found in model.distortion) and any(n.frequency_half > n.wanted for n in needs):
+        return NextTest(command=f"freqid capture {folder} --levels 0.5", reason=_DISTORTED, kind="multisine")
     usual = _by_root_of_duration(model, step)
     try:
         return _planned(needs, forecast or usual, folder)
@@ -131,15 +145,20 @@ def propose_repeat(check: CrossCheck, first: Findings, second: Findings) -> Next
     )
 
 
-def _after_disagreement(check: CrossCheck, folder: str) -> NextTest:
-    """Whether the rig or the method differs shows when the frequency test is repeated; a cause may know better."""
-    settling = next((c.settling_test for c in check.causes if c.settling_test), "")
-    usual = (
-        "Repeat the frequency test with new phases at the operating point and amplitude of the step test: if the "
-        "result stays, the rig differs between the tests; if it moves, something drifts."
-    )
-    command = f"freqid excite {folder} --kind multisine --seed 2"
-    return NextTest(command=command, reason=settling or usual, kind="multisine")
+def _after_disagreement(check: CrossCheck, step: StepResult, folder: str) -> NextTest:
+    """The test that settles the strongest cause; without one, the frequency test again: rig or method?"""
+    cause = next((c for c in check.causes if c.settling_test), None)
+    repeat = f"freqid excite {folder} --kind multisine --seed 2"
+    if cause is None:
+        return NextTest(command=repeat, reason=f"{_REPEATED[0].upper()}{_REPEATED[1:]}", kind="multisine")
+    largest = max((abs(one.voltage_after - one.voltage_before) for one in step.steps), default=0.0)
+    if cause.cause in _AT_HALF_THE_STEP and largest > 0:
+        amplitude = float(f"{largest / 2:.3g}")
+        command = f"freqid excite {folder} --kind step --amplitude {amplitude:g}"
+        return NextTest(command=command, reason=cause.settling_test, kind="step", amplitude=amplitude)
+    if cause.cause in _AT_A_THIRD_OF_THE_LEVEL:
+        return NextTest(command=f"freqid capture {folder} --levels 0.33", reason=cause.settling_test, kind="multisine")
+    return NextTest(command=repeat, reason=f"{cause.settling_test} Then {_REPEATED}", kind="multisine")
 
 
 def _need(row: ComparedRow) -> _Need:

@@ -3,15 +3,18 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 
 import pytest
 from two_tests import NO_PEAK, TOLERANCE, checked, frequency_test, moved, step_test
 
 from excitation.errors import ExcitationError
 from freqid.crosscheck.comparison import cross_check
-from freqid.crosscheck.comparison_result import CrossCheck, NextTest
-from freqid.crosscheck.next_test import Promise, TestKind
-from freqid.quantity import coverage_factor
+from freqid.crosscheck.comparison_result import Cause, CrossCheck, NextTest
+from freqid.crosscheck.next_test import Promise, TestKind, propose_next_test
+from freqid.estimate.distortion_summary import DistortionSummary
+from freqid.quantity import Quantity, coverage_factor
+from freqid.step_test.step_result import StepReading
 
 DOUBTFUL = (1e-4, 1e-4, 0.1, 1e-4)  # relative standard uncertainties
 SURE = (1e-4, 1e-4, 0.01, 1e-4)
@@ -123,3 +126,39 @@ def test_a_folder_with_a_space_is_quoted_in_the_command() -> None:
     )
     assert check.next_test is not None
     assert check.next_test.command == 'freqid excite "my folder" --kind multisine --seed 2'
+
+
+@pytest.mark.parametrize(
+    ("cause", "command"),
+    [
+        ("dry_friction", "freqid excite f --kind step --amplitude 1.5"),
+        ("hardening_spring", "freqid capture f --levels 0.33"),
+        ("scale_error", "freqid excite f --kind multisine --seed 2"),
+    ],
+)
+def test_after_a_disagreement_the_command_fits_the_cause(cause: str, command: str) -> None:
+    """The proposal is the test that settles the strongest cause, said as a command that runs it."""
+    step = step_test()
+    reading = StepReading(time=1.0, voltage_before=-1.0, voltage_after=2.0, quantities=step.quantities)
+    step = replace(step, steps=(reading,))
+    model = frequency_test(moved("damping_ratio", 0.2))
+    check = checked(model, step)
+    assert check.verdict == "disagree"
+    named = Cause(cause=cause, strength=0.9, evidence="It shows.", settling_test="Do this.")
+    found = propose_next_test(replace(check, causes=(named,)), model, step, folder="f")
+    assert found is not None and found.command == command and found.reason.startswith("Do this.")
+    usual = propose_next_test(replace(check, causes=()), model, step, folder="f")
+    assert usual is not None and usual.reason.startswith("Repeat the frequency test with new phases")
+
+
+def test_a_longer_test_is_not_promised_where_distortion_limits_it() -> None:
+    """With significant distortion and a frequency test too unsure, a run at half the voltage is proposed."""
+    distorted = DistortionSummary(
+        kind="odd", amplitude=Quantity.normal(1.0, "deg", 0.1), excess=Quantity.normal(20.0, "1", 2.0),
+        relative=Quantity.normal(0.05, "1", 0.005), p_value=1e-6, lines=3, band=(2.0, 4.0),
+    )  # fmt: skip
+    model = replace(frequency_test(relative=DOUBTFUL), distortion=(distorted,))
+    found = next_of(checked(model, step_test(relative=SURE)))
+    assert found.command == "freqid capture my folder --levels 0.5" and "a longer one would not help" in found.reason
+    sure = replace(frequency_test(relative=SURE), distortion=(distorted,))
+    assert "--kind step" in next_of(checked(sure, step_test(relative=DOUBTFUL))).command
