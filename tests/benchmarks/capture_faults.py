@@ -5,7 +5,8 @@ keeps every sample that reached the vane. One row a fault: how often it was stru
 until the program and its children were gone ("hangs" after 30 s); exit status; the least profile kept and the most
 lost (sent before the fault and not in the file), in seconds; files readable; the largest step of the voltage from
 sample to sample over the largest of the profile itself (in brackets where nothing can ramp any more: server or stream
-process dead); the highest voltage sent. Then what must be refused before anything sounds.
+process are dead, and as this server stands still when a client dies, the record ends there); the highest voltage sent.
+Then what must be refused before anything sounds.
 
     python tests/benchmarks/capture_faults.py [--strikes 20] [--others 3] [--only NAME ...] [--bias 0.0] [--seed 1]
 
