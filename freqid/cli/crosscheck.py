@@ -68,8 +68,9 @@ def print_cross_check(check: CrossCheck) -> None:
         _print_requirements(check.requirements)
     click.echo(f"\n{check.verdict.upper()}: {check.sentence}")
     if check.joint is not None:
+        p = check.joint.p_value
         click.echo(f"Jointly: chi-square {check.joint.statistic:.3g} with {check.joint.degrees_of_freedom} degrees of "
-                   f"freedom, p = {check.joint.p_value:.2g}")  # fmt: skip
+                   f"freedom, p {'< 1e-6' if p < 1e-6 else f'= {p:.2g}'}")  # fmt: skip
     for cause in check.causes:
         click.echo(f"Cause? {cause.cause.replace('_', ' ')} ({cause.strength:.1f}): {cause.evidence}")
         if cause.against:
