@@ -76,7 +76,7 @@ def _over_time(trial: Trial, trials: Trials, unit: str) -> Exhibit:
     told = left - trial.fit.residuals[i]
     edges = np.linspace(test.time[0], test.time[-1], N_BINS + 1)
     return _picture(
-        f"left over by a healthy rig in the {_named(test)}", ("time", "s"), unit, test, (test.time, left, told, edges)
+        f"left over by a healthy rig in the {test.words}", ("time", "s"), unit, test, (test.time, left, told, edges)
     )
 
 
@@ -146,7 +146,3 @@ def _picture(
             Series(kind="line", source="model", label="what the cause would leave", x=centre[full], y=line[full]),
         ),
     )
-
-
-def _named(test: RecordedTest) -> str:
-    return "frequency test" if test.kind == "response" else "step test"

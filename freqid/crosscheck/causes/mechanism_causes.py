@@ -112,8 +112,9 @@ def _what_it_explains(trial: Trial, trials: Trials, unit: str) -> str:
     parts = []
     for test, before, after in zip(trials.tests, trials.healthy.residuals, trial.fit.residuals, strict=True):
         first, second = (float(np.sqrt(np.mean(r**2))) for r in (before, after))
-        kind = "frequency test" if test.kind == "response" else "step test"
-        parts.append(f"in the {kind} from {first:.3g} to {second:.3g} {unit}")
+        alone = [other.kind for other in trials.tests].count(test.kind) == 1
+        called = f"the {test.words}" if alone else test.name
+        parts.append(f"in {called} from {first:.3g} to {second:.3g} {unit}")
     return (
         f"With it the rms that one rig leaves over falls {' and '.join(parts)} (twice the log likelihood rises by"
         f" {trial.rise:.3g})."

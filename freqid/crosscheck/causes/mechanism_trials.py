@@ -10,7 +10,7 @@ Source: G. Schwarz, Ann. Statist. 6 (1978) 461-464; R. Kass & A. Raftery, JASA 9
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -32,7 +32,9 @@ MOST_FITTED = 6
 PASSES = 10
 STARTS, TRIAL_PASSES = 3, 3
 POLISHING = 5
-POLISHED = 2  # fits that get slopes of their own, where their residuals still hang together
+POLISHED = 2  # fits that get slopes of their own: the best, and the next where its residuals still hang together
+JUMPS = (0.75, 0.82, 0.88, 0.93, 0.97, 1.03, 1.08, 1.14, 1.22, 1.33)
+SETTLED = 0.97  # independent values per frame, beyond which no jump is tried
 WELL_FITTED = 0.8  # independent values per frame
 
 
@@ -68,8 +70,9 @@ def try_mechanisms(tests: tuple[RecordedTest, ...]) -> Trials:
     fits = [(m, *_fitted(rig, m, found, state)) for m, found in promising[:MOST_FITTED]]
     fits.sort(key=lambda fitted: -fitted[1].log_likelihood)
     for i, (mechanism, fit, end) in enumerate(fits[:POLISHED]):
-        if fit.effective_share < WELL_FITTED:
-            fits[i] = mechanism, *rig.fit(mechanism, fit.numbers, state=end, passes=POLISHING, own_slopes=True)
+        is_first = i == 0 and fit.log_likelihood - healthy.log_likelihood > 2 * NAMED
+        if is_first or fit.effective_share < WELL_FITTED:
+            fits[i] = mechanism, *_polished(rig, mechanism, fit, end)
     fits += _each_its_own(tests, state)
     share = max((fit for _, fit, _ in fits), key=lambda f: f.log_likelihood, default=healthy).effective_share
     trials = []
@@ -79,6 +82,26 @@ def try_mechanisms(tests: tuple[RecordedTest, ...]) -> Trials:
         trials.append(Trial(mechanism=mechanism, fit=fit, rise=rise, score=rise - penalty))
     trials.sort(key=lambda trial: -trial.score)
     return Trials(tests=tests, healthy=healthy, found=tuple(trials), n_frames=rig.n_frames)
+
+
+def _polished(rig: SharedRig, mechanism: Mechanism, fit: JointFit, end: Floats) -> tuple[JointFit, Floats]:
+    """The fit with slopes of its own; a single number first jumps where that helps.
+
+    Where a rig sticks, or whether it touches a stop once more, changes by jumps, and a descent ends at the nearest.
+    """
+    trials = [(fit, end)]
+    if len(fit.numbers) == 1 and fit.effective_share < SETTLED:
+        looks = []
+        for factor in JUMPS:
+            numbers = mechanism.bounded(fit.numbers * factor)
+            try:
+                looks.append((rig.first_order(replace(mechanism, looked_at=0), numbers, end)[0], numbers))
+            except (CaptureError, np.linalg.LinAlgError):
+                continue
+        for _, numbers in sorted(looks, key=lambda look: look[0])[:STARTS]:
+            trials.append(rig.fit(mechanism, numbers, state=end, passes=TRIAL_PASSES))
+    best, state = max(trials, key=lambda trial: trial[0].log_likelihood)
+    return rig.fit(mechanism, best.numbers, state=state, passes=POLISHING, own_slopes=True)
 
 
 def _each_its_own(tests: tuple[RecordedTest, ...], state: Floats) -> list[tuple[Mechanism, JointFit, Floats]]:

@@ -214,7 +214,7 @@ def _damping(f: _Figures) -> MechanismWords:
 
 
 def _operating_point(f: _Figures) -> MechanismWords:
-    parts = " and ".join(f"{t.kind} test {_levels(t.record.drive)}" for t in f.trials.tests)
+    parts = " and ".join(f"{t.words} {_levels(t.record.drive)}" for t in f.trials.tests)
     changes = ", ".join(
         f"{name} by {f.change(i)}" for i, name in enumerate(("gain", "natural frequency", "damping ratio"))
     )
@@ -233,7 +233,7 @@ def _levels(drive: object) -> str:
 
 
 def _drift(f: _Figures) -> MechanismWords:
-    parts = ", ".join(f"{f.number(i)} over the {t.kind} test" for i, t in enumerate(f.trials.tests))
+    parts = ", ".join(f"{f.number(i)} over the {t.words}" for i, t in enumerate(f.trials.tests))
     return MechanismWords(
         code="drift",
         finding=f"The rest angle drifts: {parts}",

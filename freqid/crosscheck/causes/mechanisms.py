@@ -151,12 +151,12 @@ def _flat_top(test: RecordedTest) -> float:
 
 
 def _driver(tests: tuple[RecordedTest, ...], volts: float, fn: float) -> list[Mechanism]:
-    largest = {t.name: float(np.ptp(t.record.drive.value)) / 2 for t in tests}
+    largest = {t.number: float(np.ptp(t.record.drive.value)) / 2 for t in tests}
 
     def ramp(test: RecordedTest, p: MotionParameters, numbers: Floats) -> PlantedFaults:
         if test.kind != "step" or numbers[0] <= 1e-5 / fn:
             return NO_FAULTS
-        return PlantedFaults(slew_limit=largest[test.name] / float(numbers[0]))
+        return PlantedFaults(slew_limit=largest[test.number] / float(numbers[0]))
 
     return [
         _threshold("saturation", _clip_levels(tests), -0.005 * volts, (0.05 * volts, volts),
@@ -197,11 +197,9 @@ def _earlier(model: SecondOrder, by: float) -> SecondOrder:
 
 
 def _drift(tests: tuple[RecordedTest, ...], typical: float) -> Mechanism:
-    order = {t.name: i for i, t in enumerate(tests)}
-
     def add(test: RecordedTest, numbers: Floats) -> Floats:
         share = (test.record.stamp - test.record.stamp[0]) / np.ptp(test.record.stamp)
-        return np.asarray(numbers[order[test.name]] * share)
+        return np.asarray(numbers[test.number] * share)
 
     n = len(tests)
     return Mechanism(

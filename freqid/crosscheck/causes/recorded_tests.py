@@ -35,12 +35,18 @@ MOST_RUNS = 2  # of a kind
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class RecordedTest:
-    """One run's record with the linear fit of its own."""
+    """One run's record with the linear fit of its own; `number` counts the records, names may repeat."""
 
     kind: RunKind
+    number: int
     name: str
     record: Record
     fit: RecordFit
+
+    @property
+    def words(self) -> str:
+        """What a sentence calls it."""
+        return "frequency test" if self.kind == "response" else "step test"
 
     @property
     def covariance(self) -> Floats:
@@ -73,7 +79,7 @@ def prepared_tests(evidence: Evidence, *, with_losses: bool = True) -> tuple[Rec
         clock = result.clock if with_losses else replace(result.clock, silently_lost_at=np.empty(0))
         for run in _most_different(runs):
             found.append(_prepared(run, result.model, clock, single=len(runs) == 1))
-    return tuple(one for one in found if one is not None)
+    return tuple(replace(one, number=i) for i, one in enumerate(one for one in found if one is not None))
 
 
 def _most_different(runs: tuple[Run, ...]) -> tuple[Run, ...]:
@@ -99,7 +105,7 @@ def _prepared(run: Run, model: SecondOrder, clock: ClockMap, *, single: bool) ->
         fit = refine(record, start, evaluations=30)
     except (FreqidError, ValueError, FloatingPointError):
         return None
-    return None if fit is None else RecordedTest(kind=run.kind, name=run.name, record=record, fit=fit)
+    return None if fit is None else RecordedTest(kind=run.kind, number=0, name=run.name, record=record, fit=fit)
 
 
 def _cleaned(record: Record, run: Run, clock: ClockMap) -> Record:
