@@ -39,6 +39,7 @@ __all__ = [
 _POINTS_PER_PERIOD = 20  # misses at most 1 - cos(pi/20) = 1.2 % of the peak of the fastest component
 _NEGLIGIBLE_ENERGY = 1e-8  # of the angle lies above its highest significant frequency: 1e-4 of its rms
 NEGLIGIBLE_TAIL = 1e-3  # of the peak may be left when the padding ends
+_PREDICTION_ROUNDING = 1e-3  # by which a swing predicted on another grid, or by another version, may exceed the plan
 _MAX_DOUBLINGS = 10  # of the padding, while it stays below so many samples; then what is left is added to the swing
 _MOST_SAMPLES = 1 << 23
 
@@ -134,7 +135,8 @@ def check_swing(profile: Profile, rigs: Sequence[RigModel], limits: Limits, *, m
     Parameters
     ----------
     margin : float
-        The part of the way to the stops that may be used, above 0 and at most 1.
+        The part of the way to the stops that may be used, above 0 and at most 1. A thousandth more passes, never
+        the stops: a profile planned to the margin is predicted again before it is played.
 
     Raises
     ------
@@ -144,7 +146,7 @@ def check_swing(profile: Profile, rigs: Sequence[RigModel], limits: Limits, *, m
     check_margin(margin)
     swing = worst_swing(profile, rigs)
     allowed = margin * limits.angle
-    if swing > allowed:
+    if swing > min(allowed * (1 + _PREDICTION_ROUNDING), limits.angle):
         scale = math.floor(1e4 * allowed / swing) / 1e4
         raise LimitExceeded(
             f"swing: {swing:.4g} predicted, {allowed:.4g} allowed ({margin:g} of the stops at ±{limits.angle:g}); "

@@ -98,7 +98,7 @@ CHANNEL = click.IntRange(min=1)
               " amplitude dependence; each level is checked against the limits.")
 @click.option("--periods", type=click.IntRange(min=1), help="Play the steady part of a periodic profile so many times,"
               " instead of as often as designed.")
-@click.option("--guard", type=click.FloatRange(0, 1, min_open=True), default=0.9, show_default=True,
+@click.option("--guard", type=click.FloatRange(0, 1, min_open=True), default=0.95, show_default=True,
               help="Share of the way to the stops beyond which the test is ended.")
 @click.option("--armed", is_flag=True, help="The cautions are acknowledged; do not ask.")
 @click.option("--calibrate", "wants_calibration", is_flag=True, help="Play a small tone instead and work out the volts"

@@ -47,7 +47,7 @@ class SoundSettings:
 
     kind: RunKind = "response"
     channels: SoundChannels = SoundChannels()
-    guard: float = 0.9
+    guard: float = 0.95
     runs: int = 1
     levels: tuple[float, ...] = (1.0,)
     periods: int | None = None

@@ -125,3 +125,18 @@ def test_bad_input_is_refused(vane: Vane) -> None:
             check_swing(profile, [vane], limits, margin=margin)
     with pytest.raises(ExcitationError, match="no finite response"):
         predicted_swing(profile, replace(vane, gain=math.nan))
+
+
+def test_rounding_passes_and_the_stops_do_not(vane: Vane) -> None:
+    """A thousandth beyond the margin passes, two do not; with the whole way allowed nothing beyond the stops passes."""
+    profile = _held(np.repeat([0.0, 1.0, 0.0], [20, 600, 600]))
+    swing = predicted_swing(profile, vane)
+
+    def limits(angle: float) -> Limits:
+        return Limits(voltage=5.0, slew_rate=1e6, angle=angle)
+
+    assert check_swing(profile, [vane], limits(swing / 0.9 / 1.0009), margin=0.9) == swing
+    with pytest.raises(LimitExceeded):
+        check_swing(profile, [vane], limits(swing / 0.9 / 1.0011), margin=0.9)
+    with pytest.raises(LimitExceeded):
+        check_swing(profile, [vane], limits(swing / 1.0001), margin=1.0)
