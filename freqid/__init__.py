@@ -9,7 +9,7 @@ TYPE_CHECKING = False  # as typing has it, without importing typing
 if TYPE_CHECKING:
     from typing import Any
 
-__version__ = "0.1.0"
+__version__ = "0.2.0"
 
 _WHERE = {
     "AngleStream": "freqid.records",
