@@ -29,7 +29,7 @@ from plant_client import PlantSettings
 
 __all__ = ["PipeWireRig", "pipewire_rig", "what_pipewire_lacks"]
 
-PATIENCE = 20.0  # s until a server must run
+PATIENCE = 60.0  # s until a server must run
 CLIENT = Path(__file__).with_name("plant_client.py")
 PACKAGES = {
     "pipewire": "pipewire",

@@ -33,7 +33,7 @@ from numpy.typing import NDArray
 __all__ = ["PlantSettings", "Vane", "read_record"]
 
 Floats = NDArray[np.float64]
-PATIENCE = 20.0  # s until the server must answer
+PATIENCE = 60.0  # s until the server must answer
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
