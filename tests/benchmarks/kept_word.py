@@ -93,8 +93,8 @@ def main() -> None:
             raise SystemExit(f"{name}: no uncertainty was predicted")
         predicted = quantity.standard_uncertainty
         ratio = scatter[index] / predicted
-        print(f"  {name:18s} {ratio:.3f} ± {ratio * doubt:.3f}   ideal {chance[index] / predicted:.3f}   mean error {error[index] / predicted:+.3f}"
-              f"   (predicted {predicted:.4g} {quantity.unit})")  # fmt: skip
+        print(f"  {name:18s} {ratio:.3f} ± {ratio * doubt:.3f}   ideal {chance[index] / predicted:.3f}"
+              f"   mean error {error[index] / predicted:+.3f}   (predicted {predicted:.4g} {quantity.unit})")  # fmt: skip
 
 
 if __name__ == "__main__":
