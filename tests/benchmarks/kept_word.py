@@ -94,7 +94,7 @@ def main() -> None:
         predicted = quantity.standard_uncertainty
         ratio = scatter[index] / predicted
         print(f"  {name:18s} {ratio:.3f} ± {ratio * doubt:.3f}   ideal {chance[index] / predicted:.3f}"
-              f"   mean error {error[index] / predicted:+.3f}   (predicted {predicted:.4g} {quantity.unit})")  # fmt: skip
+              f"   mean error {error[index] / predicted:+.3f}   (predicted {predicted:.4g} {quantity.unit})")
 
 
 if __name__ == "__main__":
