@@ -46,7 +46,7 @@ class BlockRecursion:
         within = _LAST[offset]
         for windows, reach in zip(self._windows, self._reach, strict=True):
             states += (windows[index] * within) @ reach
-        return states
+        return np.asarray(states)
 
 
 def _powers(transition: Floats, count: int) -> list[Floats]:

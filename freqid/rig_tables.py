@@ -164,7 +164,7 @@ _PERCENT = Range(0, 100)
 class Requirements:
     """[requirements]: what the rig must do to be accepted, each None unless given.
 
-    A key ends in `_max` or `_min`; what stands before it is the quantity. `settling_time_max` goes with `settling_band`.
+    A key ends in `_max` or `_min`; before it stands the quantity. `settling_time_max` goes with `settling_band`.
     """
 
     percent_overshoot_max: float | None = _wanted("overshoot of a step", "%", _PERCENT)

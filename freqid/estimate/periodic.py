@@ -239,7 +239,7 @@ def _free_orders(
         chosen = free[(free >= low) & (free <= high)]
         if len(chosen) <= room:
             return np.asarray(chosen)
-    return free[:0]
+    return np.asarray(free[:0])
 
 
 def _fitted(basis: HarmonicBasis) -> Floats:
