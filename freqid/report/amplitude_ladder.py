@@ -60,8 +60,8 @@ def draw_amplitude(
 ) -> None:
     """One quantity ("natural_frequency" or "damping_ratio") against the swing, with 95 % bars, into `axes`."""
     dress(axes, palette)
-    words = {"frequency_test": "● a run of the frequency test", "step_test": "◆ a step"}
-    place = 0.0
+    words = {"frequency_test": ("● a run of the frequency test, 95 %", 0.0, "left"),
+             "step_test": ("◆ a step, 95 %", 1.0, "right")}  # fmt: skip
     for source in ("frequency_test", "step_test"):
         found = [(rung.swing, q) for rung in rungs if rung.source == source and (q := getattr(rung, name)) is not None]
         if not found:
@@ -70,9 +70,9 @@ def draw_amplitude(
         axes.errorbar([swing for swing, _ in found], [q.value for _, q in found],
                       yerr=[q.expanded_uncertainty for _, q in found], fmt=MARK[source],
                       color=colour, markersize=4.6, elinewidth=0.9, capsize=0, markeredgewidth=0)  # fmt: skip
-        axes.annotate(f"{words[source]}, 95 %", (place, 1), xycoords="axes fraction", xytext=(0, 3),
+        text, place, side = words[source]
+        axes.annotate(text, (place, 1), xycoords="axes fraction", xytext=(0, 3), ha=side,
                       textcoords="offset points", color=colour, fontsize=8.5)  # fmt: skip
-        place += 0.5
     axes.set_xlim(0, 1.06 * max(rung.swing for rung in rungs))
     axes.margins(y=0.15)
     axes.set_xlabel(f"largest swing ({angle_unit})")
