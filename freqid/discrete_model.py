@@ -27,6 +27,10 @@ __all__ = ["DiscreteModel", "held_equivalent"]
 
 Floats = NDArray[np.float64]
 WHOLE = 1e-9  # a delay this near to whole samples (in samples) is taken as whole: rounding of tau / T
+# At this many times the natural frequency the denominator's sum is (2 pi / 1e5)^2 = 4e-9: rounding moves the gain
+# by 1e-16 / 4e-9 = 5e-8 of it, less than any test determines. At so small a part nothing is left but the static gain.
+RATE_SPAN = 1e5
+LONGEST_DELAY = 60.0  # s, as in the rig sheet
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -59,7 +63,8 @@ def held_equivalent(
     Raises
     ------
     ValueError
-        The sample rate is not positive, or the delay is negative (the angle would come before the voltage).
+        The sample rate is not positive or beyond `RATE_SPAN` times (or parts of) the natural frequency, or the delay is
+        negative (the angle would come before the voltage) or beyond `LONGEST_DELAY`.
 
     Examples
     --------
@@ -70,8 +75,14 @@ def held_equivalent(
     """
     if not sample_rate > 0 or not math.isfinite(sample_rate):
         raise ValueError(f"the controller's rate must be positive, not {sample_rate=} Hz")
-    if model.delay < 0:
-        raise ValueError(f"the delay must not be negative, not {model.delay=} s")
+    slowest, fastest = model.natural_frequency / RATE_SPAN, model.natural_frequency * RATE_SPAN
+    if not slowest <= sample_rate <= fastest:
+        raise ValueError(
+            f"the controller's rate, {sample_rate:g} Hz, must be at least {slowest:.3g} and at most {fastest:.3g} Hz"
+            f" for a natural frequency of {model.natural_frequency:.3g} Hz"
+        )
+    if not 0 <= model.delay <= LONGEST_DELAY:
+        raise ValueError(f"the delay, {model.delay:g} s, must be at least 0 and at most {LONGEST_DELAY:g} s")
     interval = 1 / sample_rate
     whole = math.floor(model.delay * sample_rate + WHOLE) if delay_samples is None else delay_samples
     part = model.delay - whole * interval

@@ -113,7 +113,7 @@ def parse_rig(text: str, source: str = "rig.toml") -> Rig:
     """The rig sheet in `text`; `source` is what error messages call it. Raises RigSheetError as `read_rig`."""
     try:
         sheet = tomllib.loads(text)
-    except tomllib.TOMLDecodeError as error:
+    except (ValueError, RecursionError) as error:  # not TOML, an integer too long to read, or nested too deep
         raise RigSheetError(f"{source}: not valid TOML: {error}; correct that line") from None
     for name, values in sheet.items():
         if name not in TABLES:
@@ -153,7 +153,7 @@ def _value(value: Any, rule: KeyRule, where: str) -> float | str | bool:
     allowed = rule.allowed
     if isinstance(allowed, Range):
         number = isinstance(value, (int, float)) and not isinstance(value, bool)
-        if number and math.isfinite(value) and value in allowed:
+        if number and value in allowed and math.isfinite(value):  # in this order: a huge integer is no float
             return float(value)
     elif isinstance(allowed, tuple):
         if value in allowed:

@@ -60,6 +60,14 @@ def test_static_gain_is_kept(rig: SecondOrder) -> None:
     assert found.response(np.zeros(1))[0].real == pytest.approx(rig.gain, rel=1e-12)
 
 
+def test_static_gain_is_kept_at_the_fastest_rate_allowed() -> None:
+    """The limit of the rate leaves the coefficients good enough: rounding of 1e-16 over (2 pi / 1e5)^2 = 4e-9."""
+    rig = SecondOrder(gain=12.0, natural_frequency=3.0, damping_ratio=0.12, delay=0.0)
+    found = held_equivalent(rig, sample_rate=3e5)
+    # a few roundings of 1.1e-16 in each of the sums: 10 * 1.1e-16 / 4e-9 = 3e-7
+    assert found.response(np.zeros(1))[0].real == pytest.approx(rig.gain, rel=3e-7)
+
+
 def test_fast_controller_sees_the_continuous_rig() -> None:
     """Far below the rate the response is the continuous one times the hold (half an interval late)."""
     rig, rate = RIGS[2], 20000.0
@@ -84,7 +92,17 @@ def test_a_delay_near_whole_samples_has_a_slope() -> None:
 
 
 @pytest.mark.parametrize(
-    ("delay", "rate", "says"), [(-0.01, 100.0, "delay"), (0.0, 0.0, "rate"), (0.0, np.inf, "rate")]
+    ("delay", "rate", "says"),
+    [
+        (-0.01, 100.0, "delay, -0.01 s, must be at least 0"),
+        (61.0, 100.0, "delay, 61 s, must be at least 0 and at most 60 s"),
+        (np.inf, 100.0, "delay, inf s"),
+        (np.nan, 100.0, "delay, nan s"),
+        (0.0, 0.0, "rate"),
+        (0.0, np.inf, "rate"),
+        (0.0, 0.9e-5, "rate, 9e-06 Hz, must be at least 1e-05 and at most 1e[+]05 Hz"),
+        (0.0, 1.1e5, "rate, 110000 Hz, must be at least"),
+    ],
 )
 def test_impossible_requests_are_refused(delay: float, rate: float, says: str) -> None:
     """A negative delay or a rate that is none is named."""

@@ -173,6 +173,9 @@ def test_every_missing_required_key_is_named(table: str, key: str) -> None:
         (sheet(limits={"bias": -5.0}), r"\[limits\] bias = -5: must lie inside ±voltage = ±5 V"),
         (sheet(angle_sensor={"exposure": 0.02}), r"exposure = 0\.02: must be at most the frame interval, 0\.01667 s"),
         (sheet() + "\nvoltage 5\n", r"not valid TOML: .*line \d+"),
+        (sheet().replace("voltage = 5.0", "voltage = 1" + "0" * 400), r"voltage = 10+\.\.\.: must be a number above 0"),
+        (sheet().replace("voltage = 5.0", "voltage = 1" + "0" * 5000), r"not valid TOML: "),
+        ("name = " + "[" * 20000, r"not valid TOML: "),
         ("", r"\[rig\] name is missing"),
     ],
 )

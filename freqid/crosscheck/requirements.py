@@ -12,10 +12,11 @@ from dataclasses import dataclass, fields
 from typing import Any, Literal
 
 from freqid.crosscheck.findings import Findings
+from freqid.errors import CrossCheckError
 from freqid.quantity import Quantity
 from freqid.rig_tables import Requirements
 
-__all__ = ["Fulfilment", "RequirementRow", "judge_requirements"]
+__all__ = ["Fulfilment", "RequirementRow", "check_unit_of_limits", "judge_requirements"]
 
 Fulfilment = Literal["met", "not met", "not decided"]
 BAND_KEY = "settling_band"
@@ -75,6 +76,17 @@ def judge_requirements(wanted: Requirements, first: Findings, second: Findings) 
         for key in fields(wanted)
         if key.name != BAND_KEY and (limit := getattr(wanted, key.name)) is not None
     )
+
+
+def check_unit_of_limits(wanted: Requirements, sheet_unit: str, result_unit: str) -> None:
+    """Raise CrossCheckError where a limit is told in another angle unit than the results."""
+    for key in fields(wanted):
+        limit = getattr(wanted, key.name)
+        if limit is not None and "angle_unit" in key.metadata["unit"] and sheet_unit != result_unit:
+            raise CrossCheckError(
+                f"rig.toml: [requirements] {key.name} = {limit:g} is in {sheet_unit}/V ([rig] angle_unit), the results "
+                f"are in {result_unit}/V: set angle_unit to \"{result_unit}\" again, or record and evaluate new runs"
+            )
 
 
 def _row(

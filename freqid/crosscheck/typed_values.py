@@ -47,6 +47,7 @@ _OTHERS = {
 TYPED_NAMES = (*PARAMETER_ORDER, *_OTHERS, "resonance_gain")
 # what else may stand behind the number, and how many of the quantity's own unit it is
 _CONVERTIBLE = {("Hz", "rad/s"): 1 / (2 * math.pi), ("s", "ms"): 1e-3, ("1", "%"): 1e-2}
+_LARGEST = 1e30  # squares of it, and of its quotient with any quantity of a rig, still are finite numbers
 _EXAMPLE = 'write for example --against "gain=12 ± 0.3"'
 
 
@@ -84,18 +85,37 @@ def _parsed(text: str, angle_unit: str) -> tuple[str, Quantity]:
         raise CrossCheckError(f"--against {text!r}: unknown quantity {name!r}; {hint}")
     factor = _unit_factor(found["unit"], own_unit, text)
     value = float(found["value"]) * factor
-    if name in ("natural_frequency", "damping_ratio") and not value > 0:
-        raise CrossCheckError(f"--against {text!r}: {name} must be above 0")
+    _check_value(name, value, own_unit, text)
     if found["half"] is not None:
         half = float(found["half"]) * (abs(value) / 100 if found["percent"] else factor)
-        return name, _within(value, own_unit, half, text)
+        _check_uncertainty(half, text)
+        return name, _within(value, own_unit, half)
     u = _in_brackets(found["value"], found["standard"]) * factor
+    _check_uncertainty(u, text)
     return name, Quantity.normal(value, own_unit, u)
 
 
-def _within(value: float, unit: str, half: float, text: str) -> Quantity:
-    if half < 0:
-        raise CrossCheckError(f"--against {text!r}: the uncertainty must not be negative")
+def _check_value(name: str, value: float, unit: str, text: str) -> None:
+    """Only the gain (a reversed sensor) and the delay (the two clocks) may be negative, only overshoot and delay 0."""
+    told = f"--against {text!r}: {name} = {value:g}{'' if unit == '1' else f' {unit}'}"
+    if not abs(value) < _LARGEST:
+        raise CrossCheckError(f"{told}: must be below {_LARGEST:g}; check its exponent")
+    if name == "percent_overshoot" and not 0 <= value < 100:
+        raise CrossCheckError(f"{told}: must be at least 0 and below 100 %; check the value")
+    if name == "gain" and value == 0:
+        raise CrossCheckError(f"{told}: must not be 0; check the value")
+    if name not in ("percent_overshoot", "gain", "delay") and not value > 0:
+        raise CrossCheckError(f"{told}: must be above 0; check the value")
+
+
+def _check_uncertainty(uncertainty: float, text: str) -> None:
+    if uncertainty < 0:
+        raise CrossCheckError(f"--against {text!r}: the uncertainty must not be negative; leave out its sign")
+    if not uncertainty < _LARGEST:
+        raise CrossCheckError(f"--against {text!r}: the uncertainty must be below {_LARGEST:g}; check its exponent")
+
+
+def _within(value: float, unit: str, half: float) -> Quantity:
     u = half / 1.959963984540054
     return Quantity(value=value, unit=unit, standard_uncertainty=u, interval_95=(value - half, value + half))
 
@@ -142,18 +162,32 @@ def _completed(values: Mapping[str, Quantity]) -> dict[str, Quantity]:
 
 
 def _add(whole: dict[str, Quantity], name: str, route: Callable[..., float], sources: list[str], unit: str) -> None:
-    """`name` as a function of its sources, uncertainty by JCGM 100, 5.1.2 (changes over ± one standard uncertainty)."""
+    """`name` as a function of its sources, uncertainty by JCGM 100, 5.1.2 (slope times standard uncertainty).
+
+    The slope is taken over ± one standard uncertainty, or half the way to where the source loses its meaning.
+    """
     given = [whole[source] for source in sources]
     point = [q.value for q in given]
+    value = route(*point)
+    if not (math.isfinite(value) and value > 0):
+        return
     changes = []
-    for index, q in enumerate(given):
+    for index, (source, q) in enumerate(zip(sources, given, strict=True)):
+        step = min(q.standard_uncertainty, _room(source, q.value) / 2)
+        if step == 0:  # taken as exact
+            continue
         high, low = list(point), list(point)
-        high[index] += q.standard_uncertainty
-        low[index] -= q.standard_uncertainty
-        changes.append((route(*high) - route(*low)) / 2)
-    found = Quantity.finite_or_none(route(*point), unit, math.hypot(*changes))
-    if found is not None and found.value > 0:
+        high[index] += step
+        low[index] -= step
+        changes.append((route(*high) - route(*low)) / (2 * step) * q.standard_uncertainty)
+    found = Quantity.finite_or_none(value, unit, math.hypot(*changes))
+    if found is not None:
         whole[name] = found
+
+
+def _room(name: str, value: float) -> float:
+    """How far a value lies from where the quantity loses its meaning: 0, and 100 % for the overshoot."""
+    return min(value, 100 - value) if name == "percent_overshoot" else value
 
 
 def _findings(values: Mapping[str, Quantity], angle_unit: str, label: str) -> Findings:

@@ -54,10 +54,11 @@ def compare_folders(folders: Sequence[TestFolder]) -> Comparison:
     Raises
     ------
     CrossCheckError
-        A folder holds no result, or the angle units differ.
+        A folder is named twice or holds no result, or the angle units differ.
     TestFolderError, RigSheetError
         A file is damaged.
     """
+    _check_distinct(folders)
     rig = read_rig(folders[0].rig)
     held = [_findings(folder, read_rig(folder.rig), label=str(folder.path)) for folder in folders]
     checks = [
@@ -80,6 +81,15 @@ def compare_with_typed_values(folder: TestFolder, texts: Sequence[str]) -> Compa
     held = _findings(folder, rig, label="")
     checks = [replace(_checked(one, typed.findings, rig), caveats=told) for one in held.values()]
     return _written(folder, Comparison(checks=tuple(checks)), _sources(folder))
+
+
+def _check_distinct(folders: Sequence[TestFolder]) -> None:
+    seen: set[Path] = set()
+    for folder in folders:
+        place = folder.path.resolve()
+        if place in seen:
+            raise CrossCheckError(f"{folder.path}: named twice; a test says nothing about itself: name another folder")
+        seen.add(place)
 
 
 def _findings(folder: TestFolder, rig: Rig, *, label: str) -> dict[str, Findings]:

@@ -10,7 +10,7 @@ from freqid.crosscheck.comparison import cross_check
 from freqid.crosscheck.comparison_result import CrossCheck
 from freqid.crosscheck.evidence import Recorded
 from freqid.crosscheck.findings import findings_of_model, findings_of_step
-from freqid.crosscheck.requirements import judge_requirements
+from freqid.crosscheck.requirements import check_unit_of_limits, judge_requirements
 from freqid.crosscheck.result_file import write_crosscheck
 from freqid.estimate.long_run import read_for_estimate
 from freqid.estimate.resonance import read_resonance
@@ -45,6 +45,7 @@ def cross_check_folder(folder: TestFolder, *, progress: Progress = silent) -> Cr
         ),
         forecast=forecast_for(rig, found, step),
     )
+    check_unit_of_limits(rig.requirements, rig.angle_unit, found.model.angle_unit)
     requirements = judge_requirements(
         rig.requirements, findings_of_model(found.model, read_resonance(found.response)), findings_of_step(step)
     )

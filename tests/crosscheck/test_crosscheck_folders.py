@@ -105,6 +105,8 @@ def test_the_published_values_as_an_old_sheet(
         (["--against", "damping=0.1"], "did you mean 'damping_ratio'?"),
         (["--against", "gain=1", "no such folder"], "give either other folders or --against, not both"),
         (["no such folder"], "no such test folder"),
+        (["{first}/../run_b"], "named twice"),
+        (["--against", "peak_time=0", "--against", "damping_ratio=0.1"], "peak_time = 0 s: must be above 0"),
     ],
 )
 def test_bad_input_is_one_line(
@@ -112,7 +114,7 @@ def test_bad_input_is_one_line(
 ) -> None:
     """What, and what to do; no traceback."""
     capsys.readouterr()
-    assert main(["crosscheck", str(folders[0]), *words]) in (1, 2)
+    assert main(["crosscheck", str(folders[0]), *(word.format(first=folders[0]) for word in words)]) in (1, 2)
     told = capsys.readouterr()
     assert said in told.err
     assert "Traceback" not in told.err

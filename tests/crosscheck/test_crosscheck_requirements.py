@@ -9,7 +9,8 @@ import pytest
 from two_tests import NO_PEAK, VANE, K, frequency_test, moved, step_test
 
 from freqid.crosscheck.findings import findings_of_model, findings_of_step
-from freqid.crosscheck.requirements import RequirementRow, judge_requirements
+from freqid.crosscheck.requirements import RequirementRow, check_unit_of_limits, judge_requirements
+from freqid.errors import CrossCheckError
 from freqid.rig_tables import Requirements
 from freqid.step_relations import normalised_settling_time, normalised_step_response
 
@@ -46,6 +47,14 @@ def test_a_limit_on_either_side_of_the_interval(limit: float, verdict: str) -> N
     assert judged(Requirements(damping_ratio_max=limit)).verdict == verdict
     mirrored = {"met": "not met", "not met": "met"}.get(verdict, verdict)
     assert judged(Requirements(damping_ratio_min=limit)).verdict == mirrored
+
+
+def test_a_limit_in_another_angle_unit_is_refused() -> None:
+    """0.2 rad/V is no limit for a result in deg/V; a limit without an angle in it holds in both."""
+    with pytest.raises(CrossCheckError, match=r"gain_max = 0.2 is in rad/V .* are in deg/V: set angle_unit"):
+        check_unit_of_limits(Requirements(gain_max=0.2), "rad", "deg")
+    check_unit_of_limits(Requirements(gain_max=0.2), "deg", "deg")
+    check_unit_of_limits(Requirements(damping_ratio_max=0.2), "rad", "deg")
 
 
 def test_both_tests_together() -> None:

@@ -65,6 +65,16 @@ def test_every_form_of_a_number_is_read(text: str, name: str, value: float, unce
         ("gain=12 ± -0.3", "must not be negative"),
         ("natural_frequency=-3", "must be above 0"),
         ("gain=nan", "cannot be read"),
+        ("gain=12(-0.3)", "must not be negative"),
+        ("gain=1e400", "must be below 1e+30"),
+        ("gain=12 ± 1e400", "the uncertainty must be below 1e+30"),
+        ("gain=12(1e400)", "the uncertainty must be below 1e+30"),
+        ("gain=0", "must not be 0"),
+        ("peak_time=0 s", "peak_time = 0 s: must be above 0"),
+        ("settling_time_5=-1", "must be above 0"),
+        ("log_decrement=-1", "must be above 0"),
+        ("percent_overshoot=150", "must be at least 0 and below 100 %"),
+        ("percent_overshoot=-5", "must be at least 0 and below 100 %"),
     ],
 )
 def test_what_cannot_be_read_is_refused(text: str, said: str) -> None:
@@ -98,6 +108,31 @@ def test_overshoot_and_peak_time_stand_for_damping_and_frequency() -> None:
     assert damping.standard_uncertainty == pytest.approx(slope, rel=5e-3)
     assert frequency.value == pytest.approx(1 / (2 * 0.2 * math.sqrt(1 - damping.value**2)), rel=1e-9)
     assert frequency.standard_uncertainty > 0.01 * frequency.value * 0.99  # at least that of the peak time
+
+
+@pytest.mark.parametrize(
+    "texts",
+    [
+        ["percent_overshoot=60(5)", "peak_time=0.1(0.1)"],
+        ["percent_overshoot=68 ± 90", "peak_time=0.1 ± 0.2"],
+        ["log_decrement=0.7(2.0)", "peak_time=0.1"],
+        ["damping_ratio=0.5(0.5)", "peak_time=0.1"],
+    ],
+)
+def test_an_uncertainty_as_wide_as_the_value_is_carried_through(texts: list[str]) -> None:
+    """Where one standard uncertainty reaches beyond 0 or 100 % the slope is taken nearer; the result stays finite."""
+    found = parse_typed_values(texts, angle_unit="deg").findings.parameters
+    for name in ("damping_ratio", "natural_frequency"):
+        quantity = found[name]
+        assert quantity is not None
+        assert math.isfinite(quantity.standard_uncertainty)
+        assert quantity.standard_uncertainty > 0.0
+
+
+def test_an_overshoot_of_nothing_says_nothing_of_the_damping() -> None:
+    """0 % means at least critically damped: no damping ratio is worked out, and no frequency."""
+    found = parse_typed_values(["percent_overshoot=0", "peak_time=0.2"], angle_unit="deg").findings
+    assert set(found.parameters) == set()
 
 
 def test_a_sheet_is_compared_in_what_it_tells() -> None:
