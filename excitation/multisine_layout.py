@@ -32,6 +32,7 @@ Grid = Literal["odd-gapped", "odd", "full"]
 Phases = Literal["low-peak", "random", "schroeder"]
 Power = Literal["flat", "informative"]
 
+_PERIOD_UNIT = 1e-3  # s; a period chosen here is a whole number of them
 _RAMP = 0.25  # of a period, each way, at most
 _RAMP_WIDTHS = 1.0  # over the half-power width of the resonance: about 3 of its time constants, at most
 _MOST_PERIODS, _FEWEST_PERIODS, _PERIODS_WITHOUT_RIG = 6, 3, 4
@@ -173,7 +174,9 @@ def _choose_period(settings: MultisineSettings, *, available: int) -> tuple[int,
         most = max(_MOST_PERIODS, fitting // _LONGEST_PERIOD)
         n_periods = min(most, max(_FEWEST_PERIODS, fitting))
     quarters = math.floor(available / (n_periods + ramps))
-    return max(quarters, math.floor((available - 2 * _longest_ramp(settings)) / n_periods)), n_periods
+    period = max(quarters, math.floor((available - 2 * _longest_ramp(settings)) / n_periods))
+    unit = max(round(settings.sample_rate * _PERIOD_UNIT), 1)  # means over whole milliseconds then divide the period
+    return max(period // unit * unit, 2), n_periods
 
 
 def _ramp(settings: MultisineSettings, period: int) -> int:

@@ -34,7 +34,7 @@ __all__ = ["LONGEST_WHOLE", "read_for_estimate", "shortened"]
 
 Floats = NDArray[np.float64]
 
-LONGEST_WHOLE = 2_000_000  # samples of both streams together: shorter runs are read as they are
+LONGEST_WHOLE = 300_000  # samples of both streams together: shorter runs are read as they are
 CHUNK = 1 << 18  # samples read at a time, about
 GROUPS = range(10, 21)  # averaged periods that are left: so many that least is left over
 POINTS = 16  # samples per period of the highest excited frequency after the block means, at least
@@ -101,8 +101,12 @@ def _plan(opened: OpenRun) -> Shortening | None:
     longest = int(rate.sample_rate / (POINTS * highest))
     if longest < 2:
         return None
-    folded = None if periodicity is None else _folded(periodicity, rate, voltage.size, longest)
-    plan = folded or Shortening(rate=rate, highest=highest, block=longest)
+    plan = None if periodicity is None else _folded(periodicity, rate, voltage.size, longest)
+    if plan is None:
+        block = longest if periodicity is None else _divisor(_period_in_samples(periodicity, rate), longest)
+        if block < 2:
+            return None  # no block divides the period: whole, however long that takes
+        plan = Shortening(rate=rate, highest=highest, block=block)
     return replace(plan, highest=highest, kept=max(int(1 / (plan.interval * ANGLE_POINTS * highest)), 1))
 
 
@@ -118,17 +122,28 @@ def _highest_frequency(voltage: StoredStream, rate: EvenRate) -> float:
     return float((np.searchsorted(share, BAND_POWER) + 2) * rate.sample_rate / GLIMPSE)
 
 
+def _period_in_samples(periodicity: Periodicity, rate: EvenRate) -> int:
+    """The period in samples; 0 where it is no whole number of them."""
+    samples = periodicity.period * rate.sample_rate
+    return round(samples) if abs(round(samples) - samples) <= 1e-6 * samples else 0
+
+
+def _divisor(period: int, longest: int, *, shortest: int = 2) -> int:
+    """The longest block from `shortest` to `longest` samples that divides the period; 0 where there is none."""
+    return next((b for b in range(longest, shortest - 1, -1) if period and period % b == 0), 0)
+
+
 def _folded(periodicity: Periodicity, rate: EvenRate, size: int, longest: int) -> Shortening | None:
     """A block that divides the period and groups of periods; None where there are too few, or no such block."""
-    period = round(periodicity.period * rate.sample_rate)
-    if abs(period - periodicity.period * rate.sample_rate) > 1e-6 * period:
+    period = _period_in_samples(periodicity, rate)
+    block = _divisor(period, longest, shortest=max(longest // 3, 1) + 1)
+    if block == 0:
         return None
-    block = next((b for b in range(longest, max(longest // 3, 1), -1) if period % b == 0), None)
     first = max(round((periodicity.start - rate.start) * rate.sample_rate), 0)
     last = min(round((periodicity.stop - rate.start) * rate.sample_rate), size)
     periods = max((last - first) // period, 0)
     groups = max(GROUPS, key=lambda count: count * (periods // count))
-    if block is None or periods < 2 * groups:
+    if periods < 2 * groups:
         return None
     return Shortening(
         rate=rate,

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 from collections.abc import Iterator
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -145,3 +146,33 @@ def test_short_and_uneven_runs_are_read_as_they_are(folder: TestFolder, monkeypa
     raw, read = read_run(path), read_for_estimate(path)
     np.testing.assert_array_equal(read.angle.angle, raw.angle.angle)
     assert read.notes == raw.notes and read.file_sha256 == raw.file_sha256
+
+
+@pytest.mark.parametrize(("period", "block"), [(4800, 25), (4810, 26), (4813, None)])
+def test_a_few_periods_are_thinned_by_blocks_that_divide_them(
+    folder: TestFolder, period: int, block: int | None
+) -> None:
+    """Too few periods to average: blocks divide the period (480 Hz, band to 1.1 Hz: at most 27 samples), or none is
+    taken and the run is read whole; the answer holds the vane either way.
+    """
+    lines = np.arange(1, 12, 2) / (period / SAMPLE_RATE)
+    time = np.arange(3 * period) / SAMPLE_RATE
+    waves = np.exp(1j * (2 * np.pi * np.outer(time, lines) + np.arange(len(lines)) ** 2))
+    rng = np.random.default_rng(2)
+    known = Periodicity(period=period / SAMPLE_RATE, lines=lines, start=0.0, stop=3 * period / SAMPLE_RATE)
+    slow = replace(VANE, natural_frequency=0.5)
+    facts = Run(
+        name="response-001", kind="response",
+        input=InputStream(time=np.empty(0), voltage=np.empty(0), hold="smooth", commanded=False, periodicity=known),
+        angle=AngleStream(time=np.empty(0), angle=np.empty(0), angle_unit="deg", exposure=0.0, stamp="end"),
+        common_clock=True,
+    )  # fmt: skip
+    angle = (waves @ slow.response(lines)).real + NOISE * rng.standard_normal(len(time))
+    path = write_run_in_blocks(folder, facts, [(waves.sum(axis=1).real, angle)],
+                               rate=EvenRate(sample_rate=SAMPLE_RATE, start=0.0), samples=len(time))  # fmt: skip
+    run = long_run.read_for_estimate(path)
+    np.testing.assert_allclose(np.diff(run.input.time), (block or 1) / SAMPLE_RATE, rtol=1e-9)
+    for name, quantity in identify(run).model.parameters.items():
+        assert quantity is not None
+        # a chance of 6e-5 each to lie outside four standard uncertainties; voltages are kept as float32
+        assert abs(quantity.value - getattr(slow, name)) < 4 * quantity.standard_uncertainty
