@@ -9,21 +9,28 @@ from __future__ import annotations
 
 import os
 import sys
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 
 import click
 
+from freqid.cli.interruption import remembered_interruption
 from freqid.cli.verb_group import freqid_command
 from freqid.errors import FreqidError
 
 __all__ = ["run_verb"]
 
 FAULT, USAGE, INTERRUPTED = 1, 2, 130
+INTERRUPTION = "interrupted; nothing half-written was left"
 
 
 def run_verb(argv: Sequence[str]) -> int:
     """Run the verb that `argv` begins with; returns the exit status and never raises."""
     _survive_narrow_encodings()
+    with remembered_interruption() as interrupted:
+        return _run_verb(argv, interrupted)
+
+
+def _run_verb(argv: Sequence[str], interrupted: Callable[[], bool]) -> int:
     try:
         status = freqid_command.main(list(argv), prog_name="freqid", standalone_mode=False)
         return status if isinstance(status, int) else 0
@@ -32,10 +39,12 @@ def run_verb(argv: Sequence[str]) -> int:
     except click.ClickException as error:
         return _tell(error.format_message(), FAULT)
     except (click.Abort, KeyboardInterrupt):
-        return _tell("interrupted; nothing half-written was left", INTERRUPTED)
+        return _tell(INTERRUPTION, INTERRUPTED)
     except SystemExit as error:  # the reader of our output has gone away
         return error.code if isinstance(error.code, int) else FAULT
     except Exception as error:
+        if interrupted() and not _is_fault(error):  # what an interruption turned into on its way
+            return _tell(INTERRUPTION, INTERRUPTED)
         if os.environ.get("FREQID_DEBUG") == "1" and not _is_fault(error):
             raise
         return _tell(_message(error), FAULT)
