@@ -243,11 +243,16 @@ def _row_sentence(row: ComparedRow) -> str:
     if row.difference is None or row.tolerance is None or row.step_test is None or row.frequency_test is None:
         return f"the {name} is not determined by both tests"
     mean = (abs(row.step_test.value) + abs(row.frequency_test.value)) / 2
-    percent, limit = 100 * abs(row.difference.value) / mean, 100 * row.tolerance / mean
-    expanded = 100 * row.difference.expanded_uncertainty / mean
+    limit = 100 * row.tolerance / mean
+    size = row.difference.size
+    low, high = size.interval_95
+    percent, expanded = Quantity(
+        value=100 * size.value / mean, unit="%", standard_uncertainty=100 * size.standard_uncertainty / mean,
+        interval_95=(100 * low / mean, 100 * high / mean),
+    ).rounded()  # fmt: skip
     if row.verdict == "disagree":
-        return f"the {name} differs by {percent:.3g} % ± {expanded:.2g} %, beyond the tolerance of {limit:.3g} %"
+        return f"the {name} differs by {percent} % ± {expanded} %, beyond the tolerance of {limit:.3g} %"
     return (
-        f"the {name} differs by {percent:.3g} % ± {expanded:.2g} %: too uncertain to say whether it is within the "
+        f"the {name} differs by {percent} % ± {expanded} %: too uncertain to say whether it is within the "
         f"tolerance of {limit:.3g} %"
     )

@@ -107,7 +107,7 @@ def test_one_disagreeing_row_outweighs_the_unresolved() -> None:
     check = checked(frequency_test(moved("gain", 0.2), (1e-3, 1e-4, 0.5, 1e-4)), step_test())
     assert row(check, "damping_ratio").verdict == "unresolved"
     assert check.verdict == "disagree"
-    assert check.sentence.startswith("the gain differs by 18.2 %")
+    assert check.sentence.startswith("the gain differs by 18.18 % ± ")  # 0.2 / 1.1, to the place of its uncertainty
     assert "beyond the tolerance of 5 %" in check.sentence
     assert "damping" not in check.sentence
 
