@@ -70,8 +70,8 @@ def _dry_friction(f: _Figures) -> MechanismWords:
     return MechanismWords(
         code="dry_friction",
         finding=f"Dry friction that holds the rig up to {f.number()} from where the spring would put it",
-        settling_test="Repeat the step test at half and at twice the amplitude: dry friction damps the smaller swing "
-        "more, and the settled angle stays off by up to that much on the side it came from.",
+        settling_test="Repeat the step test at half the amplitude: dry friction damps the smaller swing more, and "
+        "the settled angle stays off by up to that much on the side it came from.",
     )
 
 
