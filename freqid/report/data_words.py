@@ -41,7 +41,7 @@ def clock_sentences(clock: ClockMap) -> list[str]:
         zero = "Both streams share one clock: the delay is the rig's own."
     else:
         zero = (
-            "The offset between the two clocks is unknown; delay minus offset is "
+            "The offset between the two clocks is unknown; the delay less that offset is "
             f"{with_uncertainty(clock.lag)}, and neither can be told alone."
         )
     frames = (

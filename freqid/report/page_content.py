@@ -56,11 +56,11 @@ def page_content(inputs: ReportInputs) -> dict[str, Any]:
         "requirements": [] if check is None else [_requirement(row) for row in check.requirements],
         "next_test": None if check is None else check.next_test,
         "adequacy": None if found is None else _adequacy(found.model),
-        "model_numbers": [] if found is None else _numbers(found.model.parameters, found.model.derived),
+        "model_numbers": [] if found is None else _numbers(_named(found.model), found.model.derived),
         "correlations": [] if found is None else _correlations(found.model),
         "transfer_function": None if found is None else _transfer_function(found.model),
         "step_numbers": [] if step is None else _numbers(step.quantities),
-        "step_model_numbers": [] if step is None else _numbers(step.parameters, step.derived),
+        "step_model_numbers": [] if step is None else _numbers(_named(step), step.derived),
         "steps": [] if step is None else _steps(step),
         "data": _data(inputs),
         "caveats": _caveats(inputs),
@@ -156,6 +156,12 @@ def chance(p_value: float) -> str:
     return "probability below 1e-6" if p_value < 1e-6 else f"probability {p_value:.2g}"
 
 
+def _named(result: IdentifiedModel | StepResult) -> dict[str, Quantity | None]:
+    """The parameters, with what the delay is called where it holds an unknown clock offset."""
+    delay = "delay" if result.clock.offset_known else "delay less clock offset"
+    return {delay if name == "delay" else name: quantity for name, quantity in result.parameters.items()}
+
+
 def _numbers(*groups: Mapping[str, Quantity | None]) -> list[dict[str, str]]:
     return [
         {
@@ -186,7 +192,9 @@ def _transfer_function(model: IdentifiedModel) -> str:
     (k,), (_, b, c) = model.model.coefficients()
     unit = model.angle_unit
     text = f"G(s) = {minus(f'{k:.5g}')} / (s² + {b:.5g} s + {c:.5g}) {unit}/V"
-    return text if model.clock.offset_known is False else f"{text}, delay {minus(f'{model.model.delay:.4g}')} s"
+    if not model.clock.offset_known:
+        return f"{text}, without the delay, which holds the unknown clock offset"
+    return f"{text}, delay {minus(f'{model.model.delay:.4g}')} s"
 
 
 def _steps(step: StepResult) -> list[dict[str, str]]:
