@@ -15,6 +15,7 @@ from freqid.estimate.distortion_summary import DistortionSummary
 from freqid.estimate.identification import Identification
 from freqid.estimate.model import IdentifiedModel
 from freqid.estimate.result_files import model_as_json
+from freqid.quantity import Quantity
 from freqid.stages.estimate import estimate_folder
 from freqid.test_folder import TestFolder
 
@@ -69,8 +70,13 @@ def _trends(dependence: AmplitudeDependence) -> list[tuple[str, str, str]]:
     """Change of each quantity from the smallest to the largest amplitude, in percent."""
     rows = []
     for trend in dependence.trends:
-        change, half = 100 * trend.change.value, 100 * trend.change.expanded_uncertainty
-        rows.append((trend.name.replace("_", " "), f"{change:+.2g} ± {half:.2g}", "%"))
+        low, high = trend.change.interval_95
+        change, half = Quantity(
+            value=100 * trend.change.value, unit="%", standard_uncertainty=100 * trend.change.standard_uncertainty,
+            interval_95=(100 * low, 100 * high),
+        ).rounded()  # fmt: skip
+        sign = "" if change.startswith("-") else "+"
+        rows.append((trend.name.replace("_", " "), f"{sign}{change} ± {half}", "%"))
     return rows
 
 
@@ -93,6 +99,11 @@ def _measured_at(model: IdentifiedModel) -> list[tuple[str, str]]:
     return rows  # fmt: skip
 
 
+def _jitter(jitter: float) -> str:
+    """How far the stamps lie off their grid (s), in words; what rounding leaves of whole frames is nothing."""
+    return "stamps on their grid" if jitter < 1e-9 else f"stamps off their grid by {1e3 * jitter:.2g} ms rms"
+
+
 def _facts(found: Identification) -> list[tuple[str, str]]:
     model, clock = found.model, found.model.clock
     response = found.response
@@ -108,8 +119,7 @@ def _facts(found: Identification) -> list[tuple[str, str]]:
         ("response", f"{len(response.frequency)} points from {response.frequency[0]:.3g} to "
                      f"{response.frequency[-1]:.3g} Hz, {response.method}"),
         ("clocks", clocks),
-        ("frames", f"{clock.frames} read, {clock.lost_frames} lost, stamps off their grid by {1e3 * clock.jitter:.2g} "
-                   f"ms rms"),
+        ("frames", f"{clock.frames} read, {clock.lost_frames} lost, {_jitter(clock.jitter)}"),
         ("model", f"explains {100 * model.explained:.2f} % of the angle's variance; {adequate}"),
         *_measured_at(model),
     ]  # fmt: skip

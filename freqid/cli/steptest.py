@@ -16,6 +16,13 @@ from freqid.test_folder import TestFolder
 
 __all__ = ["command", "print_step_result"]
 
+_SWINGS = {
+    "viscous": "viscous damping shows, dry friction does not",
+    "dry friction": "dry friction shows, viscous damping does not",
+    "viscous and dry friction": "viscous damping and dry friction show",
+    "undecided": "neither viscous damping nor dry friction shows",
+}
+
 
 @click.command("steptest")
 @folder_argument
@@ -78,7 +85,8 @@ def _friction_lines(result: StepResult) -> list[str]:
     lines = []
     if result.decay is not None:
         d = result.decay
-        lines.append(f"Swings: {d.kind} (damping ratio {d.damping_ratio}, dry friction worth {d.friction_angle})")
+        lines.append(f"Swings: {_SWINGS[d.kind]} (damping ratio {d.damping_ratio}, "
+                     f"dry friction worth {d.friction_angle})")  # fmt: skip
     if result.static_line is not None and result.static_line.hysteresis is not None:
         lines.append(f"Levels: hysteresis between up and down {result.static_line.hysteresis}")
     return lines

@@ -108,12 +108,12 @@ def _cleaned(record: Record, fit: RecordFit) -> tuple[Record, RecordFit, Floats,
 def _cleaning_caveats(outlier_at: Floats, losses: SilentLosses) -> tuple[Caveat, ...]:
     found = []
     if len(outlier_at):
+        one = len(outlier_at) == 1
         found.append(
             Caveat(
                 "outliers_left_out",
-                f"{len(outlier_at)} angle samples stand more than six standard deviations off and were left out, at "
-                f"stamps "
-                f"{_instants(outlier_at)}.",
+                f"{len(outlier_at)} angle sample{'' if one else 's'} more than six standard deviations off "
+                f"{'was' if one else 'were'} left out, at {_instants(outlier_at)} of the angle log.",
             )
         )
     if len(losses.at):
