@@ -65,7 +65,7 @@ def read_identification(folder: TestFolder) -> Identification:
     content = folder.read_json(folder.model, format=MODEL_FORMAT)
     try:
         model = _model(content)
-    except (KeyError, TypeError, ValueError) as error:
+    except (LookupError, ArithmeticError, AttributeError, TypeError, ValueError) as error:
         raise TestFolderError(f"{folder.model}: damaged ({error!r}); run `freqid estimate {folder.quoted}` "
                               f"again") from None
     return _read_response(folder, model)
@@ -126,6 +126,8 @@ def _parameter(model: IdentifiedModel, name: str) -> dict[str, Any] | None:
 
 
 def _model(content: dict[str, Any]) -> IdentifiedModel:
+    if content["angle_unit"] not in ("deg", "rad"):
+        raise ValueError(f"angle_unit is {content['angle_unit']!r}")
     adequacy = content["adequacy"]
     tf = content["transfer_function"]
     wn2 = tf["denominator"][2]
@@ -144,7 +146,7 @@ def _model(content: dict[str, Any]) -> IdentifiedModel:
     dependence = None if amplitude is None else amplitude["dependence"]
     model = IdentifiedModel(
         model=fitted,
-        covariance=np.array(content["covariance"]),
+        covariance=np.array(content["covariance"], dtype=float).reshape(4, 4),
         degrees_of_freedom=content["degrees_of_freedom"],
         angle_unit=content["angle_unit"],
         adequacy=Adequacy(

@@ -91,7 +91,7 @@ def _result(content: dict[str, Any]) -> StepResult:
             for row in content["steps"]
         ),
         model=SecondOrder.from_vector(content["model"]),
-        covariance=np.array(content["covariance"]),
+        covariance=np.array(content["covariance"], dtype=float).reshape(4, 4),
         degrees_of_freedom=content["degrees_of_freedom"],
         angle_unit=content["angle_unit"],
         clock=ClockMap.from_json(content["clock"]),

@@ -99,3 +99,27 @@ def test_without_a_model_it_says_what_to_do(folder: TestFolder, capsys: pytest.C
     assert main(["coefficients", str(folder.path)]) == 1
     err = capsys.readouterr().err
     assert "freqid estimate" in err and err.count("\n") == 1 and not Path(folder.results).exists()
+
+
+@pytest.mark.parametrize(
+    ("key", "value"),
+    [
+        ("covariance", None),
+        ("covariance", [[1.0]]),
+        ("angle_unit", 3),
+        ("transfer_function", {"numerator": [], "denominator": [], "delay": 0}),
+        ("transfer_function", {"numerator": [1.0], "denominator": [1.0, 1.0, 0.0], "delay": 0}),
+        ("clock", None),
+    ],
+)
+def test_a_damaged_model_is_told(
+    key: str, value: object, modelled: TestFolder, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """One line that names the file and the command that makes it again; status 1."""
+    content = json.loads(modelled.model.read_text(encoding="utf-8"))
+    modelled.model.write_text(json.dumps({**content, key: value}), encoding="utf-8")
+    capsys.readouterr()
+    assert main(["coefficients", str(modelled.path)]) == 1
+    err = capsys.readouterr().err
+    assert "model.json: damaged" in err and "freqid estimate" in err and err.count("\n") == 1
+    assert "unexpected fault" not in err
