@@ -46,6 +46,10 @@ class _Figures:
         value, deviation = factor * float(fit.numbers[i]), abs(factor) * float(fit.uncertainty[i])
         return str(Quantity.normal(value, self.angle_unit if unit is None else unit, deviation))
 
+    def roughly(self) -> str:
+        """A number whose fit has corners: its interval holds what noise does, not how coarse the mechanism is."""
+        return f"about {self.value():.2g} {self.angle_unit} ({self.number()} by the fit, noise alone)"
+
     def change(self, i: int = 0) -> str:
         """A number that is a natural logarithm, as a relative change."""
         fit = self.trial.fit
@@ -69,7 +73,7 @@ class _Figures:
 def _dry_friction(f: _Figures) -> MechanismWords:
     return MechanismWords(
         code="dry_friction",
-        finding=f"Dry friction that holds the rig up to {f.number()} from where the spring would put it",
+        finding=f"Dry friction that holds the rig up to {f.roughly()} from where the spring would put it",
         settling_test="Repeat the step test at half the amplitude: dry friction damps the smaller swing more, and "
         "the settled angle stays off by up to that much on the side it came from.",
     )
@@ -115,7 +119,7 @@ def _unequal_gain(f: _Figures) -> MechanismWords:
 def _end_stop(f: _Figures) -> MechanismWords:
     return MechanismWords(
         code="end_stop",
-        finding=f"An end stop hit at {f.number()} from rest",
+        finding=f"An end stop hit at {f.roughly()} from rest",
         settling_test="Repeat the test at half the amplitude, clear of the stop.",
     )
 
