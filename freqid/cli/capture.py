@@ -8,7 +8,7 @@ from typing import Any, Literal
 
 import click
 
-from freqid.cli.options import folder_argument, json_option, run_kind_option
+from freqid.cli.options import FiniteRange, folder_argument, json_option, run_kind_option
 from freqid.cli.output import print_json, progress_bar
 from freqid.cli.recovered import tell_recovered
 from freqid.cli.run_summary import print_run, run_as_json
@@ -98,12 +98,12 @@ CHANNEL = click.IntRange(min=1)
               " amplitude dependence; each level is checked against the limits.")
 @click.option("--periods", type=click.IntRange(min=1), help="Play the steady part of a periodic profile so many times,"
               " instead of as often as designed.")
-@click.option("--guard", type=click.FloatRange(0, 1, min_open=True), default=0.95, show_default=True,
+@click.option("--guard", type=FiniteRange(0, 1, min_open=True), default=0.95, show_default=True,
               help="Share of the way to the stops beyond which the test is ended.")
 @click.option("--armed", is_flag=True, help="The cautions are acknowledged; do not ask.")
 @click.option("--calibrate", "wants_calibration", is_flag=True, help="Play a small tone instead and work out the volts"
               " at full scale from a meter.")
-@click.option("--reads", type=click.FloatRange(0, min_open=True), metavar="VRMS", help="What the meter reads while"
+@click.option("--reads", type=FiniteRange(0, min_open=True), metavar="VRMS", help="What the meter reads while"
               " calibrating; asked for on a terminal.")
 @click.option("--simulate", is_flag=True, help="Use the rig of [simulated] in rig.toml instead of a real one.")
 @click.option("--seed", type=click.IntRange(min=0), help="Of the simulated noise; drawn, and noted, unless given.")

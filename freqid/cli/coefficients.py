@@ -6,7 +6,7 @@ from pathlib import Path
 
 import click
 
-from freqid.cli.options import folder_argument, json_option
+from freqid.cli.options import FiniteRange, folder_argument, json_option
 from freqid.cli.output import print_caveats, print_json, print_table
 from freqid.stages.coefficients import Test, coefficients_of_folder
 from freqid.test_folder import TestFolder
@@ -16,9 +16,9 @@ __all__ = ["command"]
 
 @click.command("coefficients")
 @folder_argument
-@click.option("--controller-rate", type=click.FloatRange(min=0, min_open=True), metavar="HZ",
+@click.option("--controller-rate", type=FiniteRange(min=0, min_open=True), metavar="HZ",
               help="Rate of the controller: adds the exact discrete form behind a zero-order hold.")
-@click.option("--delay", type=click.FloatRange(min=0), metavar="S",
+@click.option("--delay", type=FiniteRange(min=0), metavar="S",
               help="The rig's delay, where it is known better than the test knows it.")
 @click.option("--test", type=click.Choice(["frequency", "step"]), default="frequency", show_default=True,
               help="Whose model.")

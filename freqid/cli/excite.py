@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any, Literal
 import click
 
 from freqid.cli.cautions import print_cautions
-from freqid.cli.options import folder_argument, json_option
+from freqid.cli.options import FiniteRange, folder_argument, json_option
 from freqid.cli.output import print_caveats, print_json, print_table, progress_bar, quantity_rows
 from freqid.stages.excite import Design, ExciteSettings, design_excitation
 from freqid.test_folder import TestFolder
@@ -19,7 +19,7 @@ if TYPE_CHECKING:
 
 __all__ = ["command"]
 
-_ABOVE_ZERO = click.FloatRange(min=0, min_open=True)
+_ABOVE_ZERO = FiniteRange(min=0, min_open=True)
 
 
 @click.command("excite")
@@ -29,7 +29,7 @@ _ABOVE_ZERO = click.FloatRange(min=0, min_open=True)
 @click.option("--band", type=(_ABOVE_ZERO, _ABOVE_ZERO), metavar="LOW HIGH",
               help="Frequencies to cover, Hz; about the natural frequency of [step_test] unless given.")
 @click.option("--duration", type=_ABOVE_ZERO, metavar="S", help="Length of the profile, s; chosen unless given.")
-@click.option("--wanted-damping", type=click.FloatRange(0, 1, min_open=True), metavar="REL",
+@click.option("--wanted-damping", type=FiniteRange(0, 1, min_open=True), metavar="REL",
               help="Uncertainty wanted for the damping ratio, relative, at 95 % (0.05 is 5 %): the test is made as"
                    " long as it takes, at most --duration.")
 @click.option("--amplitude", type=_ABOVE_ZERO, metavar="V",

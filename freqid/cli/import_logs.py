@@ -8,7 +8,7 @@ from typing import Any
 
 import click
 
-from freqid.cli.options import folder_argument, json_option, run_kind_option
+from freqid.cli.options import FiniteRange, folder_argument, json_option, run_kind_option
 from freqid.cli.output import progress_bar
 from freqid.cli.run_summary import print_run
 from freqid.stages.import_logs import ImportSettings, OneLog, TwoLogs, import_logs
@@ -28,12 +28,12 @@ _OPTIONS = (
     click.option("--input-column", metavar="COLUMN", help=f"{_COLUMN} of the voltage."),
     click.option("--angle-column", metavar="COLUMN", help=f"{_COLUMN} of the angle."),
     click.option("--time-unit", type=click.Choice(["s", "ms", "us", "min"]), help="Unit of the times."),
-    click.option("--sample-rate", type=click.FloatRange(min=0, min_open=True), metavar="HZ",
+    click.option("--sample-rate", type=FiniteRange(min=0, min_open=True), metavar="HZ",
                  help="Rate of a log without times, or with frame numbers."),
     click.option("--angle-unit", type=click.Choice(["deg", "rad"]), help="Unit of the angle in the log."),
     click.option("--hold", type=click.Choice(["zero-order", "smooth"]),
                  help="How the voltage behaves between its samples; decided from the log unless given."),
-    click.option("--exposure", type=click.FloatRange(min=0), metavar="S",
+    click.option("--exposure", type=FiniteRange(min=0), metavar="S",
                  help="Time over which each angle sample is averaged; the rig sheet's unless given."),
     click.option("--decimal", type=click.Choice([".", ","]), help="Decimal sign of a text log; found unless given."),
 )  # fmt: skip

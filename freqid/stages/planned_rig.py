@@ -108,6 +108,7 @@ def rig_from_model(folder: TestFolder, rig: Rig) -> Rig:
             natural_frequency_uncertainty=max(frequency_uncertainty, least["natural_frequency"]),
             damping_ratio_uncertainty=max(damping_uncertainty, least["damping_ratio"]),
         )
+        expected_rig(replace(rig, step_test=prior))  # refuses a natural frequency or damping ratio that cannot be
     except (KeyError, TypeError, ValueError) as error:
         raise TestFolderError(
             f"{folder.model}: damaged ({error!r}); run `freqid estimate {folder.quoted}` again"

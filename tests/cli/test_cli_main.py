@@ -71,6 +71,8 @@ def test_version_is_that_of_the_package(capsys: pytest.CaptureFixture[str]) -> N
         (["capture", "x", "--simulate", "--device", "1"], "--device and --simulate exclude each other"),
         (["excite", "x", "--band", "1"], "Option '--band' requires 2 arguments"),
         (["excite", "x", "--duration", "0"], "Invalid value for '--duration'"),
+        (["excite", "x", "--wanted-damping", "nan"], "'nan' is no finite number"),
+        (["excite", "x", "--amplitude", "inf"], "'inf' is no finite number"),
         (["import", "x"], "give --log FILE"),
         (["import", "x", "--log", "a", "--angle", "b"], "give --log FILE"),
         (["import", "x", "--input", "a"], "give --log FILE"),
