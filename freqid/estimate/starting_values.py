@@ -28,6 +28,8 @@ FREQUENCY_RATIO = 1.15
 POINTS_PER_PERIOD = 16  # of the highest excited frequency, on the bank's grid
 MOST_RATIOS = 32  # on either side, before a part of the record is looked at first
 WIDER = 1.1  # than the band, for what the bank looks at
+ALIKE, MOST_ALIKE = 0.5, 2  # starts within a factor 1.65 in frequency, of which so many at most: others get a turn
+LOPSIDED = 0.02  # mean over standard deviation of the drive: from there on the padding changes the mean of a shape
 LARGEST_RATIO_ERROR = 1.6e-3  # of two ordinary crystal clocks; design limit 1e-3
 
 
@@ -40,7 +42,7 @@ class Candidate:
     explained: float
 
 
-def starting_values(record: Record, *, count: int = 4) -> list[Candidate]:
+def starting_values(record: Record, *, count: int = 6) -> list[Candidate]:
     """The `count` best distinct starts, best first."""
     band = _input_band(record)
     bank = _Bank(record, band[1])
@@ -80,7 +82,12 @@ def _distinct(found: list[Candidate], count: int) -> list[Candidate]:
             and abs(c.clock_ratio - o.clock_ratio) < 1e-9
             for o in chosen
         )
-        if not near:
+        alike = sum(
+            abs(np.log(c.model.natural_frequency / o.model.natural_frequency)) < ALIKE
+            and c.clock_ratio == o.clock_ratio
+            for o in chosen
+        )
+        if not near and alike < MOST_ALIKE:
             chosen.append(c)
         if len(chosen) == count:
             break
@@ -112,7 +119,8 @@ class _Bank:
         self._frequency = frequency[frequency <= WIDER * highest]
         average = np.sinc(self._frequency * self._step) * np.exp(-1j * np.pi * self._frequency * self._step)
         self._drive = self._spectrum(averaged) / average
-        self._sum = float(np.sum(averaged))
+        self._driven = int((record.drive.stop - begin) / self._step)
+        self._lopsided = abs(float(np.mean(averaged))) > LOPSIDED * float(np.std(averaged))
         self._spectra: dict[tuple[float, int], tuple[NDArray[np.complex64], float]] = {}
         self._whole = len(self._resampled(1.0))
 
@@ -143,9 +151,8 @@ class _Bank:
         unit = SecondOrder(gain=1.0, natural_frequency=frequency, damping_ratio=damping)
         x = (self._frequency / frequency).astype(np.float32)
         shape = self._drive / ((1 - x * x) + np.complex64(2j * damping) * x)
-        # Parseval; the mean belongs to the grid, not to the padding
-        own = 2 * float(np.vdot(shape, shape).real) / self._size
-        own += self._sum**2 * (1 / self._size - 1 / len(self._grid))
+        # Parseval
+        own = self._energy(shape) if self._lopsided else 2 * float(np.vdot(shape, shape).real) / self._size
         spectrum, energy = self._angle_spectrum(ratio, self._whole if count is None else count)
         if not (own > 0 and energy > 0):
             return []
@@ -161,12 +168,22 @@ class _Bank:
             strength[np.arange(best - exclude, best + exclude + 1) % self._size] = 0.0
         return results
 
+    def _energy(self, shape: NDArray[np.complex64]) -> float:
+        """Energy of a shape about its mean over the record, where that mean is not that of the padded one."""
+        whole = np.zeros(self._size // 2 + 1, dtype=np.complex64)
+        whole[1 : len(shape) + 1] = shape
+        wave = np.fft.irfft(whole, self._size)[: len(self._grid)]
+        return float(np.sum((wave - np.mean(wave)) ** 2))
+
     def _within(self, strength: NDArray[np.float32], n_angle: int) -> NDArray[np.float32]:
         """Zero where the lag is out of the question. Lag j moves the shape j steps later on the angle's grid; negative
         ones wrap.
         """
         if self._record.common_clock:
             strength[max(n_angle // 4, 1) : self._size - 2] = 0.0
+        elif self._lopsided:  # the step back to rest that padding makes is none that the angle could show
+            most_missed = 0.5 * min(n_angle, self._driven)
+            strength[int(n_angle - most_missed) + 1 : self._size - int(self._driven - most_missed)] = 0.0
         else:
             strength[n_angle : self._size - len(self._grid) + 1] = 0.0
         return strength

@@ -165,7 +165,7 @@ def test_guard_ends_the_test_before_the_stops(folder: TestFolder, play: Play) ->
     """With a rig of three times the gain the angle passes the share: ramp, rest, reason."""
     text = folder.rig.read_text(encoding="utf-8")
     folder.rig.write_text(text.replace("gain = 12.1", "gain = 36.0"), encoding="utf-8")
-    (folded,) = play(failed="guard: angle .* from rest, 27 is the most allowed")
+    (folded,) = play(failed="guard: angle .* from rest, 28.5 is the most allowed")
     run = read_run(folded.path)
     assert abs(run.input.voltage[-1]) <= 10 * 2.0**-23
     steps = np.abs(np.diff(run.input.voltage))
